@@ -44,9 +44,7 @@ class NotTestable(AuditdError, ValueError):
 
     exit_code = 65
 
-    def __init__(
-        self, required: object, got: object, *, estimate: float | None = None
-    ) -> None:
+    def __init__(self, required: object, got: object, *, estimate: float | None = None) -> None:
         self.required = required
         self.got = got
         self.estimate = estimate
