@@ -1,1 +1,11 @@
-"""read."""
+"""Bytes to records, a file a format, and records to runs.
+
+`read_file` reads one finished file; `reader_for(...).read(Extent)` continues a growing one; `Mapper`
+turns what they give into `records.Run` or `records.Refusal`.
+"""
+
+from auditd.read.mapping import Mapper
+from auditd.read.raw import Extent, Portion, Raw, Reader
+from auditd.read.registry import read_file, reader_for
+
+__all__ = ["Extent", "Mapper", "Portion", "Raw", "Reader", "read_file", "reader_for"]
