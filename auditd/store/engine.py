@@ -105,7 +105,8 @@ def stored_revision(engine: Engine, url: URL) -> str | None:
             return connection.execute(text("SELECT version_num FROM alembic_version")).scalar()
     except OperationalError as error:
         if url.get_backend_name() == "sqlite":
-            return _explain_sqlite(error, url)
+            _refuse_sqlite(error, url)
+            return None
         raise Unavailable(
             f"the store server at {shown_url(url)} does not answer: {_first_line(error)}"
         ) from error
@@ -115,7 +116,7 @@ def stored_revision(engine: Engine, url: URL) -> str | None:
         raise StoreDamaged(_damaged(url, error)) from error
 
 
-def _explain_sqlite(error: OperationalError, url: URL) -> None:
+def _refuse_sqlite(error: OperationalError, url: URL) -> None:
     reason = _first_line(error)
     if "no such table" in reason:
         return
@@ -132,7 +133,7 @@ def _explain_sqlite(error: OperationalError, url: URL) -> None:
 
 def _damaged(url: URL, error: Exception) -> str:
     return (
-        f"{shown_url(url)} is damaged ({_first_line(error)}); it is left as found: run `runaudit store verify`, "
+        f"{shown_url(url)} is damaged ({_first_line(error)}) and left as found: run `runaudit store verify`, "
         "then name a new file in store.url and gather the landed files again"
     )
 

@@ -1,0 +1,25 @@
+"""How far each file has been read; saved in the transaction that takes its runs."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import msgspec
+from sqlalchemy import Connection, delete, insert, select
+
+from auditd.records import Source
+from auditd.store.tables import sources
+
+
+def save_source(connection: Connection, source: Source, machine: str = "") -> None:
+    """Save how far a file has been read, in place of what was known before."""
+    known = (sources.c.machine == machine) & (sources.c.path == source.path)
+    connection.execute(delete(sources).where(known))
+    connection.execute(insert(sources).values(machine=machine, **msgspec.structs.asdict(source)))
+
+
+def stored_sources(connection: Connection, machine: str = "") -> Iterator[Source]:
+    """Yield what is known of each file of one machine's landing."""
+    columns = [column for column in sources.c if column.name not in {"row", "machine"}]
+    for row in connection.execute(select(*columns).where(sources.c.machine == machine)).mappings():
+        yield Source(**row)
