@@ -1,0 +1,126 @@
+"""From a crossing to what an operator needs: level, dates, and what the leader explains."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+
+import numpy as np
+import numpy.typing as npt
+
+from auditd.sequential.alarm import N_RUNS_SOON, Alarm, Crossing, Explained, Key, can_explain, takes_over
+from auditd.sequential.dating import (
+    N_RUNS_DATED,
+    log_weight_of_bets,
+    log_weight_of_shift,
+    log_weight_of_spread,
+    starts_not_excluded,
+)
+from auditd.sequential.families import fresh_family
+from auditd.sequential.history import History
+from auditd.sequential.levels import LevelCodes, group
+from auditd.sequential.scored_block import Family, ScoredBlock
+
+FloatArray = npt.NDArray[np.float64]
+IntArray = npt.NDArray[np.int64]
+
+LISTED_LOG_E = float(np.log(3.0))
+"""Families below this log e-value show nothing worth listing beside a leader."""
+
+
+def describe(
+    crossing: Crossing,
+    *,
+    log_e: Mapping[Key, float],
+    log_mean: float,
+    families: Sequence[Family],
+    history: History,
+    levels: Mapping[str, LevelCodes],
+    n_scored: int,
+    standing: Sequence[Alarm],
+) -> Alarm:
+    """Make the alarm of a crossing."""
+    named = {(f.kind, f.along): _level(f, crossing.at, levels.get(f.along)) for f in families}
+    level = named[crossing.key]
+    since, low, high = _dates(crossing.key, level, history, levels, n_scored)
+    index = int(history.index[n_scored - 1])
+    under, replaces = _place(crossing.key, n_scored, low, high, standing)
+    explains = tuple(
+        Explained(kind=key[0], along=key[1], level=named[key], log_e=value)
+        for key, value in sorted(log_e.items(), key=lambda item: -item[1])
+        if under is None and key != crossing.key and value >= LISTED_LOG_E and can_explain(crossing.key, key)
+    )
+    return Alarm(
+        kind=crossing.key[0],
+        along=crossing.key[1],
+        index=index,
+        log_e=log_e[crossing.key],
+        lead=under is None,
+        level=level,
+        since=since,
+        since_low=low,
+        since_high=high,
+        threshold=crossing.threshold,
+        log_mean=log_mean,
+        n_scored=n_scored,
+        explains=explains,
+        under=under,
+        replaces=replaces,
+    )
+
+
+def _place(
+    key: Key, n_scored: int, low: int, high: int, standing: Sequence[Alarm]
+) -> tuple[Key | None, Key | None]:
+    """Say under which standing leader the alarm belongs, and whose warning it takes over."""
+    for leader in reversed([alarm for alarm in standing if alarm.lead]):
+        if takes_over(key, leader.key):
+            return None, leader.key
+        soon = n_scored - leader.n_scored <= N_RUNS_SOON
+        same_start = low <= leader.since_high and high >= leader.since_low
+        if can_explain(leader.key, key) and (soon or same_start):
+            return leader.key, None
+    return None, None
+
+
+def _level(family: Family, at: int, codes: LevelCodes | None) -> str | None:
+    """Name the level with the largest evidence of its own."""
+    if codes is None or not hasattr(family, "level_log_e"):
+        return None
+    evidence: FloatArray = family.level_log_e(at)
+    return list(codes)[int(np.argmax(evidence))] if evidence.size else None
+
+
+def _dates(
+    key: Key, level: str | None, history: History, levels: Mapping[str, LevelCodes], n_scored: int
+) -> tuple[int, int, int]:
+    """Date the start from the scores up to the alarm, as indices of runs."""
+    window = np.arange(max(0, n_scored - N_RUNS_DATED), n_scored)
+    kind, along = key
+    if level is not None and kind != "batch":
+        window = window[history.codes(along)[window] == levels[along][level]]
+    index = history.index[window]
+    z = history.z[index]
+    if kind == "drift":
+        weight = log_weight_of_shift(z)
+    elif kind == "spread":
+        weight = log_weight_of_spread(z)
+    else:
+        weight = log_weight_of_bets(
+            fresh_family(kind, along, level).log_bets(_block(z, window, history, kind, along))
+        )
+    since, low, high = (int(index[at]) for at in starts_not_excluded(weight))
+    return since, low, high
+
+
+def _block(z: FloatArray, window: IntArray, history: History, kind: str, along: str) -> ScoredBlock:
+    groups = {}
+    if kind == "batch":
+        code = history.codes(along)[window].astype(np.int64)
+        groups[along] = group(code, np.zeros(int(code.max()) + 1, dtype=np.int64))
+    return ScoredBlock(
+        z=z,
+        count=np.arange(1, z.size + 1),
+        times=history.times[window],
+        parent_z=history.parent_z[window],
+        groups=groups,
+    )

@@ -1,0 +1,240 @@
+"""The audit of one response over one epoch, run by run or in blocks."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from auditd.errors import BadInput
+from auditd.sequential.alarm import Alarm, Crossing, Key, crossings
+from auditd.sequential.alarm_report import describe
+from auditd.sequential.families import families_asked
+from auditd.sequential.history import History
+from auditd.sequential.levels import LevelCodes, group
+from auditd.sequential.options import Options
+from auditd.sequential.run_block import RunBlock, run_block
+from auditd.sequential.scored_block import ScoredBlock
+from auditd.sequential.scorer import Scorer
+from auditd.sequential.wealth import log_sum
+
+FloatArray = npt.NDArray[np.float64]
+IntArray = npt.NDArray[np.int64]
+
+N_RUNS_AT_ONCE = 2048
+"""Runs bet on at once: the arrays of a grid stay within a core's cache."""
+
+
+@dataclass(frozen=True, kw_only=True)
+class Advanced:
+    """What the audit says of a block of runs.
+
+    Attributes
+    ----------
+    first : index of the block's first run in the epoch.
+    scores : (n,) z, NaN where a run is not scored.
+    log_e : log e-value after each run, by (kind, along).
+    log_mean : (n,) log of the sum of the families' e-values over K: below the mean of all K of the epoch.
+    alarms : alarms raised in the block.
+    """
+
+    first: int
+    scores: FloatArray
+    log_e: dict[Key, FloatArray]
+    log_mean: FloatArray
+    alarms: tuple[Alarm, ...]
+
+
+class Auditor:
+    """Audits one response, continuing from its state.
+
+    Null hypothesis: given labels and order, the joint law of the response is unchanged by permuting runs within
+    cells. Alternative: any of the families' dependences, from any run on. Under the null the probability of any
+    alarm, at whatever moments anyone looks, is at most `alarm_budget` (Ville 1939).
+
+    Assumptions: order, labels and times do not depend on the responses (otherwise the rate can rise without
+    bound: see `stages`); `pooled` and `formula` assume Gaussian errors of one variance, or a random order of
+    cells, and alarm too often where spreads differ and the order of cells is not random.
+    """
+
+    def __init__(self, options: Options) -> None:
+        options.check()
+        self.options = options
+        self._families = families_asked(options)
+        if not self._families:
+            raise BadInput("every kind is withheld: nothing is left to ask")
+        self._scorer = Scorer(options)
+        self._history = History(options.nuisances)
+        self._levels = {name: LevelCodes() for name in options.nuisances}
+        self._n_in_level = {name: np.zeros(0, dtype=np.int64) for name in options.nuisances}
+        self._n_runs = 0
+        self._n_scored = 0
+        self._latest = np.zeros(len(self._families))
+        self._alarms: list[Alarm] = []
+
+    @property
+    def keys(self) -> tuple[Key, ...]:
+        """The families, as (kind, along)."""
+        return tuple((family.kind, family.along) for family in self._families)
+
+    @property
+    def n_asked(self) -> int:
+        """K: e-processes that share the budget, over all responses."""
+        return self.options.n_asked or len(self._families) * self.options.n_responses
+
+    @property
+    def n_runs(self) -> int:
+        """Runs taken, also those not scored."""
+        return self._n_runs
+
+    @property
+    def n_scored(self) -> int:
+        """Runs scored."""
+        return self._n_scored
+
+    @property
+    def alarms(self) -> tuple[Alarm, ...]:
+        """All alarms of the epoch so far."""
+        return tuple(self._alarms)
+
+    @property
+    def log_e(self) -> dict[Key, float]:
+        """Log e-value of each family after the last run."""
+        return dict(zip(self.keys, self._latest.tolist(), strict=True))
+
+    @property
+    def threshold_first(self) -> float:
+        """Log of what the mean of all e-processes must reach for the first alarm."""
+        return float(-np.log(self.options.alarm_budget))
+
+    @property
+    def threshold_own(self) -> float:
+        """Log of what a family's own e-process must reach for a further alarm."""
+        return float(np.log(self.n_asked / self.options.alarm_budget))
+
+    def advance(
+        self,
+        values: npt.ArrayLike,
+        cells: object,
+        *,
+        ids: object,
+        nuisance: Mapping[str, object] | None = None,
+        times: object = None,
+        parents: object = None,
+        design: object = None,
+    ) -> Advanced:
+        """Take the next runs, in order; any split of a series into blocks gives the same result.
+
+        Parameters are those of `replay`, with `parents` counted from the epoch's first run.
+        """
+        block = self._checked(
+            run_block(
+                values,
+                cells,
+                ids=ids,
+                nuisance=nuisance or {},
+                times=times,
+                parents=parents,
+                design=design,
+            )
+        )
+        first = self._n_runs
+        scores = self._scorer.score(block)
+        self._history.add_scores(scores)
+        parts, alarms = [], []
+        for begin in range(0, scores.size, N_RUNS_AT_ONCE):
+            part = slice(begin, min(begin + N_RUNS_AT_ONCE, scores.size))
+            log_e, raised = self._advance_part(block, scores[part], part)
+            parts.append(log_e)
+            alarms += raised
+        paths = np.concatenate(parts, axis=1) if parts else np.empty((len(self._families), 0))
+        return Advanced(
+            first=first,
+            scores=scores,
+            log_e=dict(zip(self.keys, paths, strict=True)),
+            log_mean=self._log_mean(paths),
+            alarms=tuple(alarms),
+        )
+
+    def _checked(self, block: RunBlock) -> RunBlock:
+        options = self.options
+        if set(block.nuisance) != set(options.nuisances):
+            raise BadInput(f"nuisance must name {sorted(options.nuisances)}, got {sorted(block.nuisance)}")
+        for name, wanted, given in (
+            ("times", options.has_times, block.times),
+            ("parents", options.has_parents, block.parents),
+            ("design", options.baseline == "formula", block.design),
+        ):
+            if wanted and given is None:
+                raise BadInput(f"{name} must be given: the audit was opened with them")
+        return block
+
+    def _log_mean(self, paths: FloatArray) -> FloatArray:
+        return log_sum(paths) - np.log(self.n_asked)
+
+    def _advance_part(
+        self, block: RunBlock, scores: FloatArray, part: slice
+    ) -> tuple[FloatArray, list[Alarm]]:
+        """Bet on one part of a block and raise its alarms."""
+        at = np.flatnonzero(np.isfinite(scores))
+        index = self._n_runs + at
+        self._n_runs += scores.size
+        paths = np.repeat(self._latest[:, None], scores.size, axis=1)
+        if at.size == 0:
+            return paths, []
+        scored = self._scored_block(block, scores[at], at + part.start, index)
+        scored_paths = np.vstack([family.advance(scored) for family in self._families])
+        self._n_scored += at.size
+        # A run that is not scored repeats what stood before it.
+        latest = np.searchsorted(at, np.arange(scores.size), side="right") - 1
+        paths[:, latest >= 0] = scored_paths[:, latest[latest >= 0]]
+        self._latest = scored_paths[:, -1].copy()
+        found = crossings(
+            dict(zip(self.keys, scored_paths, strict=True)),
+            self._log_mean(scored_paths),
+            threshold_first=self.threshold_first,
+            threshold_own=self.threshold_own,
+            raised=frozenset(alarm.key for alarm in self._alarms),
+        )
+        return paths, [self._raise(crossing, scored_paths) for crossing in found]
+
+    def _scored_block(self, block: RunBlock, z: FloatArray, at: IntArray, index: IntArray) -> ScoredBlock:
+        groups, codes = {}, {}
+        for name in self.options.nuisances:
+            labels = block.nuisance[name]
+            code = self._levels[name].encode([labels[i] for i in at.tolist()])
+            earlier = np.zeros(len(self._levels[name]), dtype=np.int64)
+            earlier[: self._n_in_level[name].size] = self._n_in_level[name]
+            groups[name], codes[name] = group(code, earlier), code
+            earlier[groups[name].level] += groups[name].n_runs
+            self._n_in_level[name] = earlier
+        times = np.full(at.size, np.nan) if block.times is None else block.times[at]
+        parent_z = self._parent_scores(block, at, index)
+        self._history.add_scored(index, times, parent_z, codes)
+        count = self._n_scored + 1 + np.arange(at.size)
+        return ScoredBlock(z=z, count=count, times=times, parent_z=parent_z, groups=groups)
+
+    def _parent_scores(self, block: RunBlock, at: IntArray, index: IntArray) -> FloatArray:
+        """Give the score of each run's parent if that came earlier, else NaN."""
+        if block.parents is None or not self.options.has_parents:
+            return np.full(at.size, np.nan)
+        parent = block.parents[at]
+        earlier = (parent >= 0) & (parent < index)
+        return np.where(earlier, self._history.z[np.where(earlier, parent, 0)], np.nan)
+
+    def _raise(self, crossing: Crossing, paths: FloatArray) -> Alarm:
+        n_scored = self._n_scored - paths.shape[1] + crossing.at + 1
+        alarm = describe(
+            crossing,
+            log_e=dict(zip(self.keys, paths[:, crossing.at].tolist(), strict=True)),
+            log_mean=float(self._log_mean(paths[:, crossing.at : crossing.at + 1])[0]),
+            families=self._families,
+            history=self._history,
+            levels=self._levels,
+            n_scored=n_scored,
+            standing=self._alarms,
+        )
+        self._alarms.append(alarm)
+        return alarm
