@@ -20,7 +20,7 @@ from auditd.simulate.simulated import Layout
 
 BUILD_SHIFT = 1.5
 """Size of the build's shift, in standard deviations of a run."""
-DRIFT_HOST, DRIFT_DAY, DRIFT_SIZE = "ibis", 5.5, 3.0
+DRIFT_HOST, DRIFT_DAY, DRIFT_SIZE = "ibis", 4.0, 3.0
 """Where and when the drift begins, and how far it goes by the last run, in standard deviations."""
 CACHE_HOST, CACHE_DAY = "heron", 6.0
 N_CACHED, CACHE_LAG = 12, 3
@@ -35,7 +35,8 @@ IGNORED_SEED_CELL = "anchor=twin mesh=coarse"
 class SampleFault:
     """A planted fault as `planted.json` states it.
 
-    `kinds` are the kinds of warning that name it rightly; `index` is the first run that it touches, in order
+    `kinds` are the kinds of warning that name it rightly, `along`, `level` and `response` what such a warning
+    says where they are not None; `index` is the first run that it touches, in order
     of start from 0, and `run` that run's id; `seen_from` is the first index at which it can be seen at all.
     """
 
@@ -185,5 +186,5 @@ def _failure_spell(layout: Layout, failed: NDArray[np.bool_]) -> SampleFault:
         f"{n_inside} of the {until - at} runs that started between day {FAILURE_DAYS[0]:g} and day "
         f"{FAILURE_DAYS[1]:g} failed; elsewhere {n_all - n_inside} did"
     )
-    kinds = ("failure", "drift", "serial")
-    return _fault(index, "failures", kinds, what, along="order", response="completed")
+    kinds = ("failure", "serial", "drift", "spread")
+    return _fault(index, "failures", kinds, what, response="completed")
