@@ -36,7 +36,7 @@ class SampleFault:
     """A planted fault as `planted.json` states it.
 
     `kinds` are the kinds of warning that name it rightly, `along`, `level` and `response` what such a warning
-    says where they are not None; `index` is the first run that it touches, in order
+    says where they are not None, `cells` those that it may name; `index` is the first run that it touches, in order
     of start from 0, and `run` that run's id; `seen_from` is the first index at which it can be seen at all.
     """
 
@@ -45,6 +45,7 @@ class SampleFault:
     along: str | None
     level: str | None
     response: str | None
+    cells: tuple[str, ...]
     run: str
     index: int
     seen_from: int
@@ -138,8 +139,7 @@ def _ignored_seed(layout: Layout, failed: NDArray[np.bool_]) -> SampleFault:
         "ignored seed",
         ("repeat", "seed"),
         what,
-        along="cell",
-        level=IGNORED_SEED_CELL,
+        cells=(IGNORED_SEED_CELL,),
         seen_from=int(runs[1]),
     )
 
@@ -175,7 +175,8 @@ def _host_drift(layout: Layout) -> SampleFault:
 def _cache(layout: Layout, failed: NDArray[np.bool_]) -> SampleFault:
     echoes = [second for first, second in cached_pairs(layout) if not failed[first] and not failed[second]]
     what = f"a cache on {CACHE_HOST} gave {len(echoes)} results twice, to the last digit, under other seeds"
-    return _fault(echoes[0], "cache", ("repeat",), what, along="host", level=CACHE_HOST)
+    cells = tuple(sorted(set(layout.cells[echoes].tolist())))
+    return _fault(echoes[0], "cache", ("repeat",), what, cells=cells)
 
 
 def _failure_spell(layout: Layout, failed: NDArray[np.bool_]) -> SampleFault:

@@ -103,8 +103,10 @@ def test_planted_list_names_existing_runs_of_the_right_level(planted, faulty):
         record = faulty[fault["index"]]
         assert record["run"] == fault["run"]
         assert fault["seen_from"] >= fault["index"]
-        if fault["along"] in {"host", "build"}:
+        if fault["along"] is not None:
             assert record[fault["along"]] == fault["level"]
+        if fault["cells"]:
+            assert f"anchor={record['anchor']} mesh={record['mesh']}" in fault["cells"]
 
 
 def test_lone_configuration_is_aliased_with_its_host_only_in_the_faulty_edition(faulty, clean):
