@@ -6,6 +6,17 @@ turns what they give into `records.Run` or `records.Refusal`.
 
 from auditd.read.mapping import Mapper
 from auditd.read.raw import Extent, Portion, Raw, Reader
-from auditd.read.registry import read_file, reader_for
+from auditd.read.registry import READERS, Readers, read_file, reader_for, storable
 
-__all__ = ["Extent", "Mapper", "Portion", "Raw", "Reader", "read_file", "reader_for"]
+__all__ = [
+    "READERS",
+    "Extent",
+    "Mapper",
+    "Portion",
+    "Raw",
+    "Reader",
+    "Readers",
+    "read_file",
+    "reader_for",
+    "storable",
+]

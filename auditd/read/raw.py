@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from typing import Any, Literal, Protocol
 
 import msgspec
@@ -15,7 +16,9 @@ MAX_DEPTH = 64
 """A record nested deeper is refused (design.md, section 5)."""
 MAX_PORTION_RECORDS = 20_000
 """A portion holds at most so many records, so that the store can commit in between."""
-BLOCK_BYTES = 8 * 1024 * 1024
+MAX_DOCUMENT_BYTES = 256 * 1024 * 1024
+"""A document is held in memory as a whole; a larger one is refused with the advice to write lines."""
+BLOCK_BYTES = 4 * 1024 * 1024
 """Line formats are read by blocks of this size; a longer line makes the block grow to one record's limit."""
 
 
@@ -50,18 +53,16 @@ class Extent(msgspec.Struct, frozen=True, kw_only=True):
 
 
 class Portion(msgspec.Struct, frozen=True, kw_only=True):
-    """What one reading gave.
+    """What one step of reading gave.
 
-    `offset`, `number` and `context` go into the next `Extent`; `more` says that reading on at once gives
-    more. `waits` says in words why the rest is not taken yet (empty when all is taken). `failed` is the
-    reason why the file as a whole is refused.
+    `offset`, `number` and `context` go into the next `Extent`. `waits` says in words why the rest is not
+    taken yet (empty when there is none). `failed` is the reason why the file as a whole is refused.
     """
 
     items: list[Raw | Refusal]
     offset: int
     number: int
     context: bytes = b""
-    more: bool = False
     waits: str = ""
     failed: str = ""
 
@@ -74,8 +75,10 @@ class Reader(Protocol):
     shape: Literal["lines", "document"]
     """A file of lines may grow and is continued from an offset; a document is read whole."""
 
-    def read(self, extent: Extent) -> Portion:
-        """Read on from `extent.offset`, at most MAX_PORTION_RECORDS records.
+    def read(self, extent: Extent) -> Iterator[Portion]:
+        """Read on from `extent.offset`, by portions of at most MAX_PORTION_RECORDS records.
+
+        Whoever reads may stop after any portion, and go on later from what it says.
 
         Raises
         ------
