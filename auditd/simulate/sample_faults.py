@@ -36,8 +36,8 @@ class SampleFault:
     """A planted fault as `planted.json` states it.
 
     `kinds` are the kinds of warning that name it rightly, `along`, `level` and `response` what such a warning
-    says where they are not None, `cells` those that it may name; `index` is the first run that it touches, in order
-    of start from 0, and `run` that run's id; `seen_from` is the first index at which it can be seen at all.
+    says where they are not None, `cells` those that it may name. `index` is the first run that it touches, in
+    order of start from 0, and `run` that run's id; `seen_from` is the first index at which it can be seen.
     """
 
     name: str
@@ -116,10 +116,29 @@ def _failing_stretch(layout: Layout) -> tuple[int, int]:
 
 
 def _fault(
-    index: int, name: str, kinds: tuple[str, ...], what: str, **where: str | int | None
+    index: int,
+    name: str,
+    kinds: tuple[str, ...],
+    what: str,
+    *,
+    along: str | None = None,
+    level: str | None = None,
+    response: str | None = None,
+    cells: tuple[str, ...] = (),
+    seen_from: int | None = None,
 ) -> SampleFault:
-    known = {"along": None, "level": None, "response": None, "seen_from": index, **where}
-    return SampleFault(name=name, kinds=kinds, run=sample_run_id(index), index=index, what=what, **known)  # type: ignore[arg-type]
+    return SampleFault(
+        name=name,
+        kinds=kinds,
+        along=along,
+        level=level,
+        response=response,
+        cells=cells,
+        run=sample_run_id(index),
+        index=index,
+        seen_from=index if seen_from is None else seen_from,
+        what=what,
+    )
 
 
 def _confound(layout: Layout) -> SampleFault:
