@@ -1,0 +1,40 @@
+"""Which run follows which: the links along which one run's error may carry over into the next."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from auditd.evidence.inputs import Codes, Floats, Ints
+
+
+@dataclass(frozen=True, kw_only=True)
+class Chains:
+    """Links child ← parent; a run without a parent starts a chain. `along` names the order."""
+
+    along: str
+    child: Ints
+    parent: Ints
+    starts: Ints
+
+    def innovations(self, x: Floats, phi: float) -> Floats:
+        """x less φ times the parent's; a start is scaled by √(1 − φ²), so that all have one variance."""
+        e = x.copy()
+        e[self.child] -= phi * x[self.parent]
+        e[self.starts] *= np.sqrt(1 - phi * phi)
+        return e
+
+
+def along_order(n: int) -> Chains:
+    """The order of the audit as one chain of n runs."""
+    index = np.arange(n, dtype=np.int64)
+    return Chains(along="order", child=index[1:], parent=index[:-1], starts=index[:1])
+
+
+def within(codes: Codes, name: str) -> Chains:
+    """One chain for each level of a nuisance, in the order of the audit."""
+    order = np.argsort(codes.codes, kind="stable")
+    same = codes.codes[order[1:]] == codes.codes[order[:-1]]
+    starts = np.concatenate((order[:1], order[1:][~same]))
+    return Chains(along=name, child=order[1:][same], parent=order[:-1][same], starts=starts)

@@ -1,0 +1,129 @@
+"""Fit a comparison: choose the chains, weigh the parameters, read off estimate and variance."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from auditd.evidence.chains import Chains, along_order, within
+from auditd.evidence.crossing import Crossing
+from auditd.evidence.inputs import Floats, Ints
+from auditd.evidence.moments import Moments
+from auditd.evidence.posterior import Posterior, explore
+from auditd.evidence.problem import Columns, Problem, collect, lay_columns
+from auditd.evidence.restricted import FIXED_RIDGE, Fits, evaluate
+
+MIN_CHAIN_RUNS = 4.0  # mean length of a nuisance's chains below which dependence within them is not asked
+N_SHARES = 24  # grid points for one random effect's share alone
+SHARES = np.linspace(0.02, 1.0, N_SHARES) ** 2
+
+
+@dataclass(frozen=True, kw_only=True)
+class Model:
+    """Columns, sums and bookkeeping that every evaluation needs."""
+
+    problem: Problem
+    columns: Columns
+    chains: Chains
+    moments: Moments
+    base: Ints
+    n_fixed: int
+
+    def ridge(self, share: Floats, lead: int | None, others: dict[int, float]) -> Floats:
+        """Penalty of each base column at each share; `lead` is the random effect that has the share, `others` have theirs."""
+        result = np.zeros((len(share), len(self.problem.contrast)))
+        parts = [result]
+        for place, crossing in enumerate(self.problem.crossings):
+            if place not in self.columns.levels:
+                continue
+            shares = share if place == lead else np.full(len(share), others.get(place, 0.5))
+            penalty = level_penalty(crossing, shares, self.moments.n)
+            parts.append(np.repeat(penalty[:, None], crossing.codes.n_levels, axis=1))
+        return np.hstack(parts)
+
+    def contrast(self) -> Floats:
+        """The contrast on the base columns."""
+        return np.concatenate((self.problem.contrast, np.zeros(len(self.base) - len(self.problem.contrast))))
+
+
+def level_penalty(crossing: Crossing, share: Floats, n: int) -> Floats:
+    """Innovation variance ÷ level variance: nearly 0 for a block, from the share B for a random effect."""
+    mean_runs = n / crossing.codes.n_levels
+    if crossing.kind == "block":
+        return np.full(len(share), FIXED_RIDGE * mean_runs)
+    inside = np.clip(share, 1e-8, 1 - 1e-6)
+    return np.asarray(mean_runs * inside / (1 - inside))
+
+
+def build(problem: Problem) -> Model:
+    """Lay the columns and choose the chains along which the errors look most dependent."""
+    columns = lay_columns(problem)
+    chains = choose_chains(problem, columns)
+    base = columns.base()
+    spent = [c.codes.n_levels - 1 for c in problem.crossings if c.kind == "block"]
+    return Model(
+        problem=problem,
+        columns=columns,
+        chains=chains,
+        moments=collect(problem, columns, chains),
+        base=base,
+        n_fixed=problem.n_cells_spent + sum(spent),
+    )
+
+
+def choose_chains(problem: Problem, columns: Columns) -> Chains:
+    """The order, or a nuisance's levels, whichever has the larger lag-1 correlation of residuals in standard errors."""
+    n = len(problem.y)
+    candidates = [along_order(n)]
+    for crossing in problem.crossings:
+        if crossing.kind != "unit" and n / crossing.codes.n_levels >= MIN_CHAIN_RUNS:
+            candidates.append(within(crossing.codes, crossing.name))
+    if len(candidates) == 1:
+        return candidates[0]
+    residual = plain_residuals(problem, columns)
+    size = float(residual @ residual) / n
+    scores = [
+        abs(float(residual[c.child] @ residual[c.parent])) / (max(size, 1e-300) * max(len(c.child), 1) ** 0.5)
+        for c in candidates
+    ]
+    return candidates[int(np.argmax(scores))]
+
+
+def plain_residuals(problem: Problem, columns: Columns) -> Floats:
+    """Residuals of ordinary least squares on cells and levels."""
+    table = columns.table[:, columns.base()]
+    count = np.bincount(columns.code)
+    sums = np.bincount(columns.code, problem.y)
+    gram = (table.T * count) @ table
+    index = np.arange(len(gram))
+    gram[index, index] += FIXED_RIDGE * max(len(problem.y) / len(gram), 1.0)
+    return np.asarray(problem.y - (table @ np.linalg.solve(gram, table.T @ sums))[columns.code])
+
+
+def weigh(model: Model) -> tuple[Posterior, dict[int, float], int | None]:
+    """Posterior over φ and the strongest partly crossed effect; the shares of the other ones are set by likelihood."""
+    random = [place for place, c in enumerate(model.problem.crossings) if c.kind == "random"]
+    moments, c = model.moments.select(model.base), model.contrast()
+    others: dict[int, float] = {}
+    drops: dict[int, float] = {}
+    for place in random:
+        fits = evaluate(
+            moments, c, np.zeros(N_SHARES), model.ridge(SHARES, place, others), model.n_fixed
+        )
+        others[place] = float(SHARES[int(np.argmax(fits.loglik))])
+        drops[place] = float(fits.loglik.max() - fits.loglik[-1])
+    lead = max(random, key=drops.__getitem__) if random else None
+
+    def fit(phi: Floats, share: Floats) -> Fits:
+        return evaluate(moments, c, phi, model.ridge(share, lead, others), model.n_fixed)
+
+    return explore(fit, with_share=lead is not None), others, lead
+
+
+def errors_of(model: Model, coefficients: Floats, leverage: Floats, phi: float) -> tuple[Floats, Floats]:
+    """Innovations of the runs and each innovation's weight in the estimate."""
+    table = model.columns.table[:, model.base]
+    residual = model.problem.y - (table @ coefficients)[model.columns.code]
+    weight = (table @ leverage)[model.columns.code]
+    return model.chains.innovations(residual, phi), model.chains.innovations(weight, phi)

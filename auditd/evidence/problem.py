@@ -1,0 +1,75 @@
+"""A comparison as a linear model: columns for cells, for nuisance levels, and for each level's own difference between the sides."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from auditd.evidence.chains import Chains
+from auditd.evidence.crossing import Crossing
+from auditd.evidence.inputs import Floats, Ints
+from auditd.evidence.moments import Moments, gather
+
+MAX_CELLS = 60  # cells that get a column each; with more, runs are centred within their cells first
+
+
+@dataclass(frozen=True, kw_only=True)
+class Problem:
+    """Runs and columns of one comparison.
+
+    y : (n,) centred and scaled. cell : (n,) code. contrast : (n_cells,) weights. side : (n,) −½ for a, +½ for b, 0 for other cells.
+    crossings : nuisances with columns. n_cells_spent : degrees of freedom that cells cost (more than n_cells after centring).
+    """
+
+    y: Floats
+    cell: Ints
+    contrast: Floats
+    side: Floats
+    crossings: tuple[Crossing, ...]
+    n_cells_spent: int
+
+
+@dataclass(frozen=True, kw_only=True)
+class Columns:
+    """The design by code: table (K, k), each run's code, and which columns are what (crossing index → columns)."""
+
+    code: Ints
+    table: Floats
+    cells: Ints
+    levels: dict[int, Ints]
+    slopes: dict[int, Ints]
+
+    def base(self) -> Ints:
+        """Columns of cells and nuisance levels, without the slopes."""
+        return np.concatenate([self.cells, *self.levels.values()])
+
+
+def lay_columns(problem: Problem) -> Columns:
+    """Gather runs with equal labels under one code, and lay out the design's row for each code."""
+    key = problem.cell.copy()
+    for crossing in problem.crossings:
+        key = np.unique(key * crossing.codes.n_levels + crossing.codes.codes, return_inverse=True)[1]
+    _, first, code = np.unique(key, return_index=True, return_inverse=True)
+    cell, side = problem.cell[first], problem.side[first]
+    n_cells = len(problem.contrast)
+    parts = [(cell[:, None] == np.arange(n_cells)).astype(float)]
+    levels: dict[int, Ints] = {}
+    slopes: dict[int, Ints] = {}
+    width = n_cells
+    for place, crossing in enumerate(problem.crossings):
+        level = crossing.codes.codes[first]
+        if crossing.kind in {"block", "random"}:
+            parts.append((level[:, None] == np.arange(crossing.codes.n_levels)).astype(float))
+            levels[place] = np.arange(width, width + crossing.codes.n_levels)
+            width += crossing.codes.n_levels
+        if len(crossing.both) > 1:
+            parts.append((level[:, None] == crossing.both) * side[:, None])
+            slopes[place] = np.arange(width, width + len(crossing.both))
+            width += len(crossing.both)
+    return Columns(code=code, table=np.hstack(parts), cells=np.arange(n_cells), levels=levels, slopes=slopes)
+
+
+def collect(problem: Problem, columns: Columns, chains: Chains) -> Moments:
+    """The sums of this comparison along the given chains."""
+    return gather(problem.y, columns.code, columns.table, chains)

@@ -1,0 +1,97 @@
+"""From the weighted fits to one estimate, one variance, one interval."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from auditd.evidence.fit import Model, errors_of, weigh
+from auditd.evidence.inputs import Floats
+from auditd.evidence.interaction import Interaction, judge
+from auditd.evidence.mixture import half_width
+from auditd.evidence.posterior import Posterior
+from auditd.evidence.spread import by_side
+
+ROBUST_T = 0.975  # where interactions of several nuisances are ranked by the width that they give
+
+
+@dataclass(frozen=True, kw_only=True)
+class Solution:
+    """Result on the scale of the fit.
+
+    variances, marginals : (G,) variance of the estimate, and variance of one run, at each grid point; weights (G,) of the points.
+    scatter_df : degrees of freedom of the interaction's mean square, infinite where none enters.
+    """
+
+    estimate: float
+    half: float
+    df: float
+    variances: Floats
+    marginals: Floats
+    weights: Floats
+    phi: float
+    scatter_df: float
+    interaction: Interaction | None
+
+    def quantile(self, x: Floats, p: float) -> float:
+        """Quantile of a quantity known at the grid points."""
+        order = np.argsort(x)
+        cumulated = np.cumsum(self.weights[order]) - 0.5 * self.weights[order]
+        return float(np.interp(p, cumulated, x[order]))
+
+
+def solve(model: Model, confidence: float) -> Solution:
+    """Weigh the parameters, correct for unequal spread and for the levels' own differences, and take the interval."""
+    from scipy.special import stdtrit
+
+    posterior, others, lead = weigh(model)
+    fits, best = posterior.fits, posterior.best
+    phi = float(posterior.phi[best])
+    nu = float(model.moments.n - model.n_fixed)
+    error, weight = errors_of(model, fits.coefficients[best], fits.leverage[best], phi)
+    spread = by_side(
+        error, weight, model.problem.side, model.problem.cell, float(fits.unit[best]), float(fits.sigma2[best]), nu
+    )
+    centre = posterior.mean(fits.estimate)
+    variances = fits.unit * fits.sigma2 * spread.ratio
+    half = half_width(centre, fits.estimate, np.sqrt(variances), posterior.weight, spread.df, confidence)
+    uncertainty = _relative_variance(posterior, np.log(variances))
+    df = 1 / (1 / spread.df + 0.5 * uncertainty)
+    ridge = model.ridge(posterior.share[best : best + 1], lead, others)[0]
+    scatter = _widest(
+        [judge(model, place, phi, ridge, float(fits.estimate[best])) for place in model.columns.slopes]
+    )
+    factor, scatter_df = 1.0, float("inf")
+    if scatter is not None:
+        factor = scatter.variance / float(fits.unit[best] * fits.sigma2[best])
+        scatter_df = scatter.df
+        df_scatter = 1 / (1 / scatter.df + 0.5 * uncertainty)
+        half *= factor**0.5 * float(stdtrit(df_scatter, 0.5 + confidence / 2) / stdtrit(df, 0.5 + confidence / 2))
+        df, centre = df_scatter, centre + scatter.shift
+    return Solution(
+        estimate=centre,
+        half=half,
+        df=df,
+        variances=variances * factor,
+        marginals=fits.sigma2 / (1 - posterior.phi**2),
+        weights=posterior.weight,
+        phi=posterior.mean(posterior.phi),
+        scatter_df=scatter_df,
+        interaction=scatter,
+    )
+
+
+def _relative_variance(posterior: Posterior, log_variances: Floats) -> float:
+    mean = posterior.mean(log_variances)
+    return posterior.mean((log_variances - mean) ** 2)
+
+
+def _widest(found: list[Interaction | None]) -> Interaction | None:
+    """The nuisance whose own differences make the widest interval."""
+    from scipy.special import stdtrit
+
+    known = [item for item in found if item is not None]
+    if not known:
+        return None
+    return max(known, key=lambda item: item.variance * float(stdtrit(item.df, ROBUST_T)) ** 2)

@@ -1,0 +1,53 @@
+"""Unequal spread of the two sides: Welch's correction carried over to generalised least squares."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from auditd.evidence.inputs import Floats, Ints
+
+MIN_SIDE_DF = 3  # innovations beyond the cells' means that a side needs for a variance of its own
+
+
+@dataclass(frozen=True, kw_only=True)
+class Spread:
+    """Variance of the estimate with each side's own innovation variance ÷ with a common one, and its degrees of freedom."""
+
+    ratio: float
+    df: float
+
+
+def by_side(error: Floats, weight: Floats, side: Floats, cell: Ints, unit: float, sigma2: float, df: float) -> Spread:
+    """Let a, b and the other cells have a variance each.
+
+    With φ = 0 and no nuisance this is Welch's variance and Satterthwaite's degrees of freedom exactly.
+
+    Parameters
+    ----------
+    error, weight : (n,) innovations, and their weights in the estimate.
+    unit, sigma2, df : variance of the estimate ÷ innovation variance, the common innovation variance, its degrees of freedom.
+    """
+    total, spent, own = 0.0, 0.0, 0.0
+    for value in (-0.5, 0.0, 0.5):
+        members = side == value
+        pull = float(weight[members] @ weight[members])
+        if pull <= 0:
+            continue
+        n_cells = int((np.bincount(cell[members]) > 0).sum())
+        side_df = int(members.sum()) - n_cells
+        if side_df < MIN_SIDE_DF:
+            return Spread(ratio=1.0, df=df)
+        part = pull * float(error[members] @ error[members]) / side_df
+        total += part
+        own += pull
+        spent += part * part / side_df
+    if total <= 0 or own <= 0:
+        return Spread(ratio=1.0, df=df)
+    # degrees of freedom spent on blocks are taken off in proportion
+    n_side_df = len(error) - len(np.unique(cell))
+    lost = df / max(n_side_df, 1)
+    rest = max(unit - own, 0.0) * sigma2
+    ratio = (total / lost + rest) / (unit * sigma2)
+    return Spread(ratio=ratio, df=min(max(total * total / spent * lost, 1.0), df))
