@@ -106,7 +106,7 @@ def _moments(sizes: Integers) -> tuple[float, float]:
     squares, cubes = sum(m * s**2 for s, m in pairs), sum(m * s**3 for s, m in pairs)
     mean = (n * (n + 1) - squares) / n
     variance = squares * (squares + n * (n + 1)) - 2 * n * cubes - n**3
-    return mean, math.sqrt(variance / (n * n * (n * n - 1)))
+    return mean, math.sqrt(variance / (n * n * (n - 1)))
 
 
 def _tails(n_runs: int, sizes: Integers, mean: float, sd: float) -> tuple[float, float, str]:
