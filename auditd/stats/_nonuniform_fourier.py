@@ -22,6 +22,8 @@ N_CELLS = 13
 SHARPNESS = 2.30 * N_CELLS
 # Nodes of the quadrature for the bump's transform; 64 leave an error below 1e-14.
 N_QUADRATURE = 64
+# Degree of the fit to that transform; its error is below 1e-15 of the transform at frequency zero.
+N_CHEBYSHEV = 40
 # Values spread at once (about 500 bytes each).
 BLOCK_SIZE = 1_000_000
 
@@ -45,10 +47,10 @@ def fourier_sums(phases: Floats, x: Floats, n_frequencies: int) -> NDArray[np.co
 
 
 def _bump_transform(cycles_per_cell: Floats) -> Floats:
-    """∫ bump(s) cos(2π f s) ds over its N_CELLS cells."""
+    """∫ bump(s) cos(2π f s) ds over its N_CELLS cells, for f up to one quarter, by a Chebyshev fit."""
     nodes, weights = np.polynomial.legendre.leggauss(N_QUADRATURE)
-    bump = weights * np.exp(SHARPNESS * (np.sqrt(1.0 - nodes**2) - 1.0))
-    out = np.zeros(cycles_per_cell.size)
-    for node, share in zip(nodes, bump, strict=True):
-        out += share * np.cos(np.pi * N_CELLS * node * cycles_per_cell)
-    return np.asarray(0.5 * N_CELLS * out)
+    bump = 0.5 * N_CELLS * weights * np.exp(SHARPNESS * (np.sqrt(1.0 - nodes**2) - 1.0))
+    fit = np.polynomial.Chebyshev.interpolate(
+        lambda f: np.cos(np.pi * N_CELLS * np.outer(f, nodes)) @ bump, N_CHEBYSHEV, domain=[0.0, 0.26]
+    )
+    return np.asarray(fit(cycles_per_cell))

@@ -6,6 +6,8 @@ of x − b t, and b is searched for, starting from the slopes of random pairs.
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 
 from auditd.stats._validate import Floats
@@ -31,7 +33,7 @@ def score(times: Floats, x: Floats) -> int:
     n = x.size
     tau = float(kendalltau(times, x, method="asymptotic").statistic) if np.ptp(x) > 0.0 else 0.0
     pairs = 0.5 * n * (n - 1.0)
-    return round(tau * np.sqrt(pairs - tied_pairs(times)) * np.sqrt(pairs - tied_pairs(x)))
+    return round(tau * math.sqrt(pairs - tied_pairs(times)) * math.sqrt(pairs - tied_pairs(x)))
 
 
 def tied_pairs(values: Floats) -> float:

@@ -53,7 +53,7 @@ def cusum_arl(k: float, h: float, shift: float, sides: int = 2, head_start: floa
     shift = number(shift, "shift", above=-1e3, below=1e3)
     sides = count(sides, "sides", low=1, high=2)
     head_start = number(head_start, "head_start", above=0.0, below=h, closed=True)
-    if h == 0.0 or head_start == h:
+    if h in (0.0, head_start):
         raise BadInput("h must be above 0, and head_start below h")
     upper_zero, upper = _one_sided(k, h, shift, head_start)
     if sides == 2:

@@ -42,8 +42,8 @@ def ewma_arl(lam: float, limit: float, shift: float) -> float:
 
     References
     ----------
-    Crowder, S. V. (1987), Technometrics 29:401-407 (integral equation). Lucas, J. M. and Saccucci, M. S. (1990),
-    Technometrics 32:1-12.
+    Crowder, S. V. (1987), Technometrics 29:401-407 (integral equation). Lucas, J. M. and Saccucci, M. S.
+    (1990), Technometrics 32:1-12.
     """
     lam = number(lam, "lam", above=0.0, below=1.0, closed=True)
     limit = number(limit, "limit", above=0.0, below=1e3)

@@ -38,8 +38,8 @@ def fisher_g(x: ArrayLike) -> FisherG:
     Returns
     -------
     FisherG
-        `.statistic` g in (0, 1], the largest of the m = ⌊(n − 1) / 2⌋ ordinates over their sum (frequency zero
-        and, for even n, one half are left out); exact `.pvalue`; `.index` j of the peak, whose `.period` is
+        `.statistic` g in (0, 1], the largest of the m = ⌊(n − 1) / 2⌋ ordinates over their sum (frequency
+        zero and, for even n, one half are left out); exact `.pvalue`; `.index` j of the peak, whose `.period` is
         n / j runs.
 
     Raises
@@ -54,8 +54,8 @@ def fisher_g(x: ArrayLike) -> FisherG:
 
     References
     ----------
-    Fisher, R. A. (1929), Proc. R. Soc. A 125:54-59. Brockwell, P. J. and Davis, R. A. (1991), Time Series: Theory
-    and Methods, section 10.2.
+    Fisher, R. A. (1929), Proc. R. Soc. A 125:54-59. Brockwell, P. J. and Davis, R. A. (1991), Time Series:
+    Theory and Methods, section 10.2.
     """
     from scipy.fft import rfft
 

@@ -53,8 +53,8 @@ def integrated_time(x: ArrayLike, confidence: float = 0.95, method: str = "geyer
     ----------
     x : (n,) values in the order of the runs.
     confidence : of the limits of tau.
-    method : "geyer", the initial monotone sequence with the estimator of ρ_k of Gelman et al. for one chain; or
-        "sokal", all lags up to the first that is at least five times the tau so far.
+    method : "geyer", the initial monotone sequence with the estimator of ρ_k of Gelman et al. for one chain;
+        or "sokal", all lags up to the first that is at least five times the tau so far.
 
     Returns
     -------
@@ -70,8 +70,8 @@ def integrated_time(x: ArrayLike, confidence: float = 0.95, method: str = "geyer
     Assumptions
     -----------
     A stationary series. Estimators differ (Geyer 285, Sokal's window 367 effective of 1000 on one series):
-    compare only like with like. A step or trend counts as very long dependence. Geyer's sequence is derived for
-    reversible chains; under cyclic dependence it may end early and tau come out too small or too large.
+    compare only like with like. A step or trend counts as very long dependence. Geyer's sequence is derived
+    for reversible chains; under cyclic dependence it may end early and tau come out too small or too large.
 
     References
     ----------

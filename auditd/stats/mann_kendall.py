@@ -66,13 +66,14 @@ def mann_kendall(
     Returns
     -------
     MannKendall
-        `.statistic` z with continuity correction, two-sided normal `.pvalue`. Above 2,000 values the slopes are
-        searched for instead of sorted, to within a thousandth of their standard error.
+        `.statistic` z with continuity correction, two-sided normal `.pvalue`. Above 2,000 values the slopes
+        are searched for instead of sorted, to within a thousandth of their standard error.
 
     Raises
     ------
     BadInput : malformed values, times that descend, unknown correction.
-    NotTestable : fewer than 4 values, constant values or times, or a correction that leaves no positive variance.
+    NotTestable : fewer than 4 values, constant values or times, or a correction that leaves no
+        positive variance.
 
     Assumptions
     -----------

@@ -60,8 +60,8 @@ def von_neumann_rank(x: ArrayLike, alternative: str = "two-sided") -> VonNeumann
 
     Assumptions
     -----------
-    None about the law of the values. Far tails of the beta approximation are rough: at n = 13 it gives 1.2e-8 where
-    a normal one gives 1.3e-4. Many ties make it slightly liberal.
+    None about the law of the values. Far tails of the beta approximation are rough: at n = 13 it gives 1.2e-8
+    where a normal one gives 1.3e-4. Many ties make it slightly liberal.
 
     References
     ----------
