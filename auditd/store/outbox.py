@@ -90,6 +90,11 @@ def mark_failed(connection: Connection, rows: list[int], *, error: str, due_us: 
     )
 
 
+def postpone_letters(connection: Connection, rows: list[int], due_us: int) -> None:
+    """Let alerts wait that were not tried, because another one for the same target just failed."""
+    connection.execute(update(outbox).where(outbox.c.row.in_(rows)).values(due_us=due_us))
+
+
 def count_letters(connection: Connection) -> dict[State, int]:
     """Count alerts by state."""
     rows = connection.execute(select(outbox.c.state, func.count()).group_by(outbox.c.state))
