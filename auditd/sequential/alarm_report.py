@@ -15,10 +15,11 @@ from auditd.sequential.dating import (
     log_weight_of_spread,
     starts_not_excluded,
 )
-from auditd.sequential.families import fresh_family
+from auditd.sequential.book import Book
 from auditd.sequential.history import History
 from auditd.sequential.levels import LevelCodes, group
-from auditd.sequential.scored_block import Family, ScoredBlock
+from auditd.sequential.questions import fresh_bets
+from auditd.sequential.scored_block import ScoredBlock
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
@@ -32,14 +33,14 @@ def describe(
     *,
     log_e: Mapping[Key, float],
     log_mean: float,
-    families: Sequence[Family],
+    book: Book,
     history: History,
     levels: Mapping[str, LevelCodes],
     n_scored: int,
     standing: Sequence[Alarm],
 ) -> Alarm:
     """Make the alarm of a crossing."""
-    named = {(f.kind, f.along): _level(f, crossing.at, levels.get(f.along)) for f in families}
+    named = {key: _level(key, crossing.at, book, history, levels, n_scored) for key in log_e}
     level = named[crossing.key]
     since, low, high = _dates(crossing.key, level, history, levels, n_scored)
     index = int(history.index[n_scored - 1])
@@ -82,12 +83,18 @@ def _place(
     return None, None
 
 
-def _level(family: Family, at: int, codes: LevelCodes | None) -> str | None:
-    """Name the level with the largest evidence of its own."""
-    if codes is None or not hasattr(family, "level_log_e"):
+def _level(
+    key: Key, at: int, book: Book, history: History, levels: Mapping[str, LevelCodes], n_scored: int
+) -> str | None:
+    """Name the level with the largest evidence of its own; for `batch`, with the largest standardised mean."""
+    if key[1] not in levels:
         return None
-    evidence: FloatArray = family.level_log_e(at)
-    return list(codes)[int(np.argmax(evidence))] if evidence.size else None
+    evidence = book.level_log_e(key, at)
+    if evidence is None:
+        code = history.codes(key[1])[:n_scored]
+        total = np.bincount(code, weights=history.z[history.index[:n_scored]])
+        evidence = total**2 / np.maximum(np.bincount(code), 1)
+    return list(levels[key[1]])[int(np.argmax(evidence))]
 
 
 def _dates(
@@ -106,7 +113,9 @@ def _dates(
         weight = log_weight_of_spread(z)
     else:
         weight = log_weight_of_bets(
-            fresh_family(kind, along, level).log_bets(_block(z, window, history, kind, along))
+            fresh_bets(kind, along, within_one_level=level is not None).log_bets(
+                _block(z, window, history, kind, along)
+            )
         )
     since, low, high = (int(index[at]) for at in starts_not_excluded(weight))
     return since, low, high

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -11,7 +11,8 @@ import numpy.typing as npt
 from auditd.errors import BadInput
 from auditd.sequential.alarm import Alarm, Crossing, Key, crossings
 from auditd.sequential.alarm_report import describe
-from auditd.sequential.families import families_asked
+from auditd.sequential.audit_dump import AuditDump, dump_bytes, dump_from
+from auditd.sequential.book import Book
 from auditd.sequential.history import History
 from auditd.sequential.levels import LevelCodes, group
 from auditd.sequential.options import Options
@@ -47,6 +48,19 @@ class Advanced:
     alarms: tuple[Alarm, ...]
 
 
+@dataclass(frozen=True, kw_only=True)
+class EarlierRuns:
+    """Stored runs of an epoch, in order, as `Auditor.advance` takes them."""
+
+    values: npt.ArrayLike
+    cells: object
+    ids: object
+    nuisance: Mapping[str, object]
+    times: object = None
+    parents: object = None
+    design: object = None
+
+
 class Auditor:
     """Audits one response, continuing from its state.
 
@@ -62,27 +76,25 @@ class Auditor:
     def __init__(self, options: Options) -> None:
         options.check()
         self.options = options
-        self._families = families_asked(options)
-        if not self._families:
-            raise BadInput("every kind is withheld: nothing is left to ask")
+        self._book = Book(options)
         self._scorer = Scorer(options)
         self._history = History(options.nuisances)
         self._levels = {name: LevelCodes() for name in options.nuisances}
         self._n_in_level = {name: np.zeros(0, dtype=np.int64) for name in options.nuisances}
         self._n_runs = 0
         self._n_scored = 0
-        self._latest = np.zeros(len(self._families))
+        self._latest = np.zeros(len(self.keys))
         self._alarms: list[Alarm] = []
 
     @property
     def keys(self) -> tuple[Key, ...]:
         """The families, as (kind, along)."""
-        return tuple((family.kind, family.along) for family in self._families)
+        return self._book.keys
 
     @property
     def n_asked(self) -> int:
         """K: e-processes that share the budget, over all responses."""
-        return self.options.n_asked or len(self._families) * self.options.n_responses
+        return self.options.n_asked or len(self.keys) * self.options.n_responses
 
     @property
     def n_runs(self) -> int:
@@ -149,7 +161,7 @@ class Auditor:
             log_e, raised = self._advance_part(block, scores[part], part)
             parts.append(log_e)
             alarms += raised
-        paths = np.concatenate(parts, axis=1) if parts else np.empty((len(self._families), 0))
+        paths = np.concatenate(parts, axis=1) if parts else np.empty((len(self.keys), 0))
         return Advanced(
             first=first,
             scores=scores,
@@ -157,6 +169,93 @@ class Auditor:
             log_mean=self._log_mean(paths),
             alarms=tuple(alarms),
         )
+
+    def observe(
+        self,
+        value: float,
+        cell: str,
+        *,
+        run_id: str,
+        nuisance: Mapping[str, str] | None = None,
+        time: float | None = None,
+        parent: int | None = None,
+        design: npt.ArrayLike | None = None,
+    ) -> Advanced:
+        """Take one run; the same as `advance` over a block of one."""
+        return self.advance(
+            np.array([value], dtype=np.float64),
+            [cell],
+            ids=[run_id],
+            nuisance={name: [level] for name, level in (nuisance or {}).items()},
+            times=np.array([np.nan if time is None else time]) if self.options.has_times else None,
+            parents=np.array([-1 if parent is None else parent]) if self.options.has_parents else None,
+            design=None if design is None else np.asarray(design, dtype=np.float64)[None, :],
+        )
+
+    def dump(self) -> bytes:
+        """Give the state as bytes; with the epoch's stored runs, `load` continues from it."""
+        return dump_bytes(
+            AuditDump(
+                options=self.options,
+                n_runs=self._n_runs,
+                n_scored=self._n_scored,
+                levels={name: list(codes) for name, codes in self._levels.items()},
+                n_in_level={name: count.tolist() for name, count in self._n_in_level.items()},
+                latest=self._latest.tolist(),
+                alarms=self._alarms,
+                parts=self._book.state(),
+            )
+        )
+
+    @classmethod
+    def load(cls, data: bytes, runs: EarlierRuns | None = None) -> Auditor:
+        """Continue from a state given by `dump`.
+
+        Parameters
+        ----------
+        data : what `dump` gave.
+        runs : all runs of the epoch that the state covers, in order; from them the reference of the ranks and
+            the scores are rebuilt. None only for a state before the first run.
+
+        Raises
+        ------
+        BadInput : other bytes, another version, or runs that are not those covered.
+        """
+        dump = dump_from(data)
+        auditor = cls(dump.options)
+        n_given = 0 if runs is None else np.asarray(runs.values).size
+        if n_given != dump.n_runs:
+            raise BadInput(f"the state covers {dump.n_runs} runs, got {n_given}")
+        if runs is not None and n_given:
+            auditor._rebuild(runs)
+        if auditor._n_scored != dump.n_scored or [*auditor._levels_seen()] != [*dump.levels.items()]:
+            raise BadInput("these runs are not the ones that the state covers: scored runs or levels differ")
+        auditor._latest = np.array(dump.latest)
+        auditor._alarms = list(dump.alarms)
+        auditor._book.restore(dump.parts)
+        return auditor
+
+    def _levels_seen(self) -> Iterator[tuple[str, list[str]]]:
+        return ((name, list(codes)) for name, codes in self._levels.items())
+
+    def _rebuild(self, runs: EarlierRuns) -> None:
+        """Rebuild reference, scores and labels from stored runs, without betting."""
+        block = self._checked(
+            run_block(
+                runs.values,
+                runs.cells,
+                ids=runs.ids,
+                nuisance=runs.nuisance,
+                times=runs.times,
+                parents=runs.parents,
+                design=runs.design,
+            )
+        )
+        scores = self._scorer.score(block)
+        self._history.add_scores(scores)
+        at = np.flatnonzero(np.isfinite(scores))
+        self._scored_block(block, scores[at], at, at)
+        self._n_runs, self._n_scored = scores.size, at.size
 
     def _checked(self, block: RunBlock) -> RunBlock:
         options = self.options
@@ -185,7 +284,7 @@ class Auditor:
         if at.size == 0:
             return paths, []
         scored = self._scored_block(block, scores[at], at + part.start, index)
-        scored_paths = np.vstack([family.advance(scored) for family in self._families])
+        scored_paths = self._book.advance(scored)
         self._n_scored += at.size
         # A run that is not scored repeats what stood before it.
         latest = np.searchsorted(at, np.arange(scores.size), side="right") - 1
@@ -230,7 +329,7 @@ class Auditor:
             crossing,
             log_e=dict(zip(self.keys, paths[:, crossing.at].tolist(), strict=True)),
             log_mean=float(self._log_mean(paths[:, crossing.at : crossing.at + 1])[0]),
-            families=self._families,
+            book=self._book,
             history=self._history,
             levels=self._levels,
             n_scored=n_scored,

@@ -13,6 +13,8 @@ from auditd.sequential.recurrence import solve_recurrence
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
+Grid = tuple[tuple[float, ...], tuple[float, ...]]
+
 N_STEPS_TO_STEADY = 1024
 """Runs after which a gain no longer moves in float64, for every grid of this package; held by a test."""
 
@@ -28,21 +30,22 @@ class GainTable:
 
 
 @lru_cache(maxsize=16)
-def gain_table(phi: tuple[float, ...], share: tuple[float, ...]) -> GainTable:
+def gain_table(grids: tuple[Grid, ...]) -> GainTable:
     """Tabulate the filter of z = √s·x + √(1−s)·ε, x a stationary AR(1) of unit variance.
 
     The gains do not depend on the scores, so that predictions are a linear recurrence.
 
     Parameters
     ----------
-    phi, share : the grid, each pair (φ, s) once, φ varying slowest.
+    grids : pairs of coefficients and shares; each gives the rows (φ, s), φ varying slowest.
 
     References
     ----------
     Kalman (1960), Journal of Basic Engineering 82; Durbin & Koopman (2012), Time Series Analysis by State
     Space Methods, section 4.3.
     """
-    p, s = (x.ravel() for x in np.meshgrid(phi, share, indexing="ij"))
+    points = [(phi, share) for phis, shares in grids for phi in phis for share in shares]
+    p, s = np.array(points).T
     carry = np.empty((p.size, N_STEPS_TO_STEADY))
     gain, variance = np.empty_like(carry), np.empty_like(carry)
     state_variance = s.copy()

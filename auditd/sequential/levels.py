@@ -37,6 +37,7 @@ class Grouping:
     level : (k,) codes of the levels present.
     count : (n,) earlier scored runs of the level, in the order of `by_level`.
     n_runs : (k,) runs of each level in the block.
+    n_levels : levels seen so far.
     """
 
     code: IntArray
@@ -45,6 +46,7 @@ class Grouping:
     level: IntArray
     count: IntArray
     n_runs: IntArray
+    n_levels: int
 
 
 def group(code: IntArray, n_earlier: IntArray) -> Grouping:
@@ -55,7 +57,15 @@ def group(code: IntArray, n_earlier: IntArray) -> Grouping:
     n_runs = np.diff(np.append(first, code.size))
     level = in_order[first]
     count = np.arange(code.size) - np.repeat(first - n_earlier[level], n_runs)
-    return Grouping(code=code, by_level=by_level, first=first, level=level, count=count, n_runs=n_runs)
+    return Grouping(
+        code=code,
+        by_level=by_level,
+        first=first,
+        level=level,
+        count=count,
+        n_runs=n_runs,
+        n_levels=n_earlier.size,
+    )
 
 
 def grown(array: FloatArray, n_levels: int, fill: float) -> FloatArray:

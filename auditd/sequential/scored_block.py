@@ -1,4 +1,4 @@
-"""What a family sees of a block: scores and labels, never values."""
+"""What bets see of a block: scores and labels, never values."""
 
 from __future__ import annotations
 
@@ -36,18 +36,25 @@ class ScoredBlock:
     groups: Mapping[str, Grouping]
 
 
-class Family(Protocol):
-    """An e-process on one kind of dependence along one order."""
+class Bets(Protocol):
+    """Predictive densities of the next scores, for the families of one order.
 
-    kind: str
+    Attributes
+    ----------
+    along : "order" or the nuisance's name.
+    families : kinds bet on, each with its number of grid points, in the order of the rows of `log_bets`.
+    has_levels_alone : whether half of the mass bets that one level alone is affected.
+    """
+
     along: str
-
-    def advance(self, block: ScoredBlock) -> FloatArray:
-        """Take the next scored runs; give the family's log e-value after each."""
-        ...
+    families: tuple[tuple[str, int], ...]
+    has_levels_alone: bool
 
     def log_bets(self, block: ScoredBlock) -> FloatArray:
-        """Give log L of every grid point for the next runs, (grid, n), and take them into the posterior."""
+        """Give log L = log f(z_t | past) − log φ(z_t), (grid, n), and take the scores into the past.
+
+        Each L is a ratio of a predictive density to the null's: its conditional mean is 1 under the null.
+        """
         ...
 
     def state(self) -> State:
@@ -56,12 +63,4 @@ class Family(Protocol):
 
     def restore(self, state: State) -> None:
         """Take a state given by `state`."""
-        ...
-
-
-class LevelFamily(Family, Protocol):
-    """A family along a nuisance that can say which level stands out."""
-
-    def level_log_e(self, at: int) -> FloatArray:
-        """Give each level's own log e-value after run `at` of the block taken last."""
         ...

@@ -5,10 +5,8 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
-from auditd.sequential.grids import FIRST_START_MASS, LINEAGE_PHI
+from auditd.sequential.grids import LINEAGE_PHI
 from auditd.sequential.scored_block import ScoredBlock, State
-from auditd.sequential.start_weights import log_start_weight, log_unspent
-from auditd.sequential.wealth import grow_wealth, log_e_of
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -16,12 +14,12 @@ FloatArray = npt.NDArray[np.float64]
 class ParentCorrelation:
     """Bets that a run's score is N(φ·z_parent, 1 − φ²); a run without a scored earlier parent is not bet on."""
 
-    kind = "lineage"
+    families = (("lineage", len(LINEAGE_PHI)),)
+    has_levels_alone = False
     along = "order"
 
     def __init__(self) -> None:
         self._phi = np.array(LINEAGE_PHI)[:, None]
-        self._log_wealth = np.full(len(LINEAGE_PHI), np.log(FIRST_START_MASS))
 
     def log_bets(self, block: ScoredBlock) -> FloatArray:
         """Give log L of every coefficient, (grid, n)."""
@@ -31,16 +29,9 @@ class ParentCorrelation:
         log_l = 0.5 * block.z**2 - 0.5 * np.log(variance) - residual**2 / (2.0 * variance)
         return np.where(known, log_l, 0.0)
 
-    def advance(self, block: ScoredBlock) -> FloatArray:
-        """Give the log e-value after each run."""
-        path = grow_wealth(self._log_wealth, self.log_bets(block), log_start_weight(block.count))
-        self._log_wealth = path[:, -1].copy()
-        return log_e_of(path, log_unspent(block.count))
-
     def state(self) -> State:
         """Give the state as named arrays."""
-        return {"log_wealth": self._log_wealth}
+        return {}
 
     def restore(self, state: State) -> None:
-        """Take a state given by `state`."""
-        self._log_wealth = state["log_wealth"]
+        """Take a state given by `state`: nothing, since these bets remember nothing."""

@@ -5,10 +5,8 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
-from auditd.sequential.grids import CLOCK_N_PERIODS, CLOCK_PERIOD_S, CLOCK_VARIANCE, FIRST_START_MASS
+from auditd.sequential.grids import CLOCK_N_PERIODS, CLOCK_PERIOD_S, CLOCK_VARIANCE
 from auditd.sequential.scored_block import ScoredBlock, State
-from auditd.sequential.start_weights import log_start_weight, log_unspent
-from auditd.sequential.wealth import grow_wealth, log_e_of
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -24,14 +22,13 @@ class ClockCycle:
     Gelman et al. (2013), Bayesian Data Analysis, section 14.8 (normal prior, known variance).
     """
 
-    kind = "clock"
+    families = (("clock", len(CLOCK_PERIOD_S) * len(CLOCK_VARIANCE)),)
+    has_levels_alone = False
     along = "order"
 
     def __init__(self) -> None:
-        n_grid = len(CLOCK_PERIOD_S) * len(CLOCK_VARIANCE)
         self._sums = np.zeros((5, len(CLOCK_PERIOD_S)))
         self._span = np.array([np.inf, -np.inf])
-        self._log_wealth = np.full(n_grid, np.log(FIRST_START_MASS))
 
     def log_bets(self, block: ScoredBlock) -> FloatArray:
         """Give log L of every grid point, (grid, n), a period after the other."""
@@ -67,16 +64,10 @@ class ClockCycle:
         log_l: FloatArray = 0.5 * z * z - 0.5 * np.log(variance) - (z - mean) ** 2 / (2.0 * variance)
         return log_l
 
-    def advance(self, block: ScoredBlock) -> FloatArray:
-        """Give the log e-value after each run."""
-        path = grow_wealth(self._log_wealth, self.log_bets(block), log_start_weight(block.count))
-        self._log_wealth = path[:, -1].copy()
-        return log_e_of(path, log_unspent(block.count))
-
     def state(self) -> State:
         """Give the state as named arrays."""
-        return {"sums": self._sums, "span": self._span, "log_wealth": self._log_wealth}
+        return {"sums": self._sums, "span": self._span}
 
     def restore(self, state: State) -> None:
         """Take a state given by `state`."""
-        self._sums, self._span, self._log_wealth = state["sums"], state["span"], state["log_wealth"]
+        self._sums, self._span = state["sums"], state["span"]
