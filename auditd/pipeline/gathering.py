@@ -1,0 +1,51 @@
+"""Taking all that has landed, once: for a backfill, a cron job, or the end of a campaign."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable
+from pathlib import Path
+
+import msgspec
+
+from auditd.landing import Landing, Progress
+from auditd.landing.landing import Waiting
+from auditd.pipeline.campaign import open_for_taking
+from auditd.pipeline.session import Session, Taken
+from auditd.pipeline.weighing import refresh
+from auditd.store.lock import Holder
+from auditd.store.sources import stored_sources
+
+Report = Callable[[str, Progress], None]
+"""Called with the step (`read` or `audit`) and the landing's running totals."""
+
+
+class Gathered(msgspec.Struct, frozen=True, kw_only=True):
+    """What `gather` did, and the files that it could not take yet."""
+
+    taken: Taken
+    waiting: tuple[Waiting, ...]
+    n_files: int
+
+
+def gather(plan_path: Path, report: Report) -> Gathered:
+    """Take every file that is there and complete, give all runs their places, audit and weigh them."""
+    campaign = open_for_taking(plan_path)
+    with Holder(campaign.url, campaign.engine):
+        session = Session(campaign)
+        with campaign.engine.connect() as connection:
+            known = list(stored_sources(connection))
+        landing = Landing(campaign.plan, known, settle_all=True)
+        for batch in landing.scan(time.time()):
+            session.take(batch)
+            report("read", landing.progress)
+        session.take_up()
+        report("audit", landing.progress)
+        session.advance(flush="gather ended")
+        session.checkpoint()
+        refresh(session)
+        return Gathered(
+            taken=session.totals,
+            waiting=tuple(landing.waiting(time.time())),
+            n_files=landing.progress.n_done,
+        )

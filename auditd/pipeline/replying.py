@@ -1,0 +1,154 @@
+"""The operator's word: answers to warnings and amendments of the plan, applied from a stored position on."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+from sqlalchemy import Connection, update
+
+from auditd.errors import BadInput, PlanError
+from auditd.pipeline.campaign import Campaign, new_key, open_for_replies, plan_difference
+from auditd.plan import Plan
+from auditd.plan_reading import parse_plan
+from auditd.records import Finding
+from auditd.store.answers import Action, apply_from, save_answer, stored_answers
+from auditd.store.cautions import caution_number, stored_cautions
+from auditd.store.clock import now_us
+from auditd.store.plans import plan_versions, save_epoch, save_plan_version
+from auditd.store.runs import count_runs
+from auditd.store.tables import answers, cautions
+
+
+def reply(plan_path: Path, name: str, reason: str, action: Action, scope: dict[str, str]) -> None:
+    """Append an answer to a warning; it applies from the next run to be placed.
+
+    Raises
+    ------
+    BadInput
+        There is no such warning, the reason is empty, or the scope names what the plan does not know.
+    """
+    campaign = open_for_replies(plan_path)
+    if not reason.strip():
+        raise BadInput("an answer needs a reason; it is kept for ever and stands in the report")
+    _check_scope(campaign.plan, action, scope)
+    number = caution_number(name)
+    with campaign.engine.begin() as connection:
+        found = [] if number is None else stored_cautions(connection, cautions.c.number == number)
+        if not found or number is None:
+            raise BadInput(f"there is no warning {name!r}; `runaudit warnings` lists them")
+        save_answer(
+            connection,
+            caution=number,
+            answered_us=now_us(),
+            reason=reason,
+            action=action,
+            scope=scope or _own_scope(found[0].finding, action, campaign.plan),
+        )
+        connection.execute(
+            update(cautions)
+            .where(cautions.c.number == number, cautions.c.state == "standing")
+            .values(state="answered", changed_us=now_us())
+        )
+
+
+def _own_scope(finding: Finding, action: Action, plan: Plan) -> dict[str, str]:
+    """Return the scope that a warning itself names: its level, for what is absorbed."""
+    if action == "absorb" and finding.along in plan.nuisance and finding.level is not None:
+        return {finding.along: finding.level}
+    return {}
+
+
+def _check_scope(plan: Plan, action: Action, scope: dict[str, str]) -> None:
+    for name in scope:
+        if name not in plan.nuisance and name not in {"from", "to"}:
+            known = ", ".join(plan.nuisance) or "none"
+            raise BadInput(f"{name!r} is no nuisance of the plan; known: {known}")
+    if action == "set-aside" and not scope:
+        raise BadInput("--set-aside needs what is set aside: a level such as host=n3, or --from and --to")
+
+
+def apply_answers(
+    connection: Connection, plan: Plan, position: int, *, only_ask: bool = False
+) -> bool:
+    """Put answers into force from a position on; return whether the audit has to be opened again."""
+    new = [answer for answer in stored_answers(connection, answers.c.from_position.is_(None))]
+    if only_ask or not new:
+        return bool(new)
+    again = False
+    version = plan_versions(connection)[-1].version
+    for answer in new:
+        apply_from(connection, answer.row, position)
+        if answer.action in {"restart", "absorb"}:
+            save_epoch(
+                connection,
+                opened_us=now_us(),
+                from_position=position,
+                plan_version=version,
+                key=new_key(),
+                reason=f"W{answer.caution} {answer.action}: {answer.reason}",
+                scope={name: level for name, level in answer.scope.items() if name in plan.nuisance},
+            )
+        again = again or answer.action != "noted"
+    return again
+
+
+def amend(plan_path: Path, reason: str) -> list[str]:
+    """Take a changed plan into use as a new version and epoch; return what differs.
+
+    Raises
+    ------
+    PlanError
+        There is nothing to amend, or the change contradicts the runs that are stored.
+    BadInput
+        The reason is empty.
+    """
+    campaign = open_for_replies(plan_path)
+    if not reason.strip():
+        raise BadInput("an amendment needs a reason; it is kept for ever and stands in the report")
+    with campaign.engine.begin() as connection:
+        versions = plan_versions(connection)
+        if not versions:
+            raise PlanError("no run has been taken under a plan yet: change the plan freely, nothing is to be amended")
+        old = parse_plan(versions[-1].text, campaign.plan.path)
+        changes = plan_difference(old, campaign.plan)
+        if not changes:
+            raise PlanError("the plan's audited fields are as they were; there is nothing to amend")
+        _refuse_contradictions(connection, old, campaign)
+        position = count_runs(connection).next_position
+        version = save_plan_version(
+            connection,
+            digest=campaign.plan.audited_hash,
+            text=campaign.plan.text,
+            reason=reason,
+            taken_us=now_us(),
+            from_position=position,
+        )
+        save_epoch(
+            connection,
+            opened_us=now_us(),
+            from_position=position,
+            plan_version=version,
+            key=new_key(),
+            reason=f"plan amended: {reason}",
+            scope={},
+        )
+    return changes
+
+
+def _refuse_contradictions(connection: Connection, old: Plan, campaign: Campaign) -> None:
+    """Refuse amendments under which the stored runs would have no cell or no place."""
+    new = campaign.plan
+    if count_runs(connection).n == 0:
+        return
+    for name in new.factors:
+        if name not in old.factors:
+            raise PlanError(
+                f"factors.{name} is new, but the stored runs do not state it; "
+                "begin a new campaign with a store of its own, or leave the factor out"
+            )
+    if (old.order.by, old.record.sequence, old.record.started) != (
+        new.order.by,
+        new.record.sequence,
+        new.record.started,
+    ):
+        raise PlanError("the order of runs that have their places cannot be changed; begin a new campaign")

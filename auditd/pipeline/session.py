@@ -1,0 +1,211 @@
+"""Taking runs and auditing them: what is in memory beside the store, and made anew from it at any time.
+
+Every step is one transaction that holds the runs, their places, the warnings they raise and the alerts to
+deliver. If it fails, nothing of it is kept, and the session is opened again from the store.
+"""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Iterable
+
+import msgspec
+from sqlalchemy import Connection
+
+from auditd.checks.facts.book import FactBook
+from auditd.pipeline.auditing import Audit
+from auditd.pipeline.budget import shares
+from auditd.pipeline.campaign import Campaign, settle_plan
+from auditd.pipeline.raising import Raiser
+from auditd.pipeline.replying import apply_answers
+from auditd.records import Batch, Finding, Refusal, Run
+from auditd.series.placing import Placed, Placer
+from auditd.store.clock import now_us
+from auditd.store.plans import plan_versions
+from auditd.store.refusals import save_refusals, take_up_refusals
+from auditd.store.runs import (
+    ConfigRows,
+    StoredRun,
+    count_runs,
+    give_arrivals,
+    give_positions,
+    insert_runs,
+    mark_late,
+    stored_runs,
+)
+from auditd.store.sources import save_source
+from auditd.store.states import save_flush
+
+CHECKPOINT_EVERY_RUNS = 500
+"""Placed runs between two saved states; after a kill so many are audited again."""
+CHECKPOINT_EVERY_S = 60.0
+
+
+class Taken(msgspec.Struct, kw_only=True):
+    """Running totals of a session."""
+
+    n_runs: int = 0
+    n_refused: int = 0
+    n_seen_before: int = 0
+    n_placed: int = 0
+    n_raised: int = 0
+
+
+class Session:
+    """One holder's work on a campaign.
+
+    Parameters
+    ----------
+    campaign : opened for taking; its plan is settled here.
+    """
+
+    def __init__(self, campaign: Campaign) -> None:
+        self.campaign = campaign
+        self.totals = Taken()
+        self.landed_at = time.time()
+        self.reopen()
+
+    def reopen(self) -> None:
+        """Make everything in memory anew from the store."""
+        settle_plan(self.campaign)
+        self.plan = self.campaign.plan
+        with self.campaign.engine.begin() as connection:
+            self._plan_version = plan_versions(connection)[-1].version
+            counts = count_runs(connection)
+            self._next_arrival = counts.next_arrival
+            self._next_position = counts.next_position
+            self.placer = Placer(self.plan)
+            self.facts = FactBook(self.plan, alarm_budget=shares(self.plan).facts)
+            self._configs = ConfigRows()
+            self._replay(connection)
+            self.raiser = Raiser(self.plan, connection)
+            self.audit = Audit(self.plan, connection, self._next_position)
+        self._n_since_checkpoint = 0
+        self._checkpoint_at = time.monotonic()
+
+    def _replay(self, connection: Connection) -> None:
+        """Tell placer and facts of every stored run, in the order in which they first heard of them."""
+        placed: list[StoredRun] = []
+        for stored in stored_runs(connection):
+            self.placer.restore([stored])
+            self.facts.arrived(stored.run, stored.arrival or 0)
+            if stored.position is not None:
+                placed.append(stored)
+        for stored in sorted(placed, key=lambda run: run.position or 0):
+            self.facts.placed(stored.run, stored.position or 0)
+        self.facts.standing()
+
+    def take(self, batch: Batch) -> None:
+        """Take one visit's records, with how far the file has been read, in one transaction."""
+        landed_us = now_us()
+        found = [item for item in batch.items if isinstance(item, Run)]
+        refused = [item for item in batch.items if isinstance(item, Refusal)]
+        ordered = self._tells_order(batch, len(found))
+        with self.campaign.engine.begin() as connection:
+            inserted = insert_runs(
+                connection,
+                [(run, ordered) for run in found],
+                landed_us=landed_us,
+                config_rows=self._configs,
+                first_arrival=self._next_arrival,
+            )
+            refused += inserted.rewritten
+            new_refusals = save_refusals(connection, refused, landed_us, taken_up=True)
+            save_source(connection, batch.source)
+            findings = self._hear(inserted.stored, new_refusals)
+            self.totals.n_raised += self.raiser.raise_facts(connection, findings)
+        self._next_arrival += len(inserted.stored)
+        self.landed_at = landed_us / 1e6 if inserted.stored else self.landed_at
+        self.totals.n_runs += len(inserted.stored)
+        self.totals.n_refused += len(new_refusals)
+        self.totals.n_seen_before += inserted.n_seen_before
+
+    def take_up_if_shared(self) -> int:
+        """Take up what collectors have inserted, where the store is a server that they can reach."""
+        return self.take_up() if self.campaign.url.get_backend_name() == "postgresql" else 0
+
+    def is_outdated(self) -> bool:
+        """Whether another process took a newer version of the plan into use."""
+        with self.campaign.engine.connect() as connection:
+            return plan_versions(connection)[-1].version != self._plan_version
+
+    def take_up(self) -> int:
+        """Take up what collectors have inserted; return how many runs that were."""
+        with self.campaign.engine.begin() as connection:
+            stored = give_arrivals(connection, self._next_arrival)
+            findings = self._hear(stored, take_up_refusals(connection))
+            self.totals.n_raised += self.raiser.raise_facts(connection, findings)
+        self._next_arrival += len(stored)
+        self.totals.n_runs += len(stored)
+        return len(stored)
+
+    def advance(self, flush: str | None = None) -> int:
+        """Give places to the runs that may enter, audit them, raise warnings; return how many entered.
+
+        With `flush` all that wait enter, and the reason is recorded.
+        """
+        placed = self.placer.flush() if flush is not None else self.placer.ready()
+        if not placed.entered and not placed.late and not self._has_replies():
+            return 0
+        first = self._next_position
+        with self.campaign.engine.begin() as connection:
+            if apply_answers(connection, self.plan, first):
+                self.audit = Audit(self.plan, connection, first)
+            self._place(connection, placed, first)
+            if flush is not None and placed.entered:
+                save_flush(
+                    connection, at_us=now_us(), position=first, n_runs=len(placed.entered), reason=flush
+                )
+            self._audit(connection, placed, first)
+        self._next_position = first + len(placed.entered)
+        self.totals.n_placed += len(placed.entered)
+        return len(placed.entered)
+
+    def checkpoint(self) -> None:
+        """Save the audit's state, so that little is audited again after any end."""
+        with self.campaign.engine.begin() as connection:
+            self.audit.save(connection)
+        self._n_since_checkpoint = 0
+        self._checkpoint_at = time.monotonic()
+
+    def _place(self, connection: Connection, placed: Placed, first: int) -> None:
+        give_positions(connection, [(run.row, first + k) for k, run in enumerate(placed.entered)])
+        mark_late(connection, [run.row for run in placed.late])
+
+    def _audit(self, connection: Connection, placed: Placed, first: int) -> None:
+        entered = [msgspec.structs.replace(run, position=first + k) for k, run in enumerate(placed.entered)]
+        findings: list[Finding] = []
+        for stored in entered:
+            findings += self.facts.placed(stored.run, stored.position or 0)
+        findings += self.facts.standing()
+        self.totals.n_raised += self.raiser.raise_facts(connection, findings)
+        alarms = self.audit.advance(connection, entered)
+        self.totals.n_raised += self.raiser.raise_alarms(connection, alarms, self.audit)
+        self._n_since_checkpoint += len(entered)
+        due = time.monotonic() - self._checkpoint_at > CHECKPOINT_EVERY_S
+        if self._n_since_checkpoint >= CHECKPOINT_EVERY_RUNS or (due and self._n_since_checkpoint):
+            self.audit.save(connection)
+            self._n_since_checkpoint = 0
+            self._checkpoint_at = time.monotonic()
+
+    def _hear(self, stored: Iterable[StoredRun], refusals: Iterable[Refusal]) -> list[Finding]:
+        findings: list[Finding] = []
+        for run in stored:
+            self.placer.add(run)
+            findings += self.facts.arrived(run.run, run.arrival or 0)
+        for refusal in refusals:
+            findings += self.facts.refused(refusal)
+        return findings + self.facts.standing()
+
+    def _tells_order(self, batch: Batch, n_runs: int) -> bool:
+        """Whether a run's place within its file and visit says when it was made.
+
+        With a stated sequence or time it does not matter; rows of one table that landed whole have none.
+        """
+        if self.placer.by != "arrival" or self.plan.order.by == "arrival":
+            return True
+        return batch.change == "append" or n_runs <= 1
+
+    def _has_replies(self) -> bool:
+        with self.campaign.engine.begin() as connection:
+            return apply_answers(connection, self.plan, self._next_position, only_ask=True)

@@ -1,0 +1,203 @@
+"""What the campaign is worth by now, computed by the daemon and stored, so that queries only read."""
+
+from __future__ import annotations
+
+import math
+import time
+from collections.abc import Mapping
+from typing import Any
+
+import numpy as np
+
+from auditd.errors import BadInput, NotTestable
+from auditd.pipeline.asking import Document
+from auditd.pipeline.auditing import ORDER_KINDS
+from auditd.pipeline.comparing import compare_document, labelled_nuisance, losses, planned_questions
+from auditd.pipeline.session import Session
+from auditd.plan import Plan
+from auditd.checks.duplicates import duplicate_groups
+from auditd.series.load import load_table
+from auditd.series.strips import strip
+from auditd.series.table import RunTable, Series
+from auditd.store.clock import now_us
+from auditd.store.states import save_display
+
+GROWTH = 1.02
+"""Displays are computed again when the runs have grown by so much …"""
+REST_FACTOR = 30.0
+"""… and so many times what the last computation took has passed, so that it costs a few per cent at most."""
+STALE_S = 60.0
+"""… or when runs have come and so long has passed."""
+REST_MAX_S = 900.0
+
+
+class Weigher:
+    """Computes the displays when it is due.
+
+    Parameters
+    ----------
+    session : whose campaign is weighed.
+    """
+
+    def __init__(self, session: Session) -> None:
+        self._session = session
+        self._n_shown = -1
+        self._due_at = 0.0
+        self._shown_at = 0.0
+
+    def refresh_if_due(self) -> bool:
+        """Compute the displays if runs have come and the last computation is long enough ago."""
+        now = time.monotonic()
+        n = self._session.n_placed
+        if n == self._n_shown or now < self._due_at:
+            return False
+        if n < GROWTH * self._n_shown and now < self._shown_at + STALE_S:
+            return False
+        began = time.monotonic()
+        refresh(self._session)
+        self._shown_at = time.monotonic()
+        self._n_shown = n
+        self._due_at = self._shown_at + min(REST_FACTOR * (self._shown_at - began), REST_MAX_S)
+        return True
+
+
+def refresh(session: Session) -> None:
+    """Compute and store what `status`, `evidence` and the report show; regrade the standing warnings."""
+    plan = session.plan
+    with session.campaign.engine.connect() as connection:
+        table = load_table(connection, plan)
+    weighed = {name: weigh(table, plan, name) for name in session.audit.responses}
+    compared = compare_document(table, plan, planned_questions(plan))
+    status = {
+        "scored": session.audit.n_scored(),
+        "withheld": withheld_sentences(session),
+        "responses": {
+            name: _status_of(table, plan, name, found) for name, found in weighed.items() if found is not None
+        },
+        "strips": {name: strip(table, plan, name) for name in session.audit.responses},
+        "comparisons": compared,
+    }
+    evidence = {
+        "schema": 1,
+        "n": table.n,
+        "responses": {name: found for name, found in weighed.items() if found is not None},
+        "not_checked": not_checked(session, weighed),
+    }
+    with session.campaign.engine.begin() as connection:
+        save_display(connection, "status", now_us(), status)
+        save_display(connection, "evidence", now_us(), evidence)
+        session.raiser.regrade(connection, table)
+
+
+def weigh(table: RunTable, plan: Plan, response: str) -> Document | None:
+    """Return a response's effective number, whole and by cell; None where there is too little."""
+    from auditd.evidence import effective_number
+
+    series = table.series(plan, response)
+    try:
+        found = effective_number(series.values, **circumstances(table, series))
+    except (NotTestable, BadInput):
+        return None
+    return {
+        "n": found.n,
+        "n_effective": found.n_effective,
+        "loss": found.loss,
+        "loss_low": found.loss_low,
+        "loss_high": found.loss_high,
+        "parts": dict(found.parts),
+        "remarks": list(found.remarks),
+        "cells": _by_cell(table, series, found.n_effective / max(found.n, 1)),
+    }
+
+
+def circumstances(table: RunTable, series: Series) -> dict[str, Any]:
+    """Return the keyword arguments that tell `effective_number` of a series' circumstances."""
+    return {
+        "cells": series.cells.labels(),
+        "nuisance": labelled_nuisance(series),
+        "duplicates": duplicate_groups(table)[series.row],
+        "parents": series.parents,
+    }
+
+
+def _by_cell(table: RunTable, series: Series, worth: float) -> list[Document]:
+    """Return each cell's runs and their worth, at the response's rate; duplicates counted cell by cell."""
+    groups = duplicate_groups(table)[series.row]
+    found = []
+    for code in np.unique(series.cells.codes):
+        of_cell = series.cells.codes == code
+        n = int(of_cell.sum())
+        n_distinct = len(np.unique(groups[of_cell]))
+        found.append(
+            {
+                "cell": dict(table.cell_values[code]),
+                "n": n,
+                "n_effective": min(float(n_distinct), n * worth),
+            }
+        )
+    return found
+
+
+def _status_of(table: RunTable, plan: Plan, response: str, weighed: Mapping[str, Any]) -> Document:
+    losses_found = [one.loss for _, one in losses(table, plan, response) if one is not None and one.loss is not None]
+    loss = max(losses_found, default=weighed["loss"])
+    return {
+        "n": weighed["n"],
+        "n_effective": weighed["n_effective"],
+        "evidence_loss": max(float(loss), 0.0),
+        "would_see": _would_see(table, plan, response),
+    }
+
+
+def _would_see(table: RunTable, plan: Plan, response: str) -> Document | None:
+    """Return the smallest effects that this design would have shown by now with probability 0.8."""
+    from auditd.schedule.would_see import would_see
+
+    series = table.series(plan, response)
+    if len(series.values) == 0:
+        return None
+    return would_see(
+        len(series.values),
+        cells=series.cells.labels(),
+        nuisance=labelled_nuisance(series),
+        alarm_budget=plan.campaign.alarm_budget,
+        n_responses=len(plan.responses),
+    )
+
+
+def withheld_sentences(session: Session) -> list[str]:
+    """Return what the sequential audit does not ask, and why, in sentences."""
+    left_out = session.audit.withheld
+    if not left_out:
+        return []
+    if session.plan.design.allocation == "outcome":
+        return [
+            "results decide what runs next (design.allocation), and no stage is stated: "
+            "even independent runs would alarm, so the sequential audit is withheld; state design.stage"
+        ]
+    return [
+        f"{', '.join(ORDER_KINDS)}: no order can be established, since runs landed in whole tables without "
+        "a sequence number or a start; state record.sequence or record.started"
+    ]
+
+
+def not_checked(session: Session, weighed: Mapping[str, Document | None]) -> list[str]:
+    """Return what could not be checked, in sentences."""
+    plan = session.plan
+    found = withheld_sentences(session)
+    found += [f"{name}: too few completed runs to weigh" for name, one in weighed.items() if one is None]
+    for stated, words in (
+        (plan.record.seed, "seeds: record.seed is not stated, so ignored and reused seeds cannot be seen"),
+        (plan.record.started, "time: record.started is not stated, so daily cycles and overlaps cannot be seen"),
+        (plan.record.parent, "lineage: record.parent is not stated, so inherited state cannot be seen"),
+        (plan.nuisance or None, "batch effects: the plan names no nuisance such as host or build"),
+    ):
+        if stated is None:
+            found.append(words)
+    found.append("a dependence that is the same in every run cannot be seen from the runs")
+    return found
+
+
+def finite(value: float) -> float | None:
+    """Return a number for JSON: None where it is not finite."""
+    return value if math.isfinite(value) else None
