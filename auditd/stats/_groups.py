@@ -143,7 +143,7 @@ def _reduce(values: Floats, group: Integers, labels: list[Any], sizes: Floats) -
     residuals -= rest[group]
     sums = np.bincount(group, weights=residuals * residuals, minlength=sizes.size)
     unit = ROUNDING_UNITS * np.finfo(np.float64).eps * float(np.abs(centred).max())
-    squares: Floats = np.where(sums <= sizes * unit * unit, 0.0, sums)
+    squares: Floats = np.where(np.sqrt(sums / sizes) <= unit, 0.0, sums)
     return Grouped(
         centred=centred, residuals=residuals, group=group, labels=labels, sizes=sizes, means=means,
         squares=squares, origin=origin,

@@ -102,4 +102,5 @@ def _welch_error(samples: Grouped) -> tuple[float, float]:
     check_each_varies(samples)
     parts = samples.variances / samples.sizes
     total = float(parts.sum())
-    return math.sqrt(total), total * total / float((parts * parts / (samples.sizes - 1.0)).sum())
+    shares = parts / total
+    return math.sqrt(total), 1.0 / float((shares * shares / (samples.sizes - 1.0)).sum())

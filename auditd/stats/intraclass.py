@@ -18,6 +18,10 @@ SOURCE = (
 
 Interval = tuple[float, float, float]
 
+# At a correlation of −1/(k − 1) between k values that of their mean falls without limit: form 2 stays this share
+# of it away.
+NEAREST_TO_FLOOR = 1.0 - 1e-9
+
 
 @dataclass(frozen=True, kw_only=True)
 class MeanSquares:
@@ -67,7 +71,7 @@ def intraclass(table: ArrayLike, *, confidence: float = 0.95) -> dict[str, Inter
     values = matrix(table, "table")
     if min(values.shape) < 2:
         raise NotTestable("at least two rows and two columns", f"a table of {values.shape}")
-    check_varying(values, "table")
+    check_varying(values.ravel(), "table")
     squares = mean_squares(values)
     single = {
         "1,1": _one_way(squares, level),
@@ -138,15 +142,21 @@ def _agreement(s: MeanSquares, level: float) -> Interval:
     from scipy.special import fdtri
 
     n, k = s.n, s.k
-    icc = (s.rows - s.error) / (s.rows + (k - 1) * s.error + k * (s.columns - s.error) / n)
+    floor = NEAREST_TO_FLOOR / (1 - k)
+    total = s.rows + (k - 1) * s.error + k * (s.columns - s.error) / n
+    icc = (s.rows - s.error) / total if total > 0.0 else floor
+    if icc <= floor:
+        # The judges' variance is estimated so far below zero that nothing is left in total: take it as 0.
+        icc = max(floor, (s.rows - s.error) / (s.rows + (k - 1) * s.error))
     f_columns = s.columns / s.error
     a, b = k * icc * f_columns, n * (1 + (k - 1) * icc) - k * icc
-    df = (k - 1) * (n - 1) * (a + b) ** 2 / ((n - 1) * a * a + b * b)
+    # With weights of one sign the approximation has at least the judges' degrees of freedom.
+    df = max(k - 1.0, (k - 1) * (n - 1) * (a + b) ** 2 / ((n - 1) * a * a + b * b))
     f_low, f_high = float(fdtri(n - 1, df, 1.0 - level / 2)), float(fdtri(df, n - 1, 1.0 - level / 2))
     rest = k * s.columns + (k * n - k - n) * s.error
     low = n * (s.rows - f_low * s.error) / (f_low * rest + n * s.rows)
     high = n * (f_high * s.rows - s.error) / (rest + n * f_high * s.rows)
-    return icc, low, high
+    return icc, max(floor, min(low, icc)), max(high, icc)
 
 
 def _of_means(single: Interval, k: int) -> Interval:

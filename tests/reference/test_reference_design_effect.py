@@ -14,7 +14,8 @@ def _school_variance(columns):
     n, k = score.size, 15
     residuals = score - score.mean()
     design = np.ones((n, 1))
-    # The survey package's factor is k/(k − 1) alone; with one column ours times (n − 1)/(n − 1) is the same.
+    # The survey package's factor is k/(k − 1) alone; with one column ours times (n − 1)/(n − 1) is the
+    # same.
     variance = float(cluster_covariance(residuals, design, district)[0, 0]) * (1 - k / 757)
     return score, variance
 

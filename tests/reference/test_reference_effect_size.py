@@ -80,7 +80,7 @@ def test_correction_is_exact():
 
 @pytest.mark.parametrize(("n_a", "n_b", "shift"), [(3, 3, 0.0), (5, 40, 1.0), (300, 200, 0.3), (15, 15, 6.0)])
 def test_interval_ends_where_the_law_says(n_a, n_b, shift):
-    """At the ends of the interval the observed t stands at the 97.5 % and 2.5 % points of the noncentral t."""
+    """At the interval's ends the observed t stands at the 97.5 % and 2.5 % points of the noncentral t."""
     rng = np.random.default_rng(n_a)
     a, b = rng.normal(shift, 1, n_a), rng.normal(0, 1, n_b)
     result = hedges_g(a, b)

@@ -15,7 +15,7 @@ from auditd.stats.level_order import arrangements
 
 
 def test_arthritis():
-    """Koch & Edwards (1988) in R vcd, assocstats: chi-squared 13.055, 2 df, p .0014626, V .394 (published)."""
+    """Koch & Edwards (1988), R vcd's assocstats: chi-squared 13.055, 2 df, p .0014626, V .394."""
     table = {("P", "none"): 29, ("P", "some"): 7, ("P", "marked"): 7,
              ("T", "none"): 13, ("T", "some"): 7, ("T", "marked"): 21}  # fmt: skip
     pairs = [pair for pair, count in table.items() for _ in range(count)]
@@ -27,7 +27,7 @@ def test_arthritis():
 
 
 def test_cramers_v_agrees_with_other_libraries():
-    """scipy's association and pingouin's test of independence agree on heart disease by kind of chest pain."""
+    """scipy's association and pingouin's test of independence agree on heart disease by chest pain."""
     frame = pingouin.read_dataset("chi2_independence")
     result = cramers_v(frame["cp"].to_numpy(), frame["target"].to_numpy())
     _, observed, tests = pingouin.chi2_independence(frame, x="cp", y="target", correction=False)
@@ -86,7 +86,7 @@ def test_swed_and_eisenhart_limits():
 
 @pytest.mark.parametrize("sizes", [(2, 3), (1, 2, 3), (3, 3, 2), (1, 1, 1, 4), (2, 2, 2, 2)])
 def test_counts_equal_enumeration(sizes):
-    """All arrangements, listed one by one, have as many runs as counted, and the stated mean and deviation."""
+    """All arrangements, listed one by one, have as many runs as counted, and the stated moments."""
     items = [level for level, size in enumerate(sizes) for _ in range(size)]
     tally = Counter(
         1 + sum(a != b for a, b in itertools.pairwise(order)) for order in set(itertools.permutations(items))

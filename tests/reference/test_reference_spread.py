@@ -62,7 +62,7 @@ def test_gear_by_bartlett(columns):
 
 
 def test_insect_sprays_by_bartlett():
-    """R, example(bartlett.test): K-squared 25.9598, df 5, p 9.085e-05 (published); whole numbers are taken."""
+    """R, example(bartlett.test): K-squared 25.9598, df 5, p 9.085e-05 (published), of whole numbers."""
     result = bartlett(COUNTS, SPRAYS)
     assert result.statistic == pytest.approx(25.9598, abs=5.5e-5)
     assert result.pvalue == pytest.approx(9.085e-5, abs=5.5e-9)
