@@ -16,7 +16,8 @@ The daemon's loop::
 `gather` is `for batch in Landing(plan, sources, settle_all=True).scan(time.time())`.
 """
 
-from auditd.landing.landing import Landing, Progress, Waiting
+from auditd.landing.files import Progress
+from auditd.landing.landing import Landing, Waiting
 from auditd.landing.watcher import Watcher
 
 __all__ = ["Landing", "Progress", "Waiting", "Watcher"]

@@ -2,21 +2,20 @@
 
 from __future__ import annotations
 
+import contextlib
+import math
+import os
+import time
 from collections.abc import Iterable, Iterator
 
 import msgspec
 
+from auditd.landing.area import Area
+from auditd.landing.files import Files, Progress
+from auditd.landing.pace import ROTATION_S, Pace
 from auditd.plan import Plan
+from auditd.read import Readers
 from auditd.records import Batch, Source
-
-
-class Progress(msgspec.Struct, kw_only=True):
-    """Running totals of one Landing, for a progress bar; `n_found` is known before the first batch."""
-
-    n_found: int = 0
-    n_done: int = 0
-    n_records: int = 0
-    n_bytes: int = 0
 
 
 class Waiting(msgspec.Struct, frozen=True, kw_only=True):
@@ -31,7 +30,8 @@ class Landing:
     """The files of a plan's landing, what is taken of them, and what is due.
 
     A batch counts as taken once the next one is asked for (or the iteration has ended): if the store
-    fails to commit, break off the iteration, and the next scan gives the batch again.
+    fails to commit, break off the iteration, and the next scan gives the batch again. A batch without
+    items only moves a source: the file was renamed, touched or put back.
 
     Parameters
     ----------
@@ -41,34 +41,111 @@ class Landing:
 
     Attributes
     ----------
-    progress : Progress
-    roots : tuple of str, the landing's folders as absolute paths.
+    area : Area, the folders that belong to the landing.
+    pace : Pace; a watcher that falls back to polling sets `pace.polls`.
     """
 
     def __init__(self, plan: Plan, sources: Iterable[Source] = (), *, settle_all: bool = False) -> None:
-        self.progress = Progress()
-        self.roots: tuple[str, ...] = ()
+        readers = Readers(plan)
+        self.area = Area(plan, readers.suffixes)
+        self.pace = Pace()
+        self._files = Files(plan, readers, self.area, iter(sources), settle_all=settle_all)
+        self._settle_all = settle_all
+        self._hints: list[str] = []
+        self._next_scan = -math.inf
+        self._rotation: Iterator[str] = iter(())
+        self._rotated_at = math.inf
+        self._n_scans = 0
+
+    @property
+    def roots(self) -> tuple[str, ...]:
+        """The landing's folders as absolute paths."""
+        return self.area.roots
+
+    @property
+    def progress(self) -> Progress:
+        """Running totals; `n_found` counts new files, and is known before the first batch of a scan."""
+        return self._files.progress
 
     def scan(self, now: float) -> Iterator[Batch]:
         """List every folder, and give what is new or grown; `now` is POSIX seconds. This is the truth."""
-        raise NotImplementedError
+        began_s = time.thread_time()
+        self._n_scans += 1
+        new = self._new(None, now)
+        known = self._files.memory.paths() if self._settle_all or self._n_scans == 1 else iter(())
+        self._next_scan = now + self.pace.interval_s(time.thread_time() - began_s, changed=bool(new))
+        yield from self._look_at(new, now)
+        yield from self._look_at(list(known), now)
+        yield from self._due(now)
 
     def visit(self, now: float) -> Iterator[Batch]:
         """Give what is due at `now`: hinted, young and growing files, the rotation, a scan when due."""
-        raise NotImplementedError
+        hints, self._hints = self._hints, []
+        for path in hints:
+            self._files.hint(path, now)
+        yield from self._look_at(hints, now)
+        if now >= self._next_scan or self.area.all_dirty or self._next_scan - now > self.pace.LONGEST_S:
+            yield from self.scan(now)
+            return
+        yield from self._look_at(self._new(self.area.take_dirty(), now), now)
+        yield from self._due(now)
 
     def wait_s(self, now: float) -> float:
         """Return for how long nothing is due, unless an event comes."""
-        raise NotImplementedError
+        if self._hints or self.area.all_dirty:
+            return 0.0
+        due = min((one.due for one in self._files.pending.values()), default=math.inf)
+        return max(0.0, min(self._next_scan, due, self._files.growing.next_due()) - now)
 
     def hint(self, path: str) -> None:
         """Say that a file was renamed into place or closed: it is taken at once if it validates."""
-        raise NotImplementedError
+        stored = self.area.stored(path)
+        if stored is not None:
+            self._hints.append(stored)
 
     def distrust(self, folder: str | None = None) -> None:
         """Say that a folder (None: everything) may have changed unseen; it is listed at the next visit."""
-        raise NotImplementedError
+        self.area.distrust(folder)
 
     def waiting(self, now: float) -> list[Waiting]:
-        """Return the files that are not taken, or not wholly, and why."""
-        raise NotImplementedError
+        """Return the files and folders that are not taken, or not wholly, and why."""
+        return [
+            Waiting(path=path or ".", age_s=max(0.0, now - one.first_seen), why=one.why)
+            for path, one in [*self._files.pending.items(), *self.area.troubles.items()]
+            if one.why
+        ]
+
+    def _new(self, folders: Iterable[str] | None, now: float) -> list[str]:
+        """Return files that were never met, the oldest first, since that is the order of their arrival."""
+        found = []
+        for path in self.area.list_new(folders, self._files.memory, now):
+            if path not in self._files.pending:
+                with contextlib.suppress(OSError):
+                    found.append((os.lstat(self.area.real(path)).st_mtime_ns, path))
+        self.progress.n_found += len(found)
+        return [path for _, path in sorted(found)]
+
+    def _due(self, now: float) -> Iterator[Batch]:
+        """Give what pending files, growing files and the rotation have."""
+        pending = self._files.pending
+        yield from self._look_at([path for path, one in pending.items() if one.due <= now], now)
+        yield from self._look_at(self._files.growing.due(now), now)
+        yield from self._look_at(self._turns(now), now)
+
+    def _look_at(self, paths: Iterable[str], now: float) -> Iterator[Batch]:
+        for path in paths:
+            yield from self._files.look(path, now)
+
+    def _turns(self, now: float) -> Iterator[str]:
+        """Yield the share of all known files whose turn in the rotation it is."""
+        self._rotated_at = min(self._rotated_at, now)
+        share = min(1.0, (now - self._rotated_at) / ROTATION_S)
+        n_turns = int(len(self._files.memory) * share)
+        if n_turns:
+            self._rotated_at = now
+        for _ in range(n_turns):
+            path = next(self._rotation, None)
+            if path is None:
+                self._rotation = self._files.memory.paths()
+                path = next(self._rotation)
+            yield path

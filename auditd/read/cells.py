@@ -14,7 +14,7 @@ _LOOSE = re.compile(
 
 
 def cell_value(text: str) -> str | int | float:
-    """Return the number where a text is a JSON number (RFC 8259, section 6) within a double, else the text."""
+    """Return the number where a text is a JSON number (RFC 8259, section 6) that a double holds, else it."""
     if len(text) > _MAX_DIGITS or not _NUMBER.fullmatch(text):
         return text
     if _INTEGER.fullmatch(text):
