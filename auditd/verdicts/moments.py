@@ -6,10 +6,6 @@ from datetime import UTC, datetime
 
 import msgspec
 
-LONG_GAP = 3.0
-"""A gap between two runs is told in words when it is this many times the usual distance of runs."""
-
-
 class Moment(msgspec.Struct, frozen=True, kw_only=True):
     """A run at which something is said to be so."""
 
@@ -19,11 +15,16 @@ class Moment(msgspec.Struct, frozen=True, kw_only=True):
 
 
 class Change(msgspec.Struct, frozen=True, kw_only=True):
-    """A level of a nuisance that first appeared at a run: `build b2` at `r0412`."""
+    """A level of a nuisance that first appeared at a run: `build b2` at `r0412`.
+
+    `within` is another nuisance and its level, where the change is the first appearance there (build b2 on
+    host n3); None for the first appearance in the campaign.
+    """
 
     nuisance: str
     level: str
     moment: Moment
+    within: tuple[str, str] | None = None
 
 
 class Dated(msgspec.Struct, frozen=True, kw_only=True):

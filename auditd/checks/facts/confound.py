@@ -1,0 +1,145 @@
+"""Can what was varied on purpose be told from what merely differed?"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Iterator
+
+import msgspec
+
+from auditd.checks.facts.condition import counted
+from auditd.checks.facts.crossing import Crossing, Verdict
+from auditd.checks.facts.labels import CellIndex, LevelIndex
+from auditd.checks.facts.protocol import Quiet
+from auditd.plan import Plan
+from auditd.records import Finding, Kind, Run
+
+FIRST_LOOK = 20
+"""Runs placed before the first look at a table."""
+LOOK_FACTOR = 1.1
+"""Each look comes when the runs have grown by this factor, so that looking costs nothing at a million runs."""
+
+
+class _Pair:
+    """One factor (or the cells) against one nuisance: their table and what is said of it by now."""
+
+    def __init__(self, factor: str, nuisance: str) -> None:
+        self.factor = factor
+        self.nuisance = nuisance
+        self.table = Crossing()
+        self.told: dict[str, Finding] = {}
+
+
+class ConfoundFact(Quiet):
+    """Find factors that are aliased with a nuisance, wholly or nearly, among the completed runs placed.
+
+    Exact counts, with a bar that chance allocation does not reach: see `crossing.py` for the rules. Looked
+    at when the runs have grown by a tenth, from 20 on, and withdrawn at the look at which it no longer holds.
+    Where no runs are placed (no order), nothing is asked. Aliasing with the order is the fact `order`.
+    """
+
+    kind: Kind = "confound"
+
+    def __init__(self, plan: Plan, *, alarm_budget: float) -> None:
+        super().__init__(plan, alarm_budget=alarm_budget)
+        self._n = 0
+        self._next_look = FIRST_LOOK
+        self._cells = CellIndex() if len(plan.factors) > 1 else None
+        self._factors = {name: LevelIndex() for name in plan.factors}
+        self._nuisances = {name: LevelIndex() for name in plan.nuisance}
+        names = [*plan.factors, "cell"] if self._cells else list(plan.factors)
+        self._pairs = {(a, b): _Pair(a, b) for b in plan.nuisance for a in names}
+        self._tables = [[self._pairs[a, b].table for a in names] for b in plan.nuisance]
+
+    def placed(self, run: Run, position: int) -> Iterable[Finding]:
+        """Count the run, and look at the tables when it is time."""
+        if not run.completed or not self._pairs:
+            return ()
+        rows = [index.number(run.cell[name]) for name, index in self._factors.items()]
+        if self._cells is not None:
+            rows.append(self._cells.number(run.cell))
+        for (name, index), tables in zip(self._nuisances.items(), self._tables, strict=True):
+            column = index.number(run.nuisance.get(name))
+            for row, table in zip(rows, tables, strict=True):
+                table.count(row, column)
+        self._n += 1
+        if self._n < self._next_look:
+            return ()
+        self._next_look = max(self._n + 1, int(self._n * LOOK_FACTOR))
+        return list(self._look(run, position))
+
+    def _look(self, run: Run, position: int) -> Iterator[Finding]:
+        """Yield what has begun or ended since the look before."""
+        covered: set[str] = set()  # nuisances of which a factor's own level has been told
+        for pair in self._pairs.values():
+            verdicts = {} if pair.factor == "cell" and pair.nuisance in covered else self._verdicts(pair)
+            if verdicts:
+                covered.add(pair.nuisance)
+            for key, before in list(pair.told.items()):
+                if key not in verdicts:
+                    del pair.told[key]
+                    yield _ended(before, self._n)
+            for key, verdict in verdicts.items():
+                finding = self._finding(pair, key, verdict, run, position)
+                if key not in pair.told:
+                    yield finding
+                pair.told.setdefault(key, finding)
+
+    def _verdicts(self, pair: _Pair) -> dict[str, Verdict]:
+        stood = {key.rpartition(":")[2] for key in pair.told}
+        verdicts = pair.table.verdicts(stood, partial=pair.factor != "cell")
+        base = f"confound:{pair.factor}:{pair.nuisance}"
+        return {f"{base}:{verdict.name}": verdict for verdict in verdicts}
+
+    def _finding(self, pair: _Pair, key: str, verdict: Verdict, run: Run, position: int) -> Finding:
+        rows = self._row_labels(pair.factor)
+        columns = self._nuisances[pair.nuisance].labels
+        on = _listed([columns[number] for number in verdict.columns])
+        of = _listed([rows[number] for number in verdict.rows])
+        return Finding(
+            key=key,
+            kind="confound",
+            message=_message(pair, verdict, of, on, self._n),
+            along=pair.nuisance,
+            level=columns[verdict.columns[0]] if len(verdict.columns) == 1 else None,
+            run=run.id,
+            index=position,
+            n=self._n,
+            cells=tuple(rows[number] for number in verdict.rows) if pair.factor == "cell" else self._as_cells(pair, verdict),
+            share=verdict.strength,
+            n_again=verdict.n_needed,
+        )
+
+    def _row_labels(self, factor: str) -> list[str]:
+        if factor == "cell" and self._cells is not None:
+            return self._cells.labels
+        return self._factors[factor].labels
+
+    def _as_cells(self, pair: _Pair, verdict: Verdict) -> tuple[str, ...]:
+        labels = self._factors[pair.factor].labels
+        return tuple(f"{pair.factor}={labels[number]}" for number in verdict.rows)
+
+
+def _message(pair: _Pair, verdict: Verdict, of: str, on: str, n: int) -> str:
+    what = f"{pair.factor} {of}" if pair.factor != "cell" else f"cell {of}"
+    if verdict.kind == "apart":
+        return f"not separable: {what} ran only on {pair.nuisance} {on}, and no other level of {pair.factor} ran there"
+    if verdict.kind == "one":
+        every = "every run" if not verdict.n_elsewhere else f"all but {counted(verdict.n_elsewhere, 'run')}"
+        others = (
+            f"only {counted(verdict.n_beside, 'run')} of the others ran there too"
+            if verdict.n_beside
+            else "none of the others did"
+        )
+        return f"not separable: {every} of {what} ran on {pair.nuisance} {on}; {others}"
+    return (
+        f"{pair.factor} and {pair.nuisance} went together in {counted(n, 'run')}: Cramér's V {verdict.strength:.2f} "
+        "(0 none, 1 the same thing), so that little of their effects can be told apart"
+    )
+
+
+def _listed(labels: list[str]) -> str:
+    return ", ".join(labels[:3]) + (f" and {len(labels) - 3} more" if len(labels) > 3 else "")
+
+
+def _ended(before: Finding, n: int) -> Finding:
+    return msgspec.structs.replace(before, holds=False, n=n, message=f"no longer so after {counted(n, 'run')}: {before.message}")
