@@ -18,8 +18,8 @@ SOURCE = (
 
 Interval = tuple[float, float, float]
 
-# At a correlation of −1/(k − 1) between k values that of their mean falls without limit: form 2 stays this share
-# of it away.
+# At a correlation of −1/(k − 1) between k values that of their mean falls without limit: form 2 stays this
+# share of it away.
 NEAREST_TO_FLOOR = 1.0 - 1e-9
 
 

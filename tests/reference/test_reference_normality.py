@@ -46,6 +46,13 @@ def test_data_of_1965(columns):
     assert result.pvalue == pytest.approx(0.000913490481813, abs=9.7e-13)
 
 
+def test_heat_flow_by_shapiro_wilk(columns):
+    """NIST Dataplot, Wilk-Shapiro test of ZARR13: W .9982718, p .9992256 (published, single precision)."""
+    result = shapiro_wilk(columns("eh_zarr13.csv", "y"))
+    assert result.statistic == pytest.approx(0.9982718, abs=4e-7)
+    assert result.pvalue == pytest.approx(0.9992256, abs=1.4e-6)
+
+
 def test_heat_flow_by_anderson_darling(columns):
     """NIST e-Handbook 1.4.2.8: A² .129 once multiplied by 1 + 4/n − 25/n² (recalled, reproduced)."""
     result = anderson_darling(columns("eh_zarr13.csv", "y"))
