@@ -26,15 +26,37 @@ class Chains:
         return e
 
 
-def along_order(n: int) -> Chains:
+@dataclass(frozen=True, kw_only=True)
+class Stretches(Chains):
+    """Chains without branches: `runs` holds them one after the other, each beginning at its `offsets`."""
+
+    runs: Ints
+    offsets: Ints
+
+    def longest(self, n_chains: int, n_least: int) -> list[Ints]:
+        """Runs of each of the longest chains that have at least n_least runs."""
+        ends = np.append(self.offsets[1:], len(self.runs))
+        length = ends - self.offsets
+        order = np.argsort(-length, kind="stable")[:n_chains]
+        return [self.runs[self.offsets[i] : ends[i]] for i in order if length[i] >= n_least]
+
+
+def along_order(n: int) -> Stretches:
     """The order of the audit as one chain of n runs."""
     index = np.arange(n, dtype=np.int64)
-    return Chains(along="order", child=index[1:], parent=index[:-1], starts=index[:1])
+    return Stretches(along="order", child=index[1:], parent=index[:-1], starts=index[:1], runs=index, offsets=index[:1])
 
 
-def within(codes: Codes, name: str) -> Chains:
+def within(codes: Codes, name: str) -> Stretches:
     """One chain for each level of a nuisance, in the order of the audit."""
     order = np.argsort(codes.codes, kind="stable")
-    same = codes.codes[order[1:]] == codes.codes[order[:-1]]
-    starts = np.concatenate((order[:1], order[1:][~same]))
-    return Chains(along=name, child=order[1:][same], parent=order[:-1][same], starts=starts)
+    new = np.concatenate(([True], codes.codes[order[1:]] != codes.codes[order[:-1]]))
+    same = ~new[1:]
+    return Stretches(
+        along=name,
+        child=order[1:][same],
+        parent=order[:-1][same],
+        starts=order[new],
+        runs=order,
+        offsets=np.flatnonzero(new),
+    )

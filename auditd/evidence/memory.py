@@ -1,0 +1,121 @@
+"""Dependence along time within the cells' residuals: steps first, then autocorrelation."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from auditd.evidence.chains import Stretches, along_order, within
+from auditd.evidence.inputs import Codes, Floats, Ints
+from auditd.evidence.moments import gather
+from auditd.evidence.posterior import Posterior, explore
+from auditd.evidence.restricted import FIXED_RIDGE, Fits, evaluate
+from auditd.evidence.steps import MIN_CHAIN_RUNS, segments
+
+MIN_MEAN_CHAIN = 4.0  # runs a chain, on average, for dependence within a nuisance's levels to be asked
+MAX_COLUMNS = 80  # columns of the restricted likelihood; beyond, residuals are taken as they are
+MAX_STEP_CHAINS = 200  # chains that are searched for steps, the longest first
+
+
+@dataclass(frozen=True, kw_only=True)
+class Steps:
+    """Segments of constant level.
+
+    segment : (n,) code, −1 in chains without a step. owner (S,) : chain of each segment. variance : between the segments of a chain; df : segments beyond
+    one a chain.
+    """
+
+    segment: Ints
+    owner: Ints
+    variance: float
+    df: int
+
+    @property
+    def n_segments(self) -> int:
+        """Segments in chains that have a step."""
+        return len(self.owner)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Memory:
+    """What was found along time: steps, and the posterior of the AR(1) coefficient along `chains`; variance of one run about its segment."""
+
+    chains: Stretches
+    steps: Steps
+    posterior: Posterior
+    variance: float
+
+
+def remember(residual: Floats, level: Ints, nuisances: Mapping[str, Codes]) -> Memory:
+    """Find steps and fit the autocorrelation of residuals whose level means (codes `level`) have been taken off."""
+    candidates: list[Stretches] = [along_order(len(residual))]
+    candidates += [
+        within(codes, name) for name, codes in nuisances.items() if len(residual) / codes.n_levels >= MIN_MEAN_CHAIN
+    ]
+    steps, rest = find_steps(residual, choose(residual, candidates))
+    chains = choose(rest, candidates)
+    posterior, n_fixed = _fit(residual, level, steps, chains)
+    return Memory(
+        chains=chains, steps=steps, posterior=posterior, variance=float(rest @ rest) / max(len(rest) - n_fixed, 1)
+    )
+
+
+def choose(residual: Floats, candidates: Sequence[Stretches]) -> Stretches:
+    """The chains with the largest lag-1 correlation in standard errors."""
+    if len(candidates) == 1:
+        return candidates[0]
+    scores = [abs(float(residual[c.child] @ residual[c.parent])) / max(len(c.child), 1) ** 0.5 for c in candidates]
+    return candidates[int(np.argmax(scores))]
+
+
+def find_steps(residual: Floats, chains: Stretches) -> tuple[Steps, Floats]:
+    """Steps of every chain, and the residuals about the segments' means."""
+    segment = np.full(len(residual), -1, dtype=np.int64)
+    owner: list[int] = []
+    for chain, runs in enumerate(chains.longest(MAX_STEP_CHAINS, MIN_CHAIN_RUNS)):
+        starts = segments(residual[runs])
+        if len(starts) > 1:
+            segment[runs] = len(owner) + np.searchsorted(starts, np.arange(len(runs)), side="right") - 1
+            owner += [chain] * len(starts)
+    if not owner:
+        return Steps(segment=segment, owner=np.empty(0, dtype=np.int64), variance=0.0, df=0), residual
+    return _measure(residual, segment, np.unique(owner, return_inverse=True)[1])
+
+
+def _measure(residual: Floats, segment: Ints, owner: Ints) -> tuple[Steps, Floats]:
+    """Variance between the segments of a chain by the analysis of variance."""
+    stepped = segment >= 0
+    count = np.bincount(segment[stepped]).astype(float)
+    mean = np.bincount(segment[stepped], residual[stepped]) / count
+    runs = np.bincount(owner, count)
+    grand = np.bincount(owner, count * mean) / runs
+    df = len(owner) - len(runs)
+    typical = float((runs - np.bincount(owner, count**2) / runs).sum()) / df
+    between = float(count @ (mean - grand[owner]) ** 2) / df
+    rest = residual.copy()
+    rest[stepped] -= mean[segment[stepped]]
+    return Steps(segment=segment, owner=owner, variance=between / typical, df=df), rest
+
+
+def _fit(residual: Floats, level: Ints, steps: Steps, chains: Stretches) -> tuple[Posterior, int]:
+    """Restricted likelihood of φ with the level and segment means as fixed effects, where they are not too many."""
+    segment, n_segments, n_levels = steps.segment, steps.n_segments, int(level.max()) + 1
+    if n_levels > MAX_COLUMNS:
+        level, n_levels = np.zeros_like(level), 1
+    _, first, code = np.unique(level * (n_segments + 1) + segment + 1, return_index=True, return_inverse=True)
+    table = np.hstack((
+        (level[first][:, None] == np.arange(n_levels)).astype(float),
+        (segment[first][:, None] == np.arange(n_segments)).astype(float),
+    ))
+    moments = gather(residual, code, table, chains)
+    ridge = np.concatenate((np.zeros(n_levels), np.full(n_segments, FIXED_RIDGE * len(residual) / (n_segments + 1))))
+    c = np.zeros(len(ridge))
+    c[0] = 1.0
+    n_fixed = n_levels + steps.df
+
+    def fit(phi: Floats, _share: Floats) -> Fits:
+        return evaluate(moments, c, phi, np.broadcast_to(ridge, (len(phi), len(ridge))), n_fixed)
+
+    return explore(fit, with_share=False), n_fixed
