@@ -63,7 +63,9 @@ FIRST: tuple[Kind, ...] = ("failure", "order", "confound", "lineage", "clock")
 
 
 class Group(NamedTuple):
-    """One warning: what leads it, with `explains` filled in, and the findings listed under it with reasons."""
+    """One warning: what leads it, with `explains` filled in, and the findings listed under it with "
+    "reasons.
+    """
 
     leading: Finding
     explained: tuple[Finding, ...]
@@ -153,7 +155,9 @@ def _same_place(place: Place, cause: Finding, effect: Finding, changes: Iterable
 def _starts_with(effect: Finding, cause: Finding, changes: Iterable[Change]) -> bool:
     """Whether an effect begins where a level of the cause's nuisance first ran."""
     return any(
-        change.nuisance == cause.along and cause.level in {None, change.level} and near(change, effect) is not None
+        change.nuisance == cause.along
+        and cause.level in {None, change.level}
+        and near(change, effect) is not None
         for change in changes
     )
 

@@ -51,7 +51,11 @@ def _n_by_chance(change: Change, finding: Finding, changes: Sequence[Change], n:
     """Return how many changes of that nuisance would fall among the finding's dates if they fell anywhere."""
     low = finding.since_low if finding.since_low is not None else finding.since or 0
     high = finding.since_high if finding.since_high is not None else finding.since or 0
-    like = [c for c in changes if c.nuisance == change.nuisance and c.within == change.within and c.moment.position]
+    like = [
+        c
+        for c in changes
+        if c.nuisance == change.nuisance and c.within == change.within and c.moment.position
+    ]
     return len(like) * (high - low + 3) / max(1, n)
 
 

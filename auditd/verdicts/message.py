@@ -52,7 +52,11 @@ def _what(finding: Finding) -> str:
 def _on(finding: Finding) -> str:
     if finding.along in {None, "order"}:
         return ""
-    return f" on {finding.along} {finding.level}" if finding.level is not None else f" within each {finding.along}"
+    return (
+        f" on {finding.along} {finding.level}"
+        if finding.level is not None
+        else f" within each {finding.along}"
+    )
 
 
 def _most(finding: Finding) -> str:

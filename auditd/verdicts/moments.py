@@ -6,6 +6,7 @@ from datetime import UTC, datetime
 
 import msgspec
 
+
 class Moment(msgspec.Struct, frozen=True, kw_only=True):
     """A run at which something is said to be so."""
 

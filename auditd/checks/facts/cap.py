@@ -1,8 +1,9 @@
-"""Do many values stand exactly at one extreme?"""
+"""Many values that stand exactly at one extreme."""
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
+from typing import ClassVar
 
 from auditd.checks.facts.condition import counted
 from auditd.checks.facts.protocol import Quiet
@@ -22,7 +23,7 @@ MIN_RATIO = 10
 """... and how many times the most frequent other value they must be: on a coarse grid, the grid's other
 points come back nearly as often."""
 MIN_N_DISTINCT = 20
-"""Distinct other values in the window; a response with fewer is a rating or a small count, not a capped one."""
+"""Distinct other values in the window; a response with fewer is a rating or a small count, not capped."""
 
 
 class _Window:
@@ -56,7 +57,7 @@ class CapFact(Quiet):
     unless it is the largest of them.
     """
 
-    kind: Kind = "cap"
+    kind: ClassVar[Kind] = "cap"
 
     def __init__(self, plan: Plan, *, alarm_budget: float) -> None:
         super().__init__(plan, alarm_budget=alarm_budget)
@@ -99,11 +100,19 @@ class CapFact(Quiet):
         at, _ = self._told.setdefault(key, (run.id, n))
         what = "largest" if side == "upper" else "smallest"
         message = (
-            f"{counted(n_at, 'value')} of {window.response} among the last {counted(n, 'run')} are exactly {value:.6g}, the "
+            f"{counted(n_at, 'value')} of {window.response} among the last {counted(n, 'run')} are "
+            f"exactly {value:.6g}, the "
             f"{what} there is: a cap or a limit, so that means are not means"
         )
         finding = Finding(
-            key=key, kind="cap", message=message, response=window.response, run=at, n=n, share=n_at / n, n_again=n_at
+            key=key,
+            kind="cap",
+            message=message,
+            response=window.response,
+            run=at,
+            n=n,
+            share=n_at / n,
+            n_again=n_at,
         )
         if first:
             return [finding]

@@ -1,8 +1,9 @@
-"""Can what was varied on purpose be told from what merely differed?"""
+"""What was varied on purpose and cannot be told from what merely differed."""
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
+from typing import ClassVar
 
 import msgspec
 
@@ -16,7 +17,7 @@ from auditd.records import Finding, Kind, Run
 FIRST_LOOK = 20
 """Runs placed before the first look at a table."""
 LOOK_FACTOR = 1.1
-"""Each look comes when the runs have grown by this factor, so that looking costs nothing at a million runs."""
+"""Each look comes when the runs have grown by this factor, so that looking stays cheap at a million runs."""
 
 
 class _Pair:
@@ -37,7 +38,7 @@ class ConfoundFact(Quiet):
     Where no runs are placed (no order), nothing is asked. Aliasing with the order is the fact `order`.
     """
 
-    kind: Kind = "confound"
+    kind: ClassVar[Kind] = "confound"
 
     def __init__(self, plan: Plan, *, alarm_budget: float) -> None:
         super().__init__(plan, alarm_budget=alarm_budget)
@@ -104,7 +105,9 @@ class ConfoundFact(Quiet):
             run=run.id,
             index=position,
             n=self._n,
-            cells=tuple(rows[number] for number in verdict.rows) if pair.factor == "cell" else self._as_cells(pair, verdict),
+            cells=tuple(rows[number] for number in verdict.rows)
+            if pair.factor == "cell"
+            else self._as_cells(pair, verdict),
             share=verdict.strength,
             n_again=verdict.n_needed,
         )
@@ -122,7 +125,10 @@ class ConfoundFact(Quiet):
 def _message(pair: _Pair, verdict: Verdict, of: str, on: str, n: int) -> str:
     what = f"{pair.factor} {of}" if pair.factor != "cell" else f"cell {of}"
     if verdict.kind == "apart":
-        return f"not separable: {what} ran only on {pair.nuisance} {on}, and no other level of {pair.factor} ran there"
+        return (
+            f"not separable: {what} ran only on {pair.nuisance} {on}, and no other level of "
+            f"{pair.factor} ran there"
+        )
     if verdict.kind == "one":
         every = "every run" if not verdict.n_elsewhere else f"all but {counted(verdict.n_elsewhere, 'run')}"
         others = (
@@ -132,7 +138,8 @@ def _message(pair: _Pair, verdict: Verdict, of: str, on: str, n: int) -> str:
         )
         return f"not separable: {every} of {what} ran on {pair.nuisance} {on}; {others}"
     return (
-        f"{pair.factor} and {pair.nuisance} went together in {counted(n, 'run')}: Cramér's V {verdict.strength:.2f} "
+        f"{pair.factor} and {pair.nuisance} went together in {counted(n, 'run')}: Cramér's V "
+        f"{verdict.strength:.2f} "
         "(0 none, 1 the same thing), so that little of their effects can be told apart"
     )
 
@@ -142,4 +149,6 @@ def _listed(labels: list[str]) -> str:
 
 
 def _ended(before: Finding, n: int) -> Finding:
-    return msgspec.structs.replace(before, holds=False, n=n, message=f"no longer so after {counted(n, 'run')}: {before.message}")
+    return msgspec.structs.replace(
+        before, holds=False, n=n, message=f"no longer so after {counted(n, 'run')}: {before.message}"
+    )

@@ -135,7 +135,9 @@ class Crossing:
         if not n_others or n * (1 - n_beside / n_others) < N_EXPECTED:
             return None
         n_needed = max(1, math.ceil(SHARE_ELSEWHERE * n), N_ELSEWHERE) - n_elsewhere
-        return Verdict("one", f"row{row}", (row,), (column,), 1 - n_elsewhere / n, n_elsewhere, n_beside, n_needed)
+        return Verdict(
+            "one", f"row{row}", (row,), (column,), 1 - n_elsewhere / n, n_elsewhere, n_beside, n_needed
+        )
 
     def _partial(self, bar: float) -> list[Verdict]:
         rows = [row for row, counts in self.rows.items() if sum(counts.values()) >= MIN_N_LEVEL]

@@ -1,8 +1,9 @@
-"""Is every number of the sequence there, once?"""
+"""Numbers of the sequence that are missing, or used twice."""
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
+from typing import ClassVar
 
 from auditd.checks.facts.condition import Condition, counted
 from auditd.checks.facts.protocol import Quiet
@@ -10,7 +11,7 @@ from auditd.plan import Plan
 from auditd.records import Finding, Kind, Run
 
 N_WAIT_NUMBERS = 100
-"""With another order than the sequence: how far the numbers must have gone on before one counts as missing."""
+"""With another order than the sequence: how far the numbers must go on before one counts as missing."""
 N_LISTED = 3
 """Missing numbers that a message names."""
 
@@ -24,7 +25,7 @@ class GapFact(Quiet):
     means of those that do are not what they seem. Numbers that land late close their gap.
     """
 
-    kind: Kind = "gap"
+    kind: ClassVar[Kind] = "gap"
 
     def __init__(self, plan: Plan, *, alarm_budget: float) -> None:
         super().__init__(plan, alarm_budget=alarm_budget)
@@ -87,7 +88,7 @@ class GapFact(Quiet):
         return [self._gap_finding(self._gap)] if self._gap.seen() else []
 
     def _used_twice(self, run: Run, number: int) -> list[Finding]:
-        if number in self._missing or self._wait and number < (self._next or 0):
+        if number in self._missing or (self._wait and number < (self._next or 0)):
             return []
         if self._twice is None:
             self._twice = Condition("gap:twice", run.id)
@@ -99,10 +100,15 @@ class GapFact(Quiet):
         n = condition.n
         listed = ", ".join(str(number) for number, _ in zip(self._missing, range(N_LISTED), strict=False))
         more = ", …" if n > N_LISTED else ""
-        message = f"{counted(n, 'number')} of the sequence never landed, first passed over at {condition.run}: {listed}{more}"
+        message = (
+            f"{counted(n, 'number')} of the sequence never landed, first passed over at "
+            f"{condition.run}: {listed}{more}"
+        )
         if not n:
             message = "every number of the sequence has landed by now"
-        return Finding(key="gap:sequence", kind="gap", message=message, run=condition.run, n=n, n_again=n, holds=n > 0)
+        return Finding(
+            key="gap:sequence", kind="gap", message=message, run=condition.run, n=n, n_again=n, holds=n > 0
+        )
 
     def _twice_finding(self, condition: Condition) -> Finding:
         condition.changed = False

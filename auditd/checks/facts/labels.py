@@ -8,7 +8,9 @@ from auditd.records import Level, cell_label, level_label
 
 
 def level_key(level: Level) -> Hashable:
-    """Return what stands for a level in a dict: `true` and 1 are two levels, though Python calls them equal."""
+    """Return what stands for a level in a dict: `true` and 1 are two levels, though Python calls "
+    "them equal.
+    """
     return (bool, level) if isinstance(level, bool) else level
 
 

@@ -1,8 +1,9 @@
-"""Do runs continue others, and is the chain of restarts whole?"""
+"""Runs that continue others, and chains of restarts that are not whole."""
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
+from typing import ClassVar
 
 from auditd.checks.facts.ancestry import Ancestry
 from auditd.checks.facts.condition import Condition, counted
@@ -24,7 +25,7 @@ class LineageFact(Quiet):
     landed; the finding is withdrawn when it lands.
     """
 
-    kind: Kind = "lineage"
+    kind: ClassVar[Kind] = "lineage"
 
     def __init__(self, plan: Plan, *, alarm_budget: float) -> None:
         super().__init__(plan, alarm_budget=alarm_budget)
@@ -115,7 +116,8 @@ class LineageFact(Quiet):
         self._continued_told()
         share = self._n_continued / max(1, self._n_completed)
         message = (
-            f"{counted(self._n_continued, 'completed run continues', 'completed runs continue')} another completed run "
+            f"{counted(self._n_continued, 'completed run continues', 'completed runs continue')} "
+            "another completed run "
             f"({share:.0%} of all, chains of up to {self._depth + 1}): they share what they inherited"
         )
         return Finding(
@@ -135,7 +137,10 @@ class LineageFact(Quiet):
     def _cycle_finding(self) -> Finding:
         condition = self._cycles or Condition("lineage:cycle", None)
         condition.changed = False
-        message = f"{condition.run} is, by the parents stated, its own ancestor; {counted(condition.n, 'such cycle')}"
+        message = (
+            f"{condition.run} is, by the parents stated, its own ancestor; "
+            f"{counted(condition.n, 'such cycle')}"
+        )
         return Finding(key="lineage:cycle", kind="lineage", message=message, run=condition.run, n=condition.n)
 
     def _missing_finding(self, parent: str) -> Finding:
@@ -143,8 +148,11 @@ class LineageFact(Quiet):
         condition.changed = False
         n = condition.n
         message = (
-            f"{counted(n, 'run names a parent', 'runs name parents')} that never landed, first {condition.run} ({parent})"
+            f"{counted(n, 'run names a parent', 'runs name parents')} that never landed, first "
+            f"{condition.run} ({parent})"
         )
         if not n:
             message = "every parent that runs name has landed by now"
-        return Finding(key="lineage:missing", kind="lineage", message=message, run=condition.run, n=n, holds=n > 0)
+        return Finding(
+            key="lineage:missing", kind="lineage", message=message, run=condition.run, n=n, holds=n > 0
+        )

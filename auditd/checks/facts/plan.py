@@ -1,4 +1,4 @@
-"""Was the plan changed after the first run?"""
+"""A plan that was changed after the first run."""
 
 from __future__ import annotations
 
@@ -22,7 +22,16 @@ def plan_finding(*, version: int, changed: list[str], reason: str, position: int
     """
     listed = ", ".join(changed[:N_LISTED]) + (", …" if len(changed) > N_LISTED else "")
     message = (
-        f"version {version} of the plan is in use after {counted(position, 'run')}: {listed} changed ({reason}); "
+        f"version {version} of the plan is in use after {counted(position, 'run')}: {listed} changed "
+        f"({reason}); "
         "what is decided by the runs seen before is exploratory from here on"
     )
-    return Finding(key=f"plan:{version}", kind="plan", message=message, run=run, index=position, n=position, since=position)
+    return Finding(
+        key=f"plan:{version}",
+        kind="plan",
+        message=message,
+        run=run,
+        index=position,
+        n=position,
+        since=position,
+    )

@@ -21,15 +21,15 @@ class Fact(Protocol):
 
     kind: ClassVar[Kind]
 
-    def arrived(self, run: Run, arrival: int) -> Iterable[Finding]:
+    def arrived(self, run: Run, arrival: int, /) -> Iterable[Finding]:
         """Take a run as it lands, in arrival order, late runs too."""
         ...
 
-    def placed(self, run: Run, position: int) -> Iterable[Finding]:
+    def placed(self, run: Run, position: int, /) -> Iterable[Finding]:
         """Take a run when it has got its place in the audit's order; late runs never come here."""
         ...
 
-    def refused(self, refusal: Refusal) -> Iterable[Finding]:
+    def refused(self, refusal: Refusal, /) -> Iterable[Finding]:
         """Take a record that was not taken."""
         ...
 
@@ -45,15 +45,15 @@ class Quiet:
         self.plan = plan
         self.alarm_budget = alarm_budget
 
-    def arrived(self, _run: Run, _arrival: int) -> Iterable[Finding]:
+    def arrived(self, _run: Run, _arrival: int, /) -> Iterable[Finding]:
         """Find nothing at landing."""
         return ()
 
-    def placed(self, _run: Run, _position: int) -> Iterable[Finding]:
+    def placed(self, _run: Run, _position: int, /) -> Iterable[Finding]:
         """Find nothing when a run is placed."""
         return ()
 
-    def refused(self, _refusal: Refusal) -> Iterable[Finding]:
+    def refused(self, _refusal: Refusal, /) -> Iterable[Finding]:
         """Find nothing in a refusal."""
         return ()
 

@@ -4,7 +4,15 @@ from __future__ import annotations
 
 from typing import Protocol
 
+from auditd.checks.facts.cap import CapFact
+from auditd.checks.facts.confound import ConfoundFact
+from auditd.checks.facts.gap import GapFact
+from auditd.checks.facts.lineage import LineageFact
 from auditd.checks.facts.protocol import Fact
+from auditd.checks.facts.repeat import RepeatFact
+from auditd.checks.facts.rewrite import RewriteFact
+from auditd.checks.facts.seed import SeedFact
+from auditd.checks.facts.time import TimeFact
 from auditd.plan import Plan
 
 
@@ -16,4 +24,13 @@ class FactMaker(Protocol):
         ...
 
 
-FACTS: tuple[FactMaker, ...] = ()
+FACTS: tuple[FactMaker, ...] = (
+    SeedFact,
+    RepeatFact,
+    LineageFact,
+    ConfoundFact,
+    TimeFact,
+    GapFact,
+    RewriteFact,
+    CapFact,
+)

@@ -1,11 +1,11 @@
-"""Did different runs give the same results, to the last digit?"""
+"""Different runs that gave the same results, to the last digit."""
 
 from __future__ import annotations
 
 import math
 import struct
 from collections.abc import Iterable, Iterator
-from typing import NamedTuple
+from typing import ClassVar, NamedTuple
 
 from auditd.checks.facts.condition import Condition, Episodes, counted
 from auditd.checks.facts.labels import CellIndex
@@ -52,7 +52,7 @@ class RepeatFact(Quiet):
     agree with any earlier one) and, in one cell without stated seeds, either of the first and last.
     """
 
-    kind: Kind = "repeat"
+    kind: ClassVar[Kind] = "repeat"
 
     def __init__(self, plan: Plan, *, alarm_budget: float) -> None:
         super().__init__(plan, alarm_budget=alarm_budget)
@@ -149,12 +149,14 @@ class RepeatFact(Quiet):
         share = tally.n_repeats / max(1, n_since)
         if share >= IGNORED_SHARE:
             message = (
-                f"{tally.n_repeats + 1} of the last {counted(n_since + 1, 'run')} of cell {label} are equal to the last "
+                f"{tally.n_repeats + 1} of the last {counted(n_since + 1, 'run')} of cell {label} are "
+                "equal to the last "
                 f"digit {self._seeds}, since {condition.run}: an ignored seed in one configuration"
             )
         else:
             message = (
-                f"{counted(tally.n_repeats, 'run')} of cell {label} gave an earlier result again to the last digit "
+                f"{counted(tally.n_repeats, 'run')} of cell {label} gave an earlier result again to "
+                "the last digit "
                 f"{self._seeds}, first {condition.run}: a cache that answers twice"
             )
         return Finding(

@@ -76,7 +76,9 @@ class Resolution:
         return chance
 
     def _estimates(self) -> tuple[tuple[float, float], ...]:
-        """Return each response's scale, given those before it, and grid; empty while too few runs are known."""
+        """Return each response's scale, given those before it, and grid; empty while too few runs "
+        "are known.
+        """
         if self._n_differences < N_DIFFERENCES_NEEDED:
             return ()
         known = self._n_differences.bit_length()  # estimated anew at each doubling
@@ -86,7 +88,9 @@ class Resolution:
         return self._estimated[1]
 
 
-def _conditional(differences: np.ndarray[tuple[int, int], np.dtype[np.float64]]) -> tuple[tuple[float, float], ...]:
+def _conditional(
+    differences: np.ndarray[tuple[int, int], np.dtype[np.float64]],
+) -> tuple[tuple[float, float], ...]:
     """Return robust scales times the root of the share that the responses before leave open, and grids."""
     estimates: list[tuple[float, float]] = []
     columns: list[np.ndarray[tuple[int], np.dtype[np.float64]]] = []

@@ -1,8 +1,9 @@
-"""Did a record change after it had been taken?"""
+"""Records that changed after they had been taken."""
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
+from typing import ClassVar
 
 from auditd.checks.facts.condition import Condition, Episodes, counted
 from auditd.checks.facts.protocol import Quiet
@@ -17,7 +18,7 @@ class RewriteFact(Quiet):
     kept as a refusal. Rewrites that follow each other closely are one condition.
     """
 
-    kind: Kind = "rewrite"
+    kind: ClassVar[Kind] = "rewrite"
 
     def __init__(self, plan: Plan, *, alarm_budget: float) -> None:
         super().__init__(plan, alarm_budget=alarm_budget)

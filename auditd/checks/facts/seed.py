@@ -1,8 +1,9 @@
-"""Was one seed used for more than one run where each was to have its own?"""
+"""One seed for more than one run, where each was to have its own."""
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
+from typing import ClassVar
 
 from auditd.checks.facts.ancestry import Ancestry
 from auditd.checks.facts.condition import Condition, Episodes, counted
@@ -28,7 +29,7 @@ class SeedFact(Quiet):
     between them lands later, which withdraws the finding. Texts are compared: "7" and "07" are two seeds.
     """
 
-    kind: Kind = "seed"
+    kind: ClassVar[Kind] = "seed"
 
     def __init__(self, plan: Plan, *, alarm_budget: float) -> None:
         super().__init__(plan, alarm_budget=alarm_budget)
@@ -99,4 +100,7 @@ class SeedFact(Quiet):
             return "the runs that shared a seed belong to one restart lineage"
         where = "" if self._anywhere else f" of cell {cell}"
         total = counted(condition.n, "run has", "runs have")
-        return f"seed {condition.seed} of {earlier} was used again by {later}{where}; {total} the seed of an earlier run"
+        return (
+            f"seed {condition.seed} of {earlier} was used again by {later}{where}; {total} the seed "
+            "of an earlier run"
+        )

@@ -1,4 +1,4 @@
-"""Has nothing landed for longer than the plan allows?"""
+"""Nothing landed for longer than the plan allows."""
 
 from __future__ import annotations
 
@@ -7,7 +7,9 @@ from datetime import UTC, datetime
 from auditd.records import Finding
 
 
-def silence_finding(*, last_landed: datetime, now: datetime, after_s: float, last_run: str | None, n: int) -> Finding:
+def silence_finding(
+    *, last_landed: datetime, now: datetime, after_s: float, last_run: str | None, n: int
+) -> Finding:
     """Return the finding that nothing landed for `after_s` seconds; it does not hold when something has.
 
     Parameters
@@ -20,7 +22,9 @@ def silence_finding(*, last_landed: datetime, now: datetime, after_s: float, las
     silent_s = (now - last_landed).total_seconds()
     since = f"{last_landed.astimezone(UTC):%d %b %H:%M} UTC"
     last = f", when {last_run} landed" if last_run else ""
-    message = f"nothing has landed for {_told(silent_s)}, since {since}{last}; the plan allows {_told(after_s)}"
+    message = (
+        f"nothing has landed for {_told(silent_s)}, since {since}{last}; the plan allows {_told(after_s)}"
+    )
     holds = silent_s >= after_s
     if not holds:
         message = f"runs land again, the last one {_told(max(0.0, silent_s))} ago"

@@ -1,10 +1,11 @@
-"""Can the times that runs state be true?"""
+"""Stated times that cannot be true."""
 
 from __future__ import annotations
 
 from bisect import bisect_left, bisect_right
 from collections.abc import Iterable, Iterator
 from datetime import datetime
+from typing import ClassVar
 
 from auditd.checks.facts.condition import Condition, counted
 from auditd.checks.facts.protocol import Quiet
@@ -28,7 +29,9 @@ class _Machine:
         self.last_placed: tuple[float, str] | None = None
 
     def n_beside(self, start: float, end: float, tolerance_s: float) -> int:
-        """Return the largest number of remembered runs that were under way at one moment within [start, end]."""
+        """Return the largest number of remembered runs that were under way at one moment within "
+        "[start, end].
+        """
         low = bisect_left(self.starts, start - self.longest_s)
         high = bisect_right(self.starts, end - tolerance_s)
         events: list[tuple[float, int]] = []
@@ -61,7 +64,7 @@ class TimeFact(Quiet):
     asked, since machines disagree; a clock put forward between runs looks like idle time and is not seen.
     """
 
-    kind: Kind = "time"
+    kind: ClassVar[Kind] = "time"
 
     def __init__(self, plan: Plan, *, alarm_budget: float) -> None:
         super().__init__(plan, alarm_budget=alarm_budget)
@@ -93,7 +96,10 @@ class TimeFact(Quiet):
             machine, level = self._machine(along, run.nuisance.get(along))
             before, machine.last_placed = machine.last_placed, (at_s, run.id)
             if before is not None and at_s < before[0] - _tolerance_s(run.started, run.started):
-                first = f"{run.id} started {before[0] - at_s:.3g} s before {before[1]}, which has a smaller number"
+                first = (
+                    f"{run.id} started {before[0] - at_s:.3g} s before {before[1]}, which has a "
+                    "smaller number"
+                )
                 found += self._seen(f"time:clock:{along}={level}", run, first, along, level)
         return found
 
@@ -112,7 +118,10 @@ class TimeFact(Quiet):
             n_beside = machine.n_beside(low, high, tolerance_s)
             machine.add(low, high)
             if n_beside >= self._slots:
-                first = f"{run.id} ran on {along} {level} beside {counted(n_beside, 'other run')}, with room for {self._slots}"
+                first = (
+                    f"{run.id} ran on {along} {level} beside {counted(n_beside, 'other run')}, with "
+                    f"room for {self._slots}"
+                )
                 found += self._seen(f"time:overlap:{along}={level}", run, first, along, level)
         return found
 
