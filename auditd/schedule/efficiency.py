@@ -19,8 +19,8 @@ def efficiency_factor(blocks: Sequence[Sequence[int]], n_treatments: int) -> flo
     The harmonic mean of the canonical efficiency factors, which are the non-zero roots of the information
     matrix R − N K⁻¹ Nᵀ scaled by the replications on both sides. With equal replication it is the ratio of
     the average variance of a difference between two treatments in complete blocks to that in this design, at
-    the same error variance. 1 for complete blocks, 0 for a design in which some difference cannot be estimated
-    within blocks.
+    the same error variance. 1 for complete blocks, 0 for a design in which some difference cannot be
+    estimated within blocks.
 
     Parameters
     ----------

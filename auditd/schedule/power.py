@@ -10,11 +10,14 @@ from auditd.errors import BadInput
 
 # What a bet loses, in log e, against one that knew kind and size beforehand: the mixtures over kinds of
 # alternative, over starts and over sizes, and the ranks' reference that is still being learnt. Fitted to the
-# probability 0.8 in simulations of `auditd.sequential.replay`: 150 campaigns for each of several sizes, 240 to
-# 1,600 runs, 4 to 16 hosts, 7 and 28 e-processes.
+# probability 0.8 in simulations of `auditd.sequential.replay`: 150 campaigns for each of several sizes, 240
+# to 1,600 runs, 4 to 16 hosts, 7 to 28 e-processes.
 LOSS_SERIAL = 3.0
-LOSS_DRIFT = 4.0
-LOSS_BATCH = 2.0
+LOSS_DRIFT = 3.0
+LOSS_BATCH = 1.0
+RUNS_PER_DRIFT_LOSS = 400.0
+"""Runs for each further unit that `drift` loses: its bets remember some 330 runs (a coefficient of .997), so
+that they cannot use the whole of a long straight line."""
 
 LARGEST_AR, LARGEST_ICC, LARGEST_DRIFT = 0.95, 0.95, 10.0
 """Beyond these the answer is None: the design would have shown no such dependence for sure."""
@@ -54,11 +57,12 @@ def would_see(
     -----
     An approximation, within about 15 % of what simulation gives for 240 to 1,600 runs; below some 100 runs,
     and for few levels of very unequal counts, it is cruder. The log e-value against a known alternative of
-    noncentrality h is N(h²/2, h²); it must reach log(K / budget) and what the mixtures lose. A drift of size δ
-    has h² = n δ² / 12, an AR(1) with coefficient φ has h² = −n log(1 − φ²). For L levels of m runs the log
+    noncentrality h is N(h²/2, h²); it must reach log(K / budget) and what the mixtures lose. A drift of size
+    δ has h² = n δ² / 12, an AR(1) with coefficient φ has h² = −n log(1 − φ²). For L levels of m runs the log
     Bayes factor of the level effects is (Q − (L−1)(1 + log(Q / (L−1)))) / 2, with Q distributed as (1 + m θ)
     times chi-squared on L − 1 degrees of freedom and θ the ratio of the variances between and within levels.
-    Assumes one dependence at a time and normal scores; in mixtures of faults the first to alarm masks none.
+    Assumes one dependence at a time, present from the first run on. A later one, or one whose cells are small,
+    is seen later than this says.
 
     References
     ----------
@@ -68,10 +72,11 @@ def would_see(
     _check_power(n_scored, n_asked, alarm_budget, probability)
     needed = math.log(n_asked / alarm_budget)
     z = NormalDist().inv_cdf(probability)
+    drift_loss = LOSS_DRIFT + n_scored / RUNS_PER_DRIFT_LOSS
     counts = [[int(m) for m in own if m > 0] for own in (level_counts or {}).values()]
     seen = [_smallest_icc(own, needed + LOSS_BATCH, probability) for own in counts if len(own) > 1]
     return {
-        "drift": _below(LARGEST_DRIFT, _smallest_drift(n_scored, _noncentrality(needed + LOSS_DRIFT, z))),
+        "drift": _below(LARGEST_DRIFT, _smallest_drift(n_scored, _noncentrality(needed + drift_loss, z))),
         "icc": _below(LARGEST_ICC, min(seen, default=math.inf)),
         "ar": _below(LARGEST_AR, _smallest_ar(n_scored, _noncentrality(needed + LOSS_SERIAL, z))),
     }

@@ -13,7 +13,7 @@ from auditd.schedule.randomised_blocks import cells_of
 PROBABILITY = 0.8
 """The probability that `runs_needed` is stated for; common practice in power calculations."""
 SPREADS_IN_MARGINS = (0.5, 1.0, 2.0, 5.0)
-"""A run's standard deviation, in margins, for which a comparison's runs are stated: it is not known before."""
+"""Standard deviations of a run, in margins, that a comparison's runs are stated for; not known before."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -46,8 +46,8 @@ def runs_to_decide(plan: Plan, *, n_cells: int) -> list[RunsNeeded]:
     """Return, for each planned comparison with a margin, the runs that decide it if there is no difference.
 
     Two one-sided tests inside ± margin at the plan's confidence, shared evenly by the planned comparisons
-    (Bonferroni), with power 0.8: a side needs 2 s² (z(1−α) + z(1−β/2))² / margin² runs, s the standard deviation
-    of a run and β = 0.2; normal approximation, independent runs. Dependence raises the number.
+    (Bonferroni), with power 0.8: a side needs 2 s² (z(1−α) + z(1−β/2))² / margin² runs, s the standard
+    deviation of a run and β = 0.2; normal approximation, independent runs. Dependence raises the number.
 
     References
     ----------
