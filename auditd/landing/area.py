@@ -38,6 +38,11 @@ class Area:
         self._dirty: set[str] = set()
         self.mounts = Mounts()
 
+    @property
+    def n_folders(self) -> int:
+        """How many folders were listed."""
+        return len(self._listings)
+
     def real(self, stored: str) -> str:
         """Return the path to open."""
         return os.path.join(self._base, self._unspoken.get(stored, stored))

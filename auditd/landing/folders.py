@@ -1,4 +1,4 @@
-"""Listing folders politely: names first, and none at all where a folder's own mtime says that nothing changed."""
+"""Listing folders politely: names first, and not at all while a folder's own mtime stands still."""
 
 from __future__ import annotations
 

@@ -17,6 +17,9 @@ from auditd.plan import Plan
 from auditd.read import Readers
 from auditd.records import Batch, Source
 
+_QUEUED_S = 5.0
+"""An event may wait for so long in queues before it is told."""
+
 
 class Waiting(msgspec.Struct, frozen=True, kw_only=True):
     """A file that is not taken, or not wholly, since when and why."""
@@ -43,6 +46,7 @@ class Landing:
     ----------
     area : Area, the folders that belong to the landing.
     pace : Pace; a watcher that falls back to polling sets `pace.polls`.
+    n_unannounced : files that a later scan found although no event had told of them.
     """
 
     def __init__(self, plan: Plan, sources: Iterable[Source] = (), *, settle_all: bool = False) -> None:
@@ -56,6 +60,7 @@ class Landing:
         self._rotation: Iterator[str] = iter(())
         self._rotated_at = math.inf
         self._n_scans = 0
+        self.n_unannounced = 0
 
     @property
     def roots(self) -> tuple[str, ...]:
@@ -123,6 +128,8 @@ class Landing:
                 with contextlib.suppress(OSError):
                     found.append((os.lstat(self.area.real(path)).st_mtime_ns, path))
         self.progress.n_found += len(found)
+        if folders is None and self._n_scans > 1:
+            self.n_unannounced += sum(mtime_ns / 1e9 < now - _QUEUED_S for mtime_ns, _ in found)
         return [path for _, path in sorted(found)]
 
     def _due(self, now: float) -> Iterator[Batch]:

@@ -65,7 +65,7 @@ class Taking:
     def __init__(self, path: str, descriptor: int, status: os.stat_result, start: Start) -> None:
         self._path, self._descriptor, self._status, self._start = path, descriptor, status, start
         self._generation, self._first = start.generation, start.first
-        self._fresh = start.change not in {"append"}
+        self._fresh = start.change != "append"
 
     def steps(self, reader: Reader, mapper: Mapper, *, final: bool) -> Iterator[Step]:
         """Yield what the file gives, a batch a portion.
