@@ -39,8 +39,8 @@ def fisher_g(x: ArrayLike) -> FisherG:
     -------
     FisherG
         `.statistic` g in (0, 1], the largest of the m = ⌊(n − 1) / 2⌋ ordinates over their sum (frequency
-        zero and, for even n, one half are left out); exact `.pvalue`; `.index` j of the peak, whose `.period` is
-        n / j runs.
+        zero and, for even n, one half are left out); exact `.pvalue`; `.index` j of the peak,
+        whose `.period` is n / j runs.
 
     Raises
     ------
