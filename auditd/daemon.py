@@ -96,7 +96,7 @@ class Daemon:
         self._watcher = Watcher(self.landing, campaign.plan.landing.watch)
         self.watcher.start()
         self.weigher = Weigher(self.session)
-        self.silence = SilenceWatch(campaign.plan, time.time())
+        self.silence = SilenceWatch(campaign.plan)
         self.courier = Courier(campaign)
         self.courier.start()
 
@@ -125,7 +125,6 @@ class Daemon:
         self._advance(self._due_flush())
         self.weigher.refresh_if_due()
         self.silence.look(self.session, time.time())
-        self.courier.wake_if_due()
         self._beat()
 
     def _take(self, batches: Iterator[Any]) -> None:  # batches of records

@@ -13,16 +13,12 @@ from auditd import __version__
 from auditd.cli import (
     amend,
     answer,
-    audit,
     compare,
     demo,
-    draft,
     evidence,
     explain,
-    export,
     gather,
     rehearse,
-    report,
     runs,
     schedule,
     service,
@@ -67,7 +63,6 @@ def main(context: click.Context, plan: str | None) -> None:
 
 
 COMMANDS = (
-    draft.draft,
     schedule.schedule,
     rehearse.rehearse,
     watch.watch,
@@ -78,12 +73,9 @@ COMMANDS = (
     show.show,
     answer.answer,
     amend.amend,
-    audit.audit,
     evidence.evidence,
     compare.compare,
     explain.explain,
-    report.report,
-    export.export,
     service.service,
     store.store,
     demo.demo,

@@ -20,8 +20,8 @@ from auditd.series.load import response_names
 from auditd.series.scales import to_scale
 from auditd.store.answers import Answer, stored_answers
 from auditd.store.plans import Epoch, stored_epochs
-from auditd.store.runs import StoredRun, stored_runs
-from auditd.store.states import Checkpoint, save_checkpoint, stored_checkpoint
+from auditd.store.runs import StoredRun, count_runs, stored_runs
+from auditd.store.states import Checkpoint, save_checkpoint
 from auditd.store.tables import answers, runs
 
 N_RUNS_A_BLOCK = 20_000
@@ -62,7 +62,7 @@ class Audit:
             if set(self.withheld) < {*ORDER_KINDS, "spread", "batch", "lineage"}
         }
         self._refer(connection)
-        self._catch_up(connection, next_position)
+        self.caught_up = self._catch_up(connection, next_position)
 
     def advance(self, _connection: Connection, entered: Sequence[StoredRun]) -> list[Raised]:
         """Audit the runs that entered, in their order, and return the alarms."""
@@ -70,6 +70,10 @@ class Audit:
         for start in range(0, len(entered), N_RUNS_A_BLOCK):
             found += self._advance_block(entered[start : start + N_RUNS_A_BLOCK])
         return sorted(found, key=lambda raised: (raised.alarm.index, self.responses.index(raised.response)))
+
+    def n_scored(self) -> int:
+        """Return how many runs have been scored, of the response with the most."""
+        return max((auditor.n_scored for auditor in self.auditors.values()), default=0)
 
     def save(self, connection: Connection) -> None:
         """Save the state of every auditor with the runs that it covers."""
@@ -101,15 +105,14 @@ class Audit:
                     design=self._design(block),
                 )
 
-    def _catch_up(self, connection: Connection, next_position: int) -> None:
+    def _catch_up(self, connection: Connection, next_position: int) -> list[Raised]:
         placed = stored_runs(
             connection,
             runs.c.position >= self.epoch.from_position,
             runs.c.position < next_position,
             order=runs.c.position,
         )
-        for block in _blocks(placed):
-            self._advance_block(block)
+        return [raised for block in _blocks(placed) for raised in self._advance_block(block)]
 
     def _advance_block(self, block: Sequence[StoredRun]) -> list[Raised]:
         if not block:
@@ -163,7 +166,6 @@ class Audit:
 
     def _cells(self, block: Sequence[StoredRun]) -> list[str]:
         """Return the labels within which runs are ranked; a restarted or absorbed level has cells of its own."""
-        labels: dict[tuple[int, ...], str] = {}
         found = []
         for stored in block:
             run = stored.run
@@ -174,13 +176,17 @@ class Audit:
                 if (stored.position or 0) >= epoch.from_position and _matches(run, epoch.scope):
                     name += f" #{epoch.epoch}"
             found.append(name)
-        del labels
         return found
 
     def _design(self, block: Sequence[StoredRun]) -> NDArray[np.float64] | None:
         if self.plan.baseline.kind != "formula":
             return None
         return design_rows(self.plan, [stored.run.cell for stored in block])
+
+
+def replayed_alarms(plan: Plan, connection: Connection) -> list[Raised]:
+    """Return the alarms of the epoch in force, from its stored runs alone."""
+    return Audit(plan, connection, count_runs(connection).next_position).caught_up
 
 
 def withheld(plan: Plan, *, ordered: bool) -> tuple[str, ...]:
@@ -243,6 +249,3 @@ def _blocks(found: Iterable[StoredRun]) -> Iterator[list[StoredRun]]:
     iterator = iter(found)
     while block := list(islice(iterator, N_RUNS_A_BLOCK)):
         yield block
-
-
-__all__ = ["Audit", "Raised", "stored_checkpoint", "withheld"]

@@ -10,6 +10,7 @@ import numpy as np
 
 from auditd.errors import BadInput, NotTestable
 from auditd.pipeline.asking import Document
+from auditd.pipeline.circumstances import labelled_nuisance
 from auditd.plan import Plan, cells_matching
 from auditd.records import Level, cell_label, normal_level
 from auditd.series.load import response_names
@@ -145,11 +146,6 @@ def contrast_of(
         blocks=_blocks(series) if plan.seeds.role == "block" else None,
         confidence=confidence,
     )
-
-
-def labelled_nuisance(series: Series) -> dict[str, Any]:  # arrays of labels
-    """Return the nuisances that have more than one level, as arrays of labels."""
-    return {name: coded.labels() for name, coded in series.nuisance.items() if len(set(coded.codes.tolist())) > 1}
 
 
 def _blocks(series: Series) -> Any:  # an array of labels, or None

@@ -67,9 +67,7 @@ def _check_scope(plan: Plan, action: Action, scope: dict[str, str]) -> None:
         raise BadInput("--set-aside needs what is set aside: a level such as host=n3, or --from and --to")
 
 
-def apply_answers(
-    connection: Connection, plan: Plan, position: int, *, only_ask: bool = False
-) -> bool:
+def apply_answers(connection: Connection, plan: Plan, position: int, *, only_ask: bool = False) -> bool:
     """Put answers into force from a position on; return whether the audit has to be opened again."""
     new = [answer for answer in stored_answers(connection, answers.c.from_position.is_(None))]
     if only_ask or not new:
@@ -108,7 +106,9 @@ def amend(plan_path: Path, reason: str) -> list[str]:
     with campaign.engine.begin() as connection:
         versions = plan_versions(connection)
         if not versions:
-            raise PlanError("no run has been taken under a plan yet: change the plan freely, nothing is to be amended")
+            raise PlanError(
+                "no run has been taken under a plan yet: change the plan freely, nothing is to be amended"
+            )
         old = parse_plan(versions[-1].text, campaign.plan.path)
         changes = plan_difference(old, campaign.plan)
         if not changes:

@@ -63,6 +63,7 @@ class Session:
         self.campaign = campaign
         self.totals = Taken()
         self.landed_at = time.time()
+        self.last_run: str | None = None
         self.reopen()
 
     def reopen(self) -> None:
@@ -115,10 +116,31 @@ class Session:
             findings = self._hear(inserted.stored, new_refusals)
             self.totals.n_raised += self.raiser.raise_facts(connection, findings)
         self._next_arrival += len(inserted.stored)
-        self.landed_at = landed_us / 1e6 if inserted.stored else self.landed_at
+        if inserted.stored:
+            self.landed_at, self.last_run = landed_us / 1e6, inserted.stored[-1].run.id
         self.totals.n_runs += len(inserted.stored)
         self.totals.n_refused += len(new_refusals)
         self.totals.n_seen_before += inserted.n_seen_before
+
+    @property
+    def n_arrived(self) -> int:
+        """How many runs have landed."""
+        return self._next_arrival
+
+    @property
+    def n_placed(self) -> int:
+        """How many runs have their places."""
+        return self._next_position
+
+    def raise_outside(self, findings: list[Finding]) -> None:
+        """Raise findings that come from no run, such as silence."""
+        with self.campaign.engine.begin() as connection:
+            self.totals.n_raised += self.raiser.raise_facts(connection, findings)
+
+    def withdraw(self, kind: str, message: str) -> None:
+        """Withdraw the standing warnings of a kind, saying why."""
+        with self.campaign.engine.begin() as connection:
+            self.raiser.withdraw(connection, kind, message)
 
     def take_up_if_shared(self) -> int:
         """Take up what collectors have inserted, where the store is a server that they can reach."""

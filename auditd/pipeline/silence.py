@@ -15,25 +15,29 @@ class SilenceWatch:
     Parameters
     ----------
     plan : with or without a `[silence]` section.
-    now : POSIX seconds; silence is counted from here when no run has landed since.
     """
 
-    def __init__(self, plan: Plan, now: float) -> None:
+    def __init__(self, plan: Plan) -> None:
         self._after_s = None if plan.silence is None else duration_s(plan.silence.after, "silence.after")
-        self._began = now
-        self._since: float | None = None
+        self._n_told: int | None = None
+        self._n_heard = -1
 
     def look(self, session: Session, now: float) -> None:
-        """Compare the last landing with the clock."""
+        """Compare the last landing with the clock; `now` is POSIX seconds."""
         if self._after_s is None:
             return
-        last = max(session.landed_at, self._began)
-        silent = now - last > self._after_s
-        if silent == (self._since is not None):
-            return
-        since = last if silent else self._since
-        self._since = last if silent else None
-        if since is None:
-            return
-        at = datetime.fromtimestamp(since, UTC)
-        session.raise_outside([silence_finding(at, after_s=self._after_s, holds=silent)])
+        n = session.n_arrived
+        if n != self._n_heard:
+            if self._n_heard >= 0 or now - session.landed_at < self._after_s:
+                session.withdraw("silence", "runs land again")
+            self._n_heard = n
+        if now - session.landed_at > self._after_s and self._n_told != n:
+            self._n_told = n
+            finding = silence_finding(
+                last_landed=datetime.fromtimestamp(session.landed_at, UTC),
+                now=datetime.fromtimestamp(now, UTC),
+                after_s=self._after_s,
+                last_run=session.last_run,
+                n=n,
+            )
+            session.raise_outside([finding])

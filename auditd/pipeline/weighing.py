@@ -11,8 +11,9 @@ import numpy as np
 
 from auditd.errors import BadInput, NotTestable
 from auditd.pipeline.asking import Document
-from auditd.pipeline.auditing import ORDER_KINDS
-from auditd.pipeline.comparing import compare_document, labelled_nuisance, losses, planned_questions
+from auditd.pipeline.auditing import ORDER_KINDS, Audit
+from auditd.pipeline.circumstances import circumstances
+from auditd.pipeline.comparing import compare_document, losses, planned_questions
 from auditd.pipeline.session import Session
 from auditd.plan import Plan
 from auditd.checks.duplicates import duplicate_groups
@@ -72,7 +73,9 @@ def refresh(session: Session) -> None:
         "scored": session.audit.n_scored(),
         "withheld": withheld_sentences(session),
         "responses": {
-            name: _status_of(table, plan, name, found) for name, found in weighed.items() if found is not None
+            name: _status_of(table, plan, name, found, session.audit)
+            for name, found in weighed.items()
+            if found is not None
         },
         "strips": {name: strip(table, plan, name) for name in session.audit.responses},
         "comparisons": compared,
@@ -110,16 +113,6 @@ def weigh(table: RunTable, plan: Plan, response: str) -> Document | None:
     }
 
 
-def circumstances(table: RunTable, series: Series) -> dict[str, Any]:
-    """Return the keyword arguments that tell `effective_number` of a series' circumstances."""
-    return {
-        "cells": series.cells.labels(),
-        "nuisance": labelled_nuisance(series),
-        "duplicates": duplicate_groups(table)[series.row],
-        "parents": series.parents,
-    }
-
-
 def _by_cell(table: RunTable, series: Series, worth: float) -> list[Document]:
     """Return each cell's runs and their worth, at the response's rate; duplicates counted cell by cell."""
     groups = duplicate_groups(table)[series.row]
@@ -138,30 +131,37 @@ def _by_cell(table: RunTable, series: Series, worth: float) -> list[Document]:
     return found
 
 
-def _status_of(table: RunTable, plan: Plan, response: str, weighed: Mapping[str, Any]) -> Document:
-    losses_found = [one.loss for _, one in losses(table, plan, response) if one is not None and one.loss is not None]
+def _status_of(
+    table: RunTable, plan: Plan, response: str, weighed: Mapping[str, Any], audit: Audit
+) -> Document:
+    losses_found = [
+        one.loss for _, one in losses(table, plan, response) if one is not None and one.loss is not None
+    ]
     loss = max(losses_found, default=weighed["loss"])
     return {
         "n": weighed["n"],
         "n_effective": weighed["n_effective"],
         "evidence_loss": max(float(loss), 0.0),
-        "would_see": _would_see(table, plan, response),
+        "would_see": _would_see(table, plan, response, audit),
     }
 
 
-def _would_see(table: RunTable, plan: Plan, response: str) -> Document | None:
+def _would_see(table: RunTable, plan: Plan, response: str, audit: Audit) -> dict[str, float | None] | None:
     """Return the smallest effects that this design would have shown by now with probability 0.8."""
-    from auditd.schedule.would_see import would_see
+    from auditd.schedule import would_see
 
-    series = table.series(plan, response)
-    if len(series.values) == 0:
+    auditor = audit.auditors.get(response)
+    if auditor is None or auditor.n_scored == 0:
         return None
+    series = table.series(plan, response)
     return would_see(
-        len(series.values),
-        cells=series.cells.labels(),
-        nuisance=labelled_nuisance(series),
-        alarm_budget=plan.campaign.alarm_budget,
-        n_responses=len(plan.responses),
+        auditor.n_scored,
+        n_asked=auditor.n_asked,
+        level_counts={
+            name: np.bincount(coded.codes, minlength=len(coded.levels)).tolist()
+            for name, coded in series.nuisance.items()
+        },
+        alarm_budget=auditor.options.alarm_budget,
     )
 
 
@@ -188,7 +188,10 @@ def not_checked(session: Session, weighed: Mapping[str, Document | None]) -> lis
     found += [f"{name}: too few completed runs to weigh" for name, one in weighed.items() if one is None]
     for stated, words in (
         (plan.record.seed, "seeds: record.seed is not stated, so ignored and reused seeds cannot be seen"),
-        (plan.record.started, "time: record.started is not stated, so daily cycles and overlaps cannot be seen"),
+        (
+            plan.record.started,
+            "time: record.started is not stated, so daily cycles and overlaps cannot be seen",
+        ),
         (plan.record.parent, "lineage: record.parent is not stated, so inherited state cannot be seen"),
         (plan.nuisance or None, "batch effects: the plan names no nuisance such as host or build"),
     ):

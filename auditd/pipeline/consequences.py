@@ -1,0 +1,83 @@
+"""What a finding costs the comparisons: its evidence loss, and the grade that follows."""
+
+from __future__ import annotations
+
+from auditd.errors import BadInput, NotTestable
+from auditd.pipeline.circumstances import circumstances
+from auditd.pipeline.comparing import losses, planned_questions, touches
+from auditd.plan import Plan
+from auditd.records import Finding, Grade
+from auditd.series.table import RunTable
+from auditd.verdicts.cautions import Consequence
+from auditd.verdicts.grades import grade
+
+BY_LOSS = ("serial", "drift", "batch", "spread", "clock", "lineage")
+
+
+def consequence_of(finding: Finding, table: RunTable, plan: Plan) -> tuple[Consequence, float | None]:
+    """Return a finding's consequence and the lower bound of its evidence loss; None where there is none."""
+    if finding.kind not in BY_LOSS or finding.response is None:
+        return Consequence(), None
+    n_lost, by_cells = _of_cells(finding.response, table, plan)
+    compared = [one for _, one in losses(table, plan, finding.response) if one is not None and one.estimable]
+    stated = [(one.loss, one.loss_low) for one in compared if one.loss is not None]
+    if stated:
+        loss, low = max(stated, key=lambda pair: pair[0])
+        low = max((pair[1] or 0.0 for pair in stated), default=low)
+    elif by_cells is not None:
+        loss, low = by_cells
+    else:
+        return Consequence(n_cells=len(table.cells.levels)), None
+    along = table.nuisance.get(finding.along or "")
+    return (
+        Consequence(
+            loss=min(max(float(loss), 0.0), 1.0),
+            n_lost=n_lost,
+            n_cells=max(len(table.cells.levels), 1),
+            n_levels=1 if along is None else max(len(along.levels), 1),
+        ),
+        min(max(float(low or 0.0), 0.0), 1.0),
+    )
+
+
+def _of_cells(response: str, table: RunTable, plan: Plan) -> tuple[float | None, tuple[float, float] | None]:
+    """Return the effective runs lost, and the loss of the cells' means with its lower bound."""
+    from auditd.evidence import effective_number
+
+    series = table.series(plan, response)
+    try:
+        found = effective_number(series.values, **circumstances(table, series))
+    except (NotTestable, BadInput):
+        return None, None
+    return max(found.n - found.n_effective, 0.0), (found.loss, found.loss_low)
+
+
+def grade_of(finding: Finding, table: RunTable, plan: Plan, loss_low: float | None) -> Grade:
+    """Return a finding's grade, by what it does to the planned comparisons."""
+    planned = planned_questions(plan)
+    if finding.response is not None:
+        planned = [one for one in planned if one.response == finding.response]
+    touched = [one for one in planned if not finding.cells or touches(one, finding.cells, table)]
+    estimable = True
+    if finding.kind in {*BY_LOSS, "confound"}:
+        for response in {one.response for one in touched}:
+            found = [one for question, one in losses(table, plan, response) if question in touched]
+            estimable = estimable and all(one is None or one.estimable for one in found)
+    return grade(
+        finding,
+        loss_low=loss_low,
+        touches_planned=bool(touched),
+        estimable=estimable,
+        beyond_margin=_beyond_margin(finding, plan),
+    )
+
+
+def _beyond_margin(finding: Finding, plan: Plan) -> bool:
+    """Whether a shift is certain to be larger than the smallest difference that matters."""
+    response = plan.responses.get(finding.response or "")
+    effect = finding.effect
+    if response is None or response.margin is None or effect is None or finding.kind != "drift":
+        return False
+    if effect.low is None or effect.high is None:
+        return False
+    return effect.low > response.margin or effect.high < -response.margin
