@@ -15,9 +15,9 @@ N_RUNS_SLACK = 50
 """Runs by which an effect may seem to begin before its cause: the date of either is uncertain by so much
 at the smallest shifts that are found (the audit's own sets of dates are used where they are wider)."""
 
-Place = Literal["level", "order", "anywhere", "start"]
-"""Where an effect may show: along the cause's own nuisance and level; along the whole order; anywhere; or
-along the order from the run on at which the cause's level first ran."""
+Place = Literal["level", "order", "anywhere", "cells", "start"]
+"""Where an effect may show: along the cause's own nuisance and level; along the whole order; anywhere; in the
+cause's cells; or along the order from the run on at which the cause's level first ran."""
 Measured = Literal["response", "secondary", "completed", "anything"]
 """On what: the same response; it or an automatic one; `completed` alone; or anything, facts included."""
 
@@ -53,6 +53,8 @@ RULES: tuple[Rule, ...] = (
          "levels run one after the other fall on different days and builds"),
     Rule(("confound",), ("confound",), "level", "anything",
          "a factor that ran in one place only takes its cells along"),
+    Rule(("confound",), ("confound",), "cells", "anything",
+         "a level that ran on one host only met that host's builds and days only"),
     Rule(("order",), ("order",), "anywhere", "anything",
          "a nested list of runs, sorted once, orders all its factors"),
 )  # fmt: skip
@@ -149,6 +151,8 @@ def _same_place(place: Place, cause: Finding, effect: Finding, changes: Iterable
         return effect.along == "order"
     if place == "start":
         return effect.along == "order" and _starts_with(effect, cause, changes)
+    if place == "cells":
+        return bool(effect.cells) and set(effect.cells) <= set(cause.cells)
     return effect.along == cause.along and (effect.level in {None, cause.level} or cause.level is None)
 
 

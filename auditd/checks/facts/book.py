@@ -44,7 +44,9 @@ class FactBook:
 def _gathered(calls: tuple[Callable[[Run, int], Iterable[Finding]], ...], run: Run, n: int) -> list[Finding]:
     found: list[Finding] = []
     for call in calls:
-        found.extend(call(run, n))
+        answer = call(run, n)
+        if answer:
+            found.extend(answer)
     return found
 
 

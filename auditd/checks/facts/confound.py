@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator
+from collections.abc import Hashable, Iterable, Iterator
 from typing import ClassVar
 
 import msgspec
 
 from auditd.checks.facts.condition import counted
 from auditd.checks.facts.crossing import Crossing, Verdict
-from auditd.checks.facts.labels import CellIndex, LevelIndex
+from auditd.checks.facts.labels import CellIndex, LevelIndex, level_key
 from auditd.checks.facts.protocol import Quiet
 from auditd.plan import Plan
 from auditd.records import Finding, Kind, Run
@@ -18,6 +18,21 @@ FIRST_LOOK = 20
 """Runs placed before the first look at a table."""
 LOOK_FACTOR = 1.1
 """Each look comes when the runs have grown by this factor, so that looking stays cheap at a million runs."""
+
+
+Combination = tuple[tuple[Hashable, ...], tuple[Hashable, ...]]
+"""The levels of factors and of nuisances of a run."""
+
+
+class _Fresh:
+    """Runs of one combination of levels since the last look."""
+
+    __slots__ = ("cell", "n", "nuisance")
+
+    def __init__(self, run: Run) -> None:
+        self.n = 0
+        self.cell = run.cell
+        self.nuisance = run.nuisance
 
 
 class _Pair:
@@ -44,6 +59,7 @@ class ConfoundFact(Quiet):
         super().__init__(plan, alarm_budget=alarm_budget)
         self._n = 0
         self._next_look = FIRST_LOOK
+        self._fresh: dict[Combination, _Fresh] = {}
         self._cells = CellIndex() if len(plan.factors) > 1 else None
         self._factors = {name: LevelIndex() for name in plan.factors}
         self._nuisances = {name: LevelIndex() for name in plan.nuisance}
@@ -55,18 +71,31 @@ class ConfoundFact(Quiet):
         """Count the run, and look at the tables when it is time."""
         if not run.completed or not self._pairs:
             return ()
-        rows = [index.number(run.cell[name]) for name, index in self._factors.items()]
-        if self._cells is not None:
-            rows.append(self._cells.number(run.cell))
-        for (name, index), tables in zip(self._nuisances.items(), self._tables, strict=True):
-            column = index.number(run.nuisance.get(name))
-            for row, table in zip(rows, tables, strict=True):
-                table.count(row, column)
+        key: Combination = (tuple(run.cell.values()), tuple(run.nuisance.values()))
+        if bool in map(type, key[0]) or bool in map(type, key[1]):
+            key = (tuple(map(level_key, run.cell.values())), tuple(map(level_key, run.nuisance.values())))
+        entry = self._fresh.get(key)
+        if entry is None:
+            entry = self._fresh[key] = _Fresh(run)
+        entry.n += 1
         self._n += 1
         if self._n < self._next_look:
             return ()
         self._next_look = max(self._n + 1, int(self._n * LOOK_FACTOR))
+        self._count_fresh()
         return list(self._look(run, position))
+
+    def _count_fresh(self) -> None:
+        """Enter the runs since the last look into the tables, each combination of levels once."""
+        for fresh in self._fresh.values():
+            rows = [index.number(fresh.cell[name]) for name, index in self._factors.items()]
+            if self._cells is not None:
+                rows.append(self._cells.number(fresh.cell))
+            for (name, index), tables in zip(self._nuisances.items(), self._tables, strict=True):
+                column = index.number(fresh.nuisance.get(name))
+                for row, table in zip(rows, tables, strict=True):
+                    table.count(row, column, fresh.n)
+        self._fresh.clear()
 
     def _look(self, run: Run, position: int) -> Iterator[Finding]:
         """Yield what has begun or ended since the look before."""

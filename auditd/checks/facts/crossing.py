@@ -56,14 +56,14 @@ class Crossing:
         self.rows: dict[int, dict[int, int]] = {}
         self.columns: dict[int, int] = {}
 
-    def count(self, row: int, column: int) -> None:
-        """Add a run."""
+    def count(self, row: int, column: int, n: int = 1) -> None:
+        """Add runs."""
         counts = self.rows.get(row)
         if counts is None:
             counts = self.rows[row] = {}
-        counts[column] = counts.get(column, 0) + 1
-        self.columns[column] = self.columns.get(column, 0) + 1
-        self.n += 1
+        counts[column] = counts.get(column, 0) + n
+        self.columns[column] = self.columns.get(column, 0) + n
+        self.n += n
 
     def verdicts(self, stood: set[str], *, partial: bool = True) -> list[Verdict]:
         """Return what is to be said by now.
@@ -90,7 +90,7 @@ class Crossing:
         blocks.sort(key=lambda rows: (sum(sum(self.rows[row].values()) for row in rows), rows))
         smallest = blocks[0]  # the block that is told apart; all others ran elsewhere
         columns = sorted({column for row in smallest for column in self.rows[row]})
-        n_needed = 2 * (len(blocks) - 1)  # a run of each of two blocks in one column joins them
+        n_needed = len(blocks) - 1  # one run of a row in another block's column joins the two
         return [Verdict("apart", "apart", tuple(sorted(smallest)), tuple(columns), 1.0, n_needed=n_needed)]
 
     def _blocks(self) -> list[list[int]]:

@@ -31,12 +31,13 @@ class _Earlier(NamedTuple):
 class _CellRepeats:
     """A cell's runs: how many, how many repeat, and since which of them."""
 
-    __slots__ = ("condition", "n", "n_first", "n_repeats")
+    __slots__ = ("condition", "first", "n", "n_first", "n_repeats")
 
     def __init__(self) -> None:
         self.n = 0
         self.n_repeats = 0
         self.n_first = 0  # runs of the cell, up to the first one that was repeated
+        self.first = ""  # the first run that repeated
         self.condition: Condition | None = None
 
 
@@ -117,18 +118,24 @@ class RepeatFact(Quiet):
         if earlier.cell == cell and seed and earlier.seed == seed:
             return ()
         n = max(self._n, self._horizon)
-        if n * (n - 1) / 2 * self._resolution.chance(values) >= MAX_CHANCE:
-            return ()
-        return self._repeated(run, arrival, cell, earlier)
+        is_chance = n * (n - 1) / 2 * self._resolution.chance(values) >= MAX_CHANCE
+        if earlier.cell == cell and (tally.n_repeats or earlier.n_in_cell == tally.n - 1):
+            return self._repeated_in_cell(run, cell, earlier, is_chance=is_chance)
+        return () if is_chance else self._repeated_apart(run, arrival, cell, earlier)
 
-    def _repeated(self, run: Run, arrival: int, cell: int, earlier: _Earlier) -> list[Finding]:
+    def _repeated_in_cell(self, run: Run, cell: int, earlier: _Earlier, *, is_chance: bool) -> list[Finding]:
+        """Count a repeat within a cell; one that cannot be judged yet is told with those that can."""
         tally = self._by_cell[cell]
-        if earlier.cell == cell and (tally.condition is not None or earlier.n_in_cell == tally.n - 1):
-            tally.n_repeats += 1
-            if tally.condition is None:
-                tally.condition = Condition(f"repeat:cell:{self._cells.labels[cell]}", run.id)
-                tally.n_first = earlier.n_in_cell
-            return [self._cell_finding(cell, tally)] if tally.condition.seen() else []
+        if not tally.n_repeats:
+            tally.n_first, tally.first = earlier.n_in_cell, run.id
+        tally.n_repeats += 1
+        if tally.condition is None and is_chance:
+            return []
+        if tally.condition is None:
+            tally.condition = Condition(f"repeat:cell:{self._cells.labels[cell]}", run.id)
+        return [self._cell_finding(cell, tally)] if tally.condition.seen() else []
+
+    def _repeated_apart(self, run: Run, arrival: int, cell: int, earlier: _Earlier) -> list[Finding]:
         seeds_agree = run.seed is not None and earlier.seed == hash(run.seed)
         cause = "factor" if seeds_agree and earlier.cell != cell else "answer"
         key = f"repeat:{cause}:{self._episodes.number(arrival)}"
@@ -151,13 +158,13 @@ class RepeatFact(Quiet):
             message = (
                 f"{tally.n_repeats + 1} of the last {counted(n_since + 1, 'run')} of cell {label} are "
                 "equal to the last "
-                f"digit {self._seeds}, since {condition.run}: an ignored seed in one configuration"
+                f"digit {self._seeds}, since {tally.first}: an ignored seed in one configuration"
             )
         else:
             message = (
                 f"{counted(tally.n_repeats, 'run')} of cell {label} gave an earlier result again to "
                 "the last digit "
-                f"{self._seeds}, first {condition.run}: a cache that answers twice"
+                f"{self._seeds}, first {tally.first}: a cache that answers twice"
             )
         return Finding(
             key=condition.key,

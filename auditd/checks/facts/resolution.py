@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from fractions import Fraction
 
 import numpy as np
 
@@ -12,12 +13,17 @@ say nothing (the project's own bar)."""
 N_DIFFERENCES_KEPT = 512
 """Differences between runs of one cell from which scale, grid and correlation are estimated."""
 N_DIFFERENCES_NEEDED = 8
-"""Differences before which nothing is estimated and the digits alone decide."""
-N_DIGITS_ENOUGH = 15
-"""Significant digits of one response that exclude a chance equality where no scale can be estimated:
-10 ** -15 times the pairs of ten thousand runs is below `MAX_CHANCE`."""
+"""Differences before which no scale is estimated, and no equality judged ..."""
+N_EQUAL_ENOUGH = 10
+"""... unless so many runs were equal with nothing differing beside them: then the digits alone decide."""
+N_DIGITS_ENOUGH = 12
+"""Significant digits of one response from which they do; no fraction of small numbers ..."""
+MAX_DENOMINATOR = 5000
+"""... such as 5/7 or 1020/1319, whose digits never end, is that."""
 N_VALUES_KEPT = 2048
 """Values of each response that later ones are compared with, for how often single values come back."""
+N_BETWEEN_LESSONS = 16
+"""Once so many values are kept, one run in sixteen is learnt from: the others would teach the same."""
 TWO_ROOT_PI = 2 * math.sqrt(math.pi)
 """A normal law of scale s on a grid of step d gives two equal values with probability d / (2 √π s)."""
 MEDIAN_OF_DIFFERENCE = 0.6745 * math.sqrt(2)
@@ -45,11 +51,14 @@ class Resolution:
         self._n_back = [0] * n_responses
         self._n_compared = [0] * n_responses
         self._n = 0
+        self._n_unjudged = 0
         self._estimated: tuple[int, tuple[tuple[float, float], ...]] = (0, ())
 
     def take(self, cell: int, values: tuple[float, ...]) -> None:
         """Learn from one run's results; repeats of earlier results teach nothing and are not given."""
         self._n += 1
+        if self._n > N_VALUES_KEPT and self._n % N_BETWEEN_LESSONS:
+            return
         for number, (value, kept) in enumerate(zip(values, self._kept, strict=True)):
             self._n_compared[number] += len(kept)
             if value in kept:
@@ -58,7 +67,7 @@ class Resolution:
                 kept.add(value)
         before = self._latest.get(cell)
         self._latest[cell] = values
-        if before is not None and (self._n_differences < N_DIFFERENCES_KEPT or self._n % 8 == 0):
+        if before is not None:
             row = self._n_differences % N_DIFFERENCES_KEPT
             self._differences[row] = [a - b for a, b in zip(values, before, strict=True)]
             self._n_differences += 1
@@ -67,7 +76,8 @@ class Resolution:
         """Return the probability, at most 1, that another run gives these very values by chance."""
         estimates = self._estimates()
         if not estimates:
-            return 0.0 if max(map(_significant_digits, values)) >= N_DIGITS_ENOUGH else 1.0
+            self._n_unjudged += 1
+            return 0.0 if self._n_unjudged >= N_EQUAL_ENOUGH and any(map(_is_fine, values)) else 1.0
         chance = 1.0
         for number, (value, (scale, grid)) in enumerate(zip(values, estimates, strict=True)):
             by_grid = max(_step(value), grid) / (TWO_ROOT_PI * scale) if scale > 0 else 1.0
@@ -132,6 +142,9 @@ def _step(value: float) -> float:
     return max(10.0 ** (int(exponent or 0) - decimals), math.ulp(value))
 
 
-def _significant_digits(value: float) -> int:
-    mantissa = repr(value).partition("e")[0].lstrip("-").replace(".", "")
-    return len(mantissa.strip("0"))
+def _is_fine(value: float) -> bool:
+    """Whether a value has many digits and is no fraction of small numbers."""
+    digits = repr(value).partition("e")[0].lstrip("-").replace(".", "").strip("0")
+    if len(digits) < N_DIGITS_ENOUGH:
+        return False
+    return not math.isclose(float(Fraction(value).limit_denominator(MAX_DENOMINATOR)), value, rel_tol=1e-13)

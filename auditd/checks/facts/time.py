@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from bisect import bisect_left, bisect_right
-from collections.abc import Iterable, Iterator
+from collections.abc import Hashable, Iterable, Iterator
 from datetime import datetime
 from typing import ClassVar
 
 from auditd.checks.facts.condition import Condition, counted
+from auditd.checks.facts.labels import level_key
 from auditd.checks.facts.protocol import Quiet
 from auditd.plan import Plan
 from auditd.records import Finding, Kind, Level, Run, level_label
@@ -71,7 +72,7 @@ class TimeFact(Quiet):
         self._exclusive = tuple(plan.machines.exclusive)
         self._slots = plan.machines.slots
         self._by_sequence = _by_sequence(plan) and self._slots == 1
-        self._machines: dict[tuple[str, str], _Machine] = {}
+        self._machines: dict[tuple[str, Hashable], tuple[_Machine, str]] = {}
         self._conditions: dict[str, tuple[Condition, str, str | None, str | None]] = {}
 
     def arrived(self, run: Run, _arrival: int) -> list[Finding]:
@@ -126,11 +127,11 @@ class TimeFact(Quiet):
         return found
 
     def _machine(self, along: str, level: Level) -> tuple[_Machine, str]:
-        label = level_label(level)
-        machine = self._machines.get((along, label))
-        if machine is None:
-            machine = self._machines[along, label] = _Machine()
-        return machine, label
+        key = (along, level_key(level))
+        known = self._machines.get(key)
+        if known is None:
+            known = self._machines[key] = (_Machine(), level_label(level))
+        return known
 
     def _seen(self, key: str, run: Run, first: str, along: str | None, level: str | None) -> list[Finding]:
         entry = self._conditions.get(key)
