@@ -19,6 +19,10 @@ RUNS_PER_DRIFT_LOSS = 400.0
 """Runs for each further unit that `drift` loses: its bets remember some 330 runs (a coefficient of .997), so
 that they cannot use the whole of a long straight line."""
 
+SERIAL_BETS = (0.105, 0.21, 0.3, 0.42, 0.6, 0.85)
+"""Correlations of neighbours that the serial family bets on: coefficient × share of its grid (φ of .3, .6,
+.85 and s of .35, .7, 1). Ones weaker than half of the smallest gain nothing, however long the campaign."""
+
 LARGEST_AR, LARGEST_ICC, LARGEST_DRIFT = 0.95, 0.95, 10.0
 """Beyond these the answer is None: the design would have shown no such dependence for sure."""
 N_BISECTIONS = 60
@@ -55,14 +59,14 @@ def would_see(
 
     Notes
     -----
-    An approximation, within about 15 % of what simulation gives for 240 to 1,600 runs; below some 100 runs,
+    An approximation, within about 15 % of what simulation gives for 240 to 6,000 runs; below some 100 runs,
     and for few levels of very unequal counts, it is cruder. The log e-value against a known alternative of
     noncentrality h is N(h²/2, h²); it must reach log(K / budget) and what the mixtures lose. A drift of size
-    δ has h² = n δ² / 12, an AR(1) with coefficient φ has h² = −n log(1 − φ²). For L levels of m runs the log
-    Bayes factor of the level effects is (Q − (L−1)(1 + log(Q / (L−1)))) / 2, with Q distributed as (1 + m θ)
-    times chi-squared on L − 1 degrees of freedom and θ the ratio of the variances between and within levels.
-    Assumes one dependence at a time, present from the first run on. A later one, or one whose cells are small,
-    is seen later than this says.
+    δ has h² = n δ² / 12. A bet on the correlation b of neighbours gains N(n (b φ − b²/2), n b²) from an AR(1)
+    with coefficient φ. For L levels of m runs the log Bayes factor of the level effects is
+    (Q − (L−1)(1 + log(Q / (L−1)))) / 2, with Q distributed as (1 + m θ) times chi-squared on L − 1 degrees of
+    freedom and θ the ratio of the variances between and within levels.
+    Assumes one dependence at a time, present from the first run on. A later one is seen later than this says.
 
     References
     ----------
@@ -78,7 +82,7 @@ def would_see(
     return {
         "drift": _below(LARGEST_DRIFT, _smallest_drift(n_scored, _noncentrality(needed + drift_loss, z))),
         "icc": _below(LARGEST_ICC, min(seen, default=math.inf)),
-        "ar": _below(LARGEST_AR, _smallest_ar(n_scored, _noncentrality(needed + LOSS_SERIAL, z))),
+        "ar": _below(LARGEST_AR, _smallest_ar(n_scored, needed + LOSS_SERIAL, z)),
     }
 
 
@@ -91,8 +95,11 @@ def _smallest_drift(n: int, h: float) -> float:
     return h * math.sqrt(12 / n) if n > 0 else math.inf
 
 
-def _smallest_ar(n: int, h: float) -> float:
-    return math.sqrt(-math.expm1(-h * h / n)) if n > 0 else math.inf
+def _smallest_ar(n: int, log_e: float, z: float) -> float:
+    """Return the coefficient at which the best of the bets reaches `log_e`."""
+    if n < 1:
+        return math.inf
+    return min(bet / 2 + z / math.sqrt(n) + log_e / (n * bet) for bet in SERIAL_BETS)
 
 
 def _smallest_icc(counts: Sequence[int], log_e: float, probability: float) -> float:

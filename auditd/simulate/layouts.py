@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 
 import numpy as np
@@ -66,7 +67,7 @@ def sweep_layout(
     _check_labels(cells, hosts, replicates)
     k, h = len(cells), len(hosts)
     number = np.arange(k * h * replicates)
-    ran_on = np.asarray(hosts)[(number + number // (k * h) * (k % h == 0)) % h]
+    ran_on = np.asarray(hosts)[(number + number // math.lcm(k, h)) % h]  # else a host would meet few cells
     return _evenly_timed(np.asarray(cells)[number % k], ran_on, h, run_s)
 
 

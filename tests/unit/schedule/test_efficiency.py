@@ -24,8 +24,8 @@ def test_balanced_design_of_ten_treatments_in_fifteen_blocks():
 
 
 def test_partially_balanced_design_of_cochran_and_cox():
-    """Published: design of Cochran & Cox (1957), Experimental Designs, 2nd ed., p. 379; harmonic mean 0.8823529
-    in the tests of the R package dae, tests/testthat/testCanon.r."""
+    """Published: design of Cochran & Cox (1957), Experimental Designs, 2nd ed., p. 379; its harmonic mean is
+    0.8823529 in the tests of the R package dae, tests/testthat/testCanon.r."""
     blocks = numbered("1 4 2 5, 2 5 3 6, 3 6 1 4, 4 1 5 2, 5 2 6 3, 6 3 4 1")
     assert efficiency_factor(blocks, 6) == pytest.approx(0.8823529, abs=1e-7)
 

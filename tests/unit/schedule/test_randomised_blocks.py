@@ -68,7 +68,7 @@ def test_hosts_run_side_by_side(schedule):
 
 
 def test_orders_are_uniform_over_permutations():
-    """With three cells each of the 6 orders of a block has probability 1/6; chi-squared at 1e-4 on 5 df is 25.7."""
+    """Each of the 6 orders of three cells has probability 1/6; chi-squared(5) exceeds 25.7 once in 10,000."""
     made = randomised_blocks({"a": [1, 2, 3]}, (), 3000, seed=5)
     orders = collections.Counter(
         tuple(run.cell["a"] for run in made.runs[i : i + 3]) for i in range(0, len(made.runs), 3)
