@@ -1,4 +1,4 @@
-"""The sequential audit names the sample's planted faults first, whatever its key; the clean twin is silent."""
+"""The sequential audit names the planted faults first, whatever its key, and the clean twin raises nothing."""
 
 import numpy as np
 import pytest
