@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from functools import lru_cache
 
 import numpy as np
 
@@ -75,7 +76,7 @@ def _one_sided(k: float, h: float, shift: float, head_start: float) -> tuple[flo
     """Run lengths from zero and from the head start; infinite when beyond what can be resolved."""
     from scipy.special import ndtr
 
-    nodes, weights = np.polynomial.legendre.leggauss(NODES_BASE + math.ceil(NODES_PER_SIGMA * h))
+    nodes, weights = gauss_legendre(NODES_BASE + math.ceil(NODES_PER_SIGMA * h))
     y, w = 0.5 * h * (nodes + 1.0), 0.5 * h * weights
     starts = np.concatenate(([0.0], y))
     kernel = np.empty((starts.size, starts.size))
@@ -87,6 +88,14 @@ def _one_sided(k: float, h: float, shift: float, head_start: float) -> tuple[flo
         return zero, zero
     to_nodes = float(np.sum(w * normal_density(y - head_start + k - shift) * lengths[1:]))
     return zero, 1.0 + zero * float(ndtr(k - shift - head_start)) + to_nodes
+
+
+@lru_cache(maxsize=16)
+def gauss_legendre(n: int) -> tuple[Floats, Floats]:
+    """Nodes and weights on (−1, 1), kept because their cost is that of the linear system itself."""
+    nodes, weights = np.polynomial.legendre.leggauss(n)
+    nodes.flags.writeable = weights.flags.writeable = False
+    return nodes, weights
 
 
 def solve_run_lengths(kernel: Floats) -> Floats:

@@ -8,7 +8,7 @@ import numpy as np
 
 from auditd.errors import BadInput
 from auditd.stats._validate import number
-from auditd.stats.cusum_arl import LONGEST, normal_density, solve_run_lengths
+from auditd.stats.cusum_arl import LONGEST, gauss_legendre, normal_density, solve_run_lengths
 
 # Gauss-Legendre nodes: so many for each width of the kernel that fits between the limits, beside a base.
 NODES_PER_WIDTH = 10
@@ -54,7 +54,7 @@ def ewma_arl(lam: float, limit: float, shift: float) -> float:
     n_nodes = NODES_BASE + math.ceil(NODES_PER_WIDTH * 2.0 * half / lam)
     if n_nodes > N_NODES_MAX:
         raise BadInput(f"lam = {lam:g} with limit = {limit:g} needs {n_nodes} nodes; at most {N_NODES_MAX}")
-    nodes, weights = np.polynomial.legendre.leggauss(n_nodes)
+    nodes, weights = gauss_legendre(n_nodes)
     y, w = half * nodes, half * weights
     # The first row is the chart's start; no run comes back to exactly there, so its column is zero.
     starts = np.concatenate(([0.0], y))

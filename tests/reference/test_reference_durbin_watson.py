@@ -84,7 +84,7 @@ def test_bounds_significance_of_nag():
     ],
 )  # fmt: skip
 def test_bounds_at_five_percent_as_every_textbook_prints_them(n, k, low, high):
-    """Published: Durbin & Watson (1951), Table 4; Savin & White (1977), two decimals (15, 5: d_U corrected)."""
+    """Durbin & Watson (1951), Table 4; Savin & White (1977), two decimals (15, 5: d_U corrected)."""
     got = durbin_watson_bounds(n, k, 0.05)
     assert got == pytest.approx((low, high), abs=0.0051)
 

@@ -61,7 +61,7 @@ def test_runs_of_a_straight_line():
 
 
 def test_runs_equal_statsmodels():
-    """Cross-check: statsmodels runstest_1samp without correction, about median and mean, on data it carries."""
+    """Cross-check: statsmodels runstest_1samp without correction, about median and mean."""
     x = sm.datasets.nile.load_pandas().data.volume.to_numpy()
     for cutoff in ("median", "mean"):
         z, p = runstest_1samp(x, cutoff=cutoff, correction=False)
@@ -186,7 +186,7 @@ def test_tourists_of_gibbons_and_chakraborti(shared_folder):
 
 
 def test_exact_law_for_eight(shared_folder):
-    """Computed, no published figure: enumeration of the 8! orders, the lower 80 values of the statistic."""
+    """Computed, no published figure: enumeration of the 8! orders, lower 80 values."""
     table = read(shared_folder, "rvn_exact_n8.csv").set_index("NM").P_lower
     seen = {}
     rng = np.random.default_rng(2)
