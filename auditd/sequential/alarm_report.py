@@ -20,6 +20,7 @@ from auditd.sequential.history import History
 from auditd.sequential.levels import LevelCodes, group
 from auditd.sequential.questions import fresh_bets
 from auditd.sequential.scored_block import ScoredBlock
+from auditd.sequential.scored_series import ScoredSeries
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
@@ -34,12 +35,12 @@ def describe(
     log_e: Mapping[Key, float],
     log_mean: float,
     book: Book,
-    history: History,
-    levels: Mapping[str, LevelCodes],
+    series: ScoredSeries,
     n_scored: int,
     standing: Sequence[Alarm],
 ) -> Alarm:
     """Make the alarm of a crossing."""
+    history, levels = series.history, series.levels
     named = {key: _level(key, crossing.at, book, history, levels, n_scored) for key in log_e}
     level = named[crossing.key]
     since, low, high = _dates(crossing.key, level, history, levels, n_scored)
@@ -128,8 +129,10 @@ def _block(z: FloatArray, window: IntArray, history: History, kind: str, along: 
         groups[along] = group(code, np.zeros(int(code.max()) + 1, dtype=np.int64))
     return ScoredBlock(
         z=z,
+        reliability=history.reliability[history.index[window]],
         count=np.arange(1, z.size + 1),
         times=history.times[window],
         parent_z=history.parent_z[window],
+        parent_reliability=history.parent_reliability[window],
         groups=groups,
     )

@@ -28,7 +28,6 @@ class AuditDump(msgspec.Struct, kw_only=True):
     n_runs: int
     n_scored: int
     levels: dict[str, list[str]]
-    n_in_level: dict[str, list[int]]
     latest: list[float]
     alarms: list[Alarm]
     parts: dict[str, State]

@@ -13,12 +13,10 @@ from auditd.sequential.alarm import Alarm, Crossing, Key, crossings
 from auditd.sequential.alarm_report import describe
 from auditd.sequential.audit_dump import AuditDump, dump_bytes, dump_from
 from auditd.sequential.book import Book
-from auditd.sequential.history import History
-from auditd.sequential.levels import LevelCodes, group
 from auditd.sequential.options import Options
 from auditd.sequential.run_block import RunBlock, run_block
-from auditd.sequential.scored_block import ScoredBlock
-from auditd.sequential.scorer import Scorer
+from auditd.sequential.scored_series import ScoredSeries
+from auditd.sequential.scorer import Scorer, Scores
 from auditd.sequential.wealth import log_sum
 
 FloatArray = npt.NDArray[np.float64]
@@ -78,11 +76,7 @@ class Auditor:
         self.options = options
         self._book = Book(options)
         self._scorer = Scorer(options)
-        self._history = History(options.nuisances)
-        self._levels = {name: LevelCodes() for name in options.nuisances}
-        self._n_in_level = {name: np.zeros(0, dtype=np.int64) for name in options.nuisances}
-        self._n_runs = 0
-        self._n_scored = 0
+        self._series = ScoredSeries(options)
         self._latest = np.zeros(len(self.keys))
         self._alarms: list[Alarm] = []
 
@@ -99,12 +93,12 @@ class Auditor:
     @property
     def n_runs(self) -> int:
         """Runs taken, also those not scored."""
-        return self._n_runs
+        return self._series.n_runs
 
     @property
     def n_scored(self) -> int:
         """Runs scored."""
-        return self._n_scored
+        return self._series.n_scored
 
     @property
     def alarms(self) -> tuple[Alarm, ...]:
@@ -152,19 +146,18 @@ class Auditor:
                 design=design,
             )
         )
-        first = self._n_runs
+        first = self._series.n_runs
         scores = self._scorer.score(block)
-        self._history.add_scores(scores)
         parts, alarms = [], []
-        for begin in range(0, scores.size, N_RUNS_AT_ONCE):
-            part = slice(begin, min(begin + N_RUNS_AT_ONCE, scores.size))
-            log_e, raised = self._advance_part(block, scores[part], part)
+        for begin in range(0, scores.z.size, N_RUNS_AT_ONCE):
+            part = slice(begin, min(begin + N_RUNS_AT_ONCE, scores.z.size))
+            log_e, raised = self._advance_part(block, scores, part)
             parts.append(log_e)
             alarms += raised
         paths = np.concatenate(parts, axis=1) if parts else np.empty((len(self.keys), 0))
         return Advanced(
             first=first,
-            scores=scores,
+            scores=scores.z,
             log_e=dict(zip(self.keys, paths, strict=True)),
             log_mean=self._log_mean(paths),
             alarms=tuple(alarms),
@@ -197,10 +190,9 @@ class Auditor:
         return dump_bytes(
             AuditDump(
                 options=self.options,
-                n_runs=self._n_runs,
-                n_scored=self._n_scored,
-                levels={name: list(codes) for name, codes in self._levels.items()},
-                n_in_level={name: count.tolist() for name, count in self._n_in_level.items()},
+                n_runs=self._series.n_runs,
+                n_scored=self._series.n_scored,
+                levels={name: list(codes) for name, codes in self._series.levels.items()},
                 latest=self._latest.tolist(),
                 alarms=self._alarms,
                 parts=self._book.state(),
@@ -228,7 +220,7 @@ class Auditor:
             raise BadInput(f"the state covers {dump.n_runs} runs, got {n_given}")
         if runs is not None and n_given:
             auditor._rebuild(runs)
-        if auditor._n_scored != dump.n_scored or [*auditor._levels_seen()] != [*dump.levels.items()]:
+        if auditor.n_scored != dump.n_scored or [*auditor._levels_seen()] != [*dump.levels.items()]:
             raise BadInput("these runs are not the ones that the state covers: scored runs or levels differ")
         auditor._latest = np.array(dump.latest)
         auditor._alarms = list(dump.alarms)
@@ -236,7 +228,7 @@ class Auditor:
         return auditor
 
     def _levels_seen(self) -> Iterator[tuple[str, list[str]]]:
-        return ((name, list(codes)) for name, codes in self._levels.items())
+        return ((name, list(codes)) for name, codes in self._series.levels.items())
 
     def _rebuild(self, runs: EarlierRuns) -> None:
         """Rebuild reference, scores and labels from stored runs, without betting."""
@@ -251,11 +243,7 @@ class Auditor:
                 design=runs.design,
             )
         )
-        scores = self._scorer.score(block)
-        self._history.add_scores(scores)
-        at = np.flatnonzero(np.isfinite(scores))
-        self._scored_block(block, scores[at], at, at)
-        self._n_runs, self._n_scored = scores.size, at.size
+        self._series.take(block, self._scorer.score(block), slice(0, block.values.size))
 
     def _checked(self, block: RunBlock) -> RunBlock:
         options = self.options
@@ -277,17 +265,13 @@ class Auditor:
         self, block: RunBlock, scores: FloatArray, part: slice
     ) -> tuple[FloatArray, list[Alarm]]:
         """Bet on one part of a block and raise its alarms."""
-        at = np.flatnonzero(np.isfinite(scores))
-        index = self._n_runs + at
-        self._n_runs += scores.size
-        paths = np.repeat(self._latest[:, None], scores.size, axis=1)
+        at, scored = self._series.take(block, scores, part)
+        paths = np.repeat(self._latest[:, None], part.stop - part.start, axis=1)
         if at.size == 0:
             return paths, []
-        scored = self._scored_block(block, scores[at], at + part.start, index)
         scored_paths = self._book.advance(scored)
-        self._n_scored += at.size
         # A run that is not scored repeats what stood before it.
-        latest = np.searchsorted(at, np.arange(scores.size), side="right") - 1
+        latest = np.searchsorted(at, np.arange(paths.shape[1]), side="right") - 1
         paths[:, latest >= 0] = scored_paths[:, latest[latest >= 0]]
         self._latest = scored_paths[:, -1].copy()
         found = crossings(
@@ -299,39 +283,14 @@ class Auditor:
         )
         return paths, [self._raise(crossing, scored_paths) for crossing in found]
 
-    def _scored_block(self, block: RunBlock, z: FloatArray, at: IntArray, index: IntArray) -> ScoredBlock:
-        groups, codes = {}, {}
-        for name in self.options.nuisances:
-            labels = block.nuisance[name]
-            code = self._levels[name].encode([labels[i] for i in at.tolist()])
-            earlier = np.zeros(len(self._levels[name]), dtype=np.int64)
-            earlier[: self._n_in_level[name].size] = self._n_in_level[name]
-            groups[name], codes[name] = group(code, earlier), code
-            earlier[groups[name].level] += groups[name].n_runs
-            self._n_in_level[name] = earlier
-        times = np.full(at.size, np.nan) if block.times is None else block.times[at]
-        parent_z = self._parent_scores(block, at, index)
-        self._history.add_scored(index, times, parent_z, codes)
-        count = self._n_scored + 1 + np.arange(at.size)
-        return ScoredBlock(z=z, count=count, times=times, parent_z=parent_z, groups=groups)
-
-    def _parent_scores(self, block: RunBlock, at: IntArray, index: IntArray) -> FloatArray:
-        """Give the score of each run's parent if that came earlier, else NaN."""
-        if block.parents is None or not self.options.has_parents:
-            return np.full(at.size, np.nan)
-        parent = block.parents[at]
-        earlier = (parent >= 0) & (parent < index)
-        return np.where(earlier, self._history.z[np.where(earlier, parent, 0)], np.nan)
-
     def _raise(self, crossing: Crossing, paths: FloatArray) -> Alarm:
-        n_scored = self._n_scored - paths.shape[1] + crossing.at + 1
+        n_scored = self._series.n_scored - paths.shape[1] + crossing.at + 1
         alarm = describe(
             crossing,
             log_e=dict(zip(self.keys, paths[:, crossing.at].tolist(), strict=True)),
             log_mean=float(self._log_mean(paths[:, crossing.at : crossing.at + 1])[0]),
             book=self._book,
-            history=self._history,
-            levels=self._levels,
+            series=self._series,
             n_scored=n_scored,
             standing=self._alarms,
         )

@@ -32,8 +32,11 @@ class FormulaBaseline:
         self._moment = np.zeros(0)
         self._origin = np.nan
 
-    def residuals(self, values: FloatArray, design: FloatArray) -> FloatArray:
-        """Give the residuals of the next runs, NaN where a run cannot be predicted; the runs are then taken in.
+    def residuals(self, values: FloatArray, design: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """Give the residuals of the next runs and the share of each that is the run's own; the runs then join.
+
+        A run that cannot be predicted has NaN. The own share 1/(1 + leverage) is the squared correlation with
+        the error.
 
         Parameters
         ----------
@@ -42,7 +45,7 @@ class FormulaBaseline:
         """
         n, p = design.shape
         if n == 0:
-            return np.empty(0)
+            return np.empty(0), np.empty(0)
         if self._cross.shape[0] == 0:
             self._cross, self._moment = np.zeros((p, p)), np.zeros(p)
         if self._cross.shape[0] != p:
@@ -55,7 +58,9 @@ class FormulaBaseline:
         return self._predict(values, design, crosses[:-1], moments[:-1])
 
     @staticmethod
-    def _predict(values: FloatArray, design: FloatArray, cross: FloatArray, moment: FloatArray) -> FloatArray:
+    def _predict(
+        values: FloatArray, design: FloatArray, cross: FloatArray, moment: FloatArray
+    ) -> tuple[FloatArray, FloatArray]:
         """Predict each run from the rows before it, through the eigenvectors of the scaled cross-product."""
         scale = np.sqrt(np.einsum("npp->np", cross))
         scale = np.where(scale > 0, scale, 1.0)
@@ -68,5 +73,6 @@ class FormulaBaseline:
         length = np.einsum("nk,nk->n", row, row)
         predicted = np.einsum("nk,nk->n", row, projected)
         leverage = np.einsum("nk,nk->n", row * inverse, row)
-        residual: FloatArray = (values - predicted) / np.sqrt(1.0 + leverage)
-        return np.where(outside <= OUTSIDE_SPAN * length, residual, np.nan)
+        share = 1.0 / (1.0 + leverage)
+        residual = (values - predicted) * np.sqrt(share)
+        return np.where(outside <= OUTSIDE_SPAN * length, residual, np.nan), share

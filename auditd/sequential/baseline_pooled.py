@@ -26,12 +26,15 @@ class PooledBaseline:
         self._origin = np.zeros(0)
         self._sum = np.zeros(0)
 
-    def residuals(self, values: FloatArray, cells: IntArray) -> FloatArray:
-        """Give the residuals of the next runs, NaN for a cell's first; the runs then join their cells."""
+    def residuals(self, values: FloatArray, cells: IntArray) -> tuple[FloatArray, FloatArray]:
+        """Give the residuals of the next runs and the share of each that is the run's own; the runs then join.
+
+        A cell's first run has NaN and 0. The own share m/(m+1) is the squared correlation with the error.
+        """
         n_cells = int(cells.max(initial=-1)) + 1
         self._n, self._sum = grown(self._n, n_cells, 0.0), grown(self._sum, n_cells, 0.0)
         self._origin = grown(self._origin, n_cells, np.nan)
-        result = np.empty(values.size)
+        result, share = np.empty(values.size), np.empty(values.size)
         by_cell = np.argsort(cells, kind="stable")
         in_order = cells[by_cell]
         first = (
@@ -41,17 +44,18 @@ class PooledBaseline:
         )
         for at in np.split(by_cell, first[1:]):
             if at.size:
-                result[at] = self._one_cell(values[at], int(cells[at[0]]))
-        return result
+                result[at], share[at] = self._one_cell(values[at], int(cells[at[0]]))
+        return result, share
 
-    def _one_cell(self, values: FloatArray, cell: int) -> FloatArray:
+    def _one_cell(self, values: FloatArray, cell: int) -> tuple[FloatArray, FloatArray]:
         if self._n[cell] == 0:
             self._origin[cell] = values[0]
         deviation = values - self._origin[cell]  # near zero, so that sums lose no digits
         # Adding one after the other, as for single runs: any split into blocks gives the same bits.
         sums = np.cumsum(np.append(self._sum[cell], deviation))
         m = self._n[cell] + np.arange(values.size)
-        residual: FloatArray = (deviation - sums[:-1] / np.maximum(m, 1.0)) * np.sqrt(m / (m + 1.0))
+        share = m / (m + 1.0)
+        residual = (deviation - sums[:-1] / np.maximum(m, 1.0)) * np.sqrt(share)
         self._n[cell] += values.size
         self._sum[cell] = sums[-1]
-        return np.where(m > 0, residual, np.nan)
+        return np.where(m > 0, residual, np.nan), share

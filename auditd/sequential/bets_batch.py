@@ -6,7 +6,7 @@ import numpy as np
 import numpy.typing as npt
 
 from auditd.sequential.grids import BATCH_SHARE, BATCH_WINDOW
-from auditd.sequential.levels import grown
+from auditd.sequential.levels import Grouping, grown
 from auditd.sequential.recurrence import solve_recurrence
 from auditd.sequential.scored_block import ScoredBlock, State
 
@@ -30,31 +30,31 @@ class BatchEffects:
     def __init__(self, along: str) -> None:
         self.along = along
         self._share = np.array(BATCH_SHARE)[:, None]
-        self._sum = np.zeros(0)
+        self._precision = np.zeros((len(BATCH_SHARE), 0))
+        self._moment = self._precision
         self._slow = np.zeros(2)
 
     def log_bets(self, block: ScoredBlock) -> FloatArray:
-        """Give log L of every grid point, (grid, n)."""
-        groups = block.groups[self.along]
-        self._sum = grown(self._sum, groups.n_levels, 0.0)
-        fed = (block.z - self._slow_level(block.z))[groups.by_level]
-        total = np.cumsum(fed)
-        before_segment = np.repeat(total[groups.first] - fed[groups.first], groups.n_runs)
-        earlier = np.repeat(self._sum[groups.level], groups.n_runs) + (total - fed - before_segment)
-        log_l = np.empty((self._share.size, block.z.size))
-        log_l[:, groups.by_level] = self._log_l(
-            block.z[groups.by_level], earlier, groups.count.astype(np.float64)
-        )
-        ends = groups.first + groups.n_runs - 1
-        self._sum[groups.level] = (earlier + fed)[ends]
-        return log_l
+        """Give log L of every grid point, (grid, n).
 
-    def _log_l(self, z: FloatArray, earlier: FloatArray, count: FloatArray) -> FloatArray:
-        s = self._share
-        denominator = (1.0 - s) + count * s
-        mean = s * earlier / denominator
-        variance = (1.0 - s) * (1.0 + s / denominator)
-        log_l: FloatArray = 0.5 * z * z - 0.5 * np.log(variance) - (z - mean) ** 2 / (2.0 * variance)
+        A score of reliability ρ is √ρ·b plus a residual of variance 1 − ρ·s.
+        """
+        groups = block.groups[self.along]
+        self._precision = grown(self._precision, groups.n_levels, 0.0)
+        self._moment = grown(self._moment, groups.n_levels, 0.0)
+        fed = block.z - self._slow_level(block.z)
+        z, fed, rho = block.z[groups.by_level], fed[groups.by_level], block.reliability[groups.by_level]
+        root = np.sqrt(rho)
+        residual = 1.0 - rho * self._share
+        precision, self._precision = _earlier_sums(rho / residual, groups, self._precision)
+        moment, self._moment = _earlier_sums(root * fed / residual, groups, self._moment)
+        posterior = 1.0 / (precision + 1.0 / self._share)
+        variance = residual + rho * posterior
+        by_level = (
+            0.5 * z * z - 0.5 * np.log(variance) - (z - root * posterior * moment) ** 2 / (2.0 * variance)
+        )
+        log_l = np.empty_like(by_level)
+        log_l[:, groups.by_level] = by_level
         return log_l
 
     def _slow_level(self, z: FloatArray) -> FloatArray:
@@ -71,8 +71,20 @@ class BatchEffects:
 
     def state(self) -> State:
         """Give the state as named arrays."""
-        return {"sum": self._sum, "slow": self._slow}
+        return {"precision": self._precision, "moment": self._moment, "slow": self._slow}
 
     def restore(self, state: State) -> None:
         """Take a state given by `state`."""
-        self._sum, self._slow = state["sum"], state["slow"]
+        self._precision, self._moment = state["precision"], state["moment"]
+        self._slow = state["slow"]
+
+
+def _earlier_sums(terms: FloatArray, groups: Grouping, state: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Sum the earlier terms of each run's level, (grid, n) in the order of levels; give the new sums too."""
+    total = np.cumsum(terms, axis=1)
+    before = total[:, groups.first] - terms[:, groups.first]
+    earlier = total - terms + np.repeat(state[:, groups.level] - before, groups.n_runs, axis=1)
+    last = groups.first + groups.n_runs - 1
+    sums = state.copy()
+    sums[:, groups.level] = earlier[:, last] + terms[:, last]
+    return earlier, sums

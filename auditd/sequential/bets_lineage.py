@@ -24,8 +24,9 @@ class ParentCorrelation:
     def log_bets(self, block: ScoredBlock) -> FloatArray:
         """Give log L of every coefficient, (grid, n)."""
         known = np.isfinite(block.parent_z)
-        variance = 1.0 - self._phi**2
-        residual = block.z - self._phi * np.where(known, block.parent_z, 0.0)
+        phi = self._phi * np.sqrt(np.where(known, block.reliability * block.parent_reliability, 0.0))
+        variance = 1.0 - phi**2
+        residual = block.z - phi * np.where(known, block.parent_z, 0.0)
         log_l = 0.5 * block.z**2 - 0.5 * np.log(variance) - residual**2 / (2.0 * variance)
         return np.where(known, log_l, 0.0)
 

@@ -6,7 +6,7 @@ import numpy as np
 import numpy.typing as npt
 
 from auditd.sequential.grids import DRIFT_PHI_LEVEL, DRIFT_PHI_ORDER, DRIFT_SHARE, SERIAL_PHI, SERIAL_SHARE
-from auditd.sequential.latent_ar1 import Grid, gain_table, log_bets
+from auditd.sequential.latent_ar1 import Grid, SignalState, gain_table, log_bets
 from auditd.sequential.levels import grown
 from auditd.sequential.scored_block import ScoredBlock, State
 
@@ -33,21 +33,24 @@ class SignalAlongOrder:
         chosen = grids or ALONG_ORDER
         self._table = gain_table(tuple(chosen[kind] for kind in kinds))
         self.families = tuple((kind, len(chosen[kind][0]) * len(chosen[kind][1])) for kind in kinds)
-        self._mean = np.zeros((self._table.carry.shape[0], 1))
+        n_grid = self._table.carry.shape[0]
+        self._signal = SignalState(mean=np.zeros((n_grid, 1)), trust=np.ones((n_grid, 1)))
         self._first = np.zeros(1, dtype=np.int64)
 
     def log_bets(self, block: ScoredBlock) -> FloatArray:
         """Give log L of every grid point, (grid, n)."""
-        log_l, self._mean = log_bets(self._table, block.z, block.count - 1, self._first, self._mean)
+        log_l, self._signal = log_bets(
+            self._table, block.z, block.reliability, block.count - 1, self._first, self._signal
+        )
         return log_l
 
     def state(self) -> State:
         """Give the state as named arrays."""
-        return {"mean": self._mean}
+        return {"mean": self._signal.mean, "trust": self._signal.trust}
 
     def restore(self, state: State) -> None:
         """Take a state given by `state`."""
-        self._mean = state["mean"]
+        self._signal = SignalState(mean=state["mean"], trust=state["trust"])
 
 
 class SignalWithinLevels:
@@ -62,23 +65,30 @@ class SignalWithinLevels:
             (kind, len(WITHIN_LEVELS[kind][0]) * len(WITHIN_LEVELS[kind][1])) for kind in kinds
         )
         self._mean = np.zeros((self._table.carry.shape[0], 0))
+        self._trust = self._mean
 
     def log_bets(self, block: ScoredBlock) -> FloatArray:
         """Give log L of every grid point in the order of the runs, (grid, n)."""
         groups = block.groups[self.along]
         self._mean = grown(self._mean, groups.n_levels, 0.0)
-        by_level, mean = log_bets(
-            self._table, block.z[groups.by_level], groups.count, groups.first, self._mean[:, groups.level]
+        self._trust = grown(self._trust, groups.n_levels, 1.0)
+        by_level, signal = log_bets(
+            self._table,
+            block.z[groups.by_level],
+            block.reliability[groups.by_level],
+            groups.count,
+            groups.first,
+            SignalState(mean=self._mean[:, groups.level], trust=self._trust[:, groups.level]),
         )
-        self._mean[:, groups.level] = mean
+        self._mean[:, groups.level], self._trust[:, groups.level] = signal.mean, signal.trust
         log_l = np.empty_like(by_level)
         log_l[:, groups.by_level] = by_level
         return log_l
 
     def state(self) -> State:
         """Give the state as named arrays."""
-        return {"mean": self._mean}
+        return {"mean": self._mean, "trust": self._trust}
 
     def restore(self, state: State) -> None:
         """Take a state given by `state`."""
-        self._mean = state["mean"]
+        self._mean, self._trust = state["mean"], state["trust"]

@@ -23,7 +23,8 @@ class SpreadChange:
 
     def log_bets(self, block: ScoredBlock) -> FloatArray:
         """Give log L of every scale, (grid, n)."""
-        log_l: FloatArray = 0.5 * block.z**2 * (1.0 - self._scale**-2.0) - np.log(self._scale)
+        variance = 1.0 + block.reliability * (self._scale**2 - 1.0)
+        log_l: FloatArray = 0.5 * block.z**2 * (1.0 - 1.0 / variance) - 0.5 * np.log(variance)
         return log_l
 
     def state(self) -> State:

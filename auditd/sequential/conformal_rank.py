@@ -12,7 +12,6 @@ from auditd.sequential.earlier_counts import count_earlier
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
-BoolArray = npt.NDArray[np.bool_]
 
 N_PENDING_MAX: Final = 512
 """Values kept unsorted beside a cell's sorted ones, so that one run costs no copy of the whole cell."""
@@ -82,8 +81,8 @@ class ConformalRanks:
     def __init__(self) -> None:
         self._cells: list[CellReference] = []
 
-    def rank(self, values: FloatArray, cells: IntArray, uniform: FloatArray) -> tuple[FloatArray, BoolArray]:
-        """Give p and whether the run had a reference; the runs then join the reference.
+    def rank(self, values: FloatArray, cells: IntArray, uniform: FloatArray) -> tuple[FloatArray, IntArray]:
+        """Give p and the count of earlier runs that it ranks among; the runs then join the reference.
 
         Parameters
         ----------
@@ -92,7 +91,7 @@ class ConformalRanks:
         uniform : (n,) randomisers in (0, 1).
         """
         if values.size == 0:
-            return np.empty(0), np.empty(0, dtype=bool)
+            return np.empty(0), np.empty(0, dtype=np.int64)
         self._cells.extend(CellReference() for _ in range(int(cells.max()) + 1 - len(self._cells)))
         smaller, equal, earlier = self._within_block(values, cells)
         by_cell = np.argsort(cells, kind="stable")
@@ -106,7 +105,7 @@ class ConformalRanks:
             earlier[at] = n_stored + np.arange(at.size)
             reference.add(values[at])
         p = (smaller + uniform * (1 + equal)) / (earlier + 1)
-        return p, earlier > 0
+        return p, earlier
 
     @staticmethod
     def _within_block(values: FloatArray, cells: IntArray) -> tuple[IntArray, IntArray, IntArray]:

@@ -5,6 +5,8 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
+from auditd.sequential.scored_block import ScoredBlock
+
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
@@ -47,22 +49,24 @@ class History:
         self._z = Column(np.float64)
         self._index = Column(np.int64)
         self._times = Column(np.float64)
+        self._reliability = Column(np.float64)
         self._parent_z = Column(np.float64)
+        self._parent_reliability = Column(np.float64)
         self._codes = {name: Column(np.int32) for name in nuisances}
 
-    def add_scores(self, z: FloatArray) -> None:
+    def add_scores(self, z: FloatArray, reliability: FloatArray) -> None:
         """Append the scores of all runs of a block."""
         self._z.extend(z)
+        self._reliability.extend(reliability)
 
-    def add_scored(
-        self, index: IntArray, times: FloatArray, parent_z: FloatArray, codes: dict[str, IntArray]
-    ) -> None:
+    def add_scored(self, index: IntArray, scored: ScoredBlock) -> None:
         """Append what is known of a block's scored runs."""
         self._index.extend(index)
-        self._times.extend(times)
-        self._parent_z.extend(parent_z)
+        self._times.extend(scored.times)
+        self._parent_z.extend(scored.parent_z)
+        self._parent_reliability.extend(scored.parent_reliability)
         for name, column in self._codes.items():
-            column.extend(codes[name])
+            column.extend(scored.groups[name].code)
 
     @property
     def z(self) -> FloatArray:
@@ -75,6 +79,11 @@ class History:
         return self._index.values  # type: ignore[return-value]
 
     @property
+    def reliability(self) -> FloatArray:
+        """Reliability of the scores of all runs, 0 where not scored."""
+        return self._reliability.values  # type: ignore[return-value]
+
+    @property
     def times(self) -> FloatArray:
         """Times of the scored runs, NaN where unknown."""
         return self._times.values  # type: ignore[return-value]
@@ -83,6 +92,11 @@ class History:
     def parent_z(self) -> FloatArray:
         """Parents' scores of the scored runs, NaN where there is none."""
         return self._parent_z.values  # type: ignore[return-value]
+
+    @property
+    def parent_reliability(self) -> FloatArray:
+        """Reliability of the parents' scores."""
+        return self._parent_reliability.values  # type: ignore[return-value]
 
     def codes(self, nuisance: str) -> IntArray:
         """Level codes of the scored runs."""

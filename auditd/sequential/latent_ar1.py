@@ -19,14 +19,17 @@ N_STEPS_TO_STEADY = 1024
 """Runs after which a gain no longer moves in float64, for every grid of this package; held by a test."""
 
 
+TRUST_ROUNDED = 1e-13
+"""Trust nearer to 1 than this is 1: below what a log e-value can show."""
+
+
 @dataclass(frozen=True, kw_only=True)
 class GainTable:
     """Filter quantities by the count of earlier runs; (grid points, N_STEPS_TO_STEADY)."""
 
     carry: FloatArray
     gain: FloatArray
-    half_log_variance: FloatArray
-    half_precision: FloatArray
+    variance: FloatArray
 
 
 @lru_cache(maxsize=16)
@@ -55,44 +58,82 @@ def gain_table(grids: tuple[Grid, ...]) -> GainTable:
         gain[:, step] = p * share_of_innovation
         carry[:, step] = p * (1.0 - share_of_innovation)
         state_variance = p * p * (1.0 - share_of_innovation) * state_variance + (1.0 - p * p) * s
-    return GainTable(
-        carry=carry, gain=gain, half_log_variance=0.5 * np.log(variance), half_precision=0.5 / variance
-    )
+    return GainTable(carry=carry, gain=gain, variance=variance)
+
+
+@dataclass(frozen=True, kw_only=True)
+class SignalState:
+    """What is known of k signals before their next run; (grid points, k) each.
+
+    Attributes
+    ----------
+    mean : predicted means.
+    trust : exponential mean of the reliability of the scores that the prediction rests on.
+    """
+
+    mean: FloatArray
+    trust: FloatArray
 
 
 def log_bets(
-    table: GainTable, z: FloatArray, count: IntArray, first: IntArray, state: FloatArray
-) -> tuple[FloatArray, FloatArray]:
+    table: GainTable,
+    z: FloatArray,
+    reliability: FloatArray,
+    count: IntArray,
+    first: IntArray,
+    state: SignalState,
+) -> tuple[FloatArray, SignalState]:
     """Give log L = log f(z_t | past) − log φ(z_t) for segments that each continue their own signal.
+
+    A score of reliability ρ (its squared correlation with the score that an endless reference would give)
+    shows √ρ of the signal, and feeds √ρ of itself; what a prediction explains shrinks by ρ and by the trust in
+    the scores it rests on. This is an approximation to the filter with varying gains, and it is predictable,
+    which is all that validity needs.
 
     Parameters
     ----------
     table : filter quantities of G grid points.
     z : (n,) scores, segment after segment.
+    reliability : (n,) in (0, 1].
     count : (n,) earlier runs of the segment's signal, from the beginning of the epoch.
     first : (k,) positions at which the segments begin.
-    state : (G, k) predicted means at those positions.
+    state : of the k signals.
 
     Returns
     -------
     log_l : (G, n)
-    state : (G, k), predicted means for the next run of each segment.
+    state : of the k signals before their next runs.
     """
-    steady = bool(count.min() >= N_STEPS_TO_STEADY - 1)
     at: IntArray | slice = slice(N_STEPS_TO_STEADY - 1, None)
-    if not steady:
+    if count.min() < N_STEPS_TO_STEADY - 1:
         at = np.minimum(count, N_STEPS_TO_STEADY - 1)
     carry = np.broadcast_to(table.carry[:, at], (table.carry.shape[0], z.size))
-    fed = table.gain[:, at] * z
+    root = np.sqrt(reliability)
+    mean, next_mean = _predict(carry, table.gain[:, at] * (root * z), first, state.mean)
+    explained = 1.0 - table.variance[:, at]
+    if reliability.min() < 1.0 or (state.trust < 1.0).any():
+        trust, next_trust = _predict(carry, (1.0 - carry) * reliability, first, state.trust)
+        next_trust[next_trust > 1.0 - TRUST_ROUNDED] = 1.0
+        explained = explained * trust * reliability
+        mean *= root
+    else:
+        next_trust = state.trust
+    variance = 1.0 - explained
+    mean -= z
+    mean *= mean
+    mean /= -2.0 * variance
+    mean += 0.5 * z * z
+    mean -= 0.5 * np.log(variance)
+    return mean, SignalState(mean=next_mean, trust=next_trust)
+
+
+def _predict(
+    carry: FloatArray, fed: FloatArray, first: IntArray, state: FloatArray
+) -> tuple[FloatArray, FloatArray]:
+    """Follow a_{t+1} = carry_t·a_t + fed_t in each segment, from its state; give all a and the next ones."""
     coefficient, term = np.empty_like(fed), np.empty_like(fed)
     coefficient[:, 1:], term[:, 1:] = carry[:, :-1], fed[:, :-1]
     coefficient[:, first], term[:, first] = 0.0, state
-    mean = solve_recurrence(coefficient, term)
-    last = np.append(first[1:], z.size) - 1
-    next_state = carry[:, last] * mean[:, last] + fed[:, last]
-    log_l = z - mean
-    log_l *= log_l
-    log_l *= -table.half_precision[:, at]
-    log_l += 0.5 * z * z
-    log_l -= table.half_log_variance[:, at]
-    return log_l, next_state
+    followed = solve_recurrence(coefficient, term)
+    last = np.append(first[1:], fed.shape[1]) - 1
+    return followed, carry[:, last] * followed[:, last] + fed[:, last]

@@ -53,7 +53,9 @@ def group(code: IntArray, n_earlier: IntArray) -> Grouping:
     """Group a block's runs; n_earlier[level] is the count of scored runs of each level before the block."""
     by_level = np.argsort(code, kind="stable")
     in_order = code[by_level]
-    first = np.flatnonzero(np.append(True, in_order[1:] != in_order[:-1]))
+    new = np.ones(code.size, dtype=bool)
+    np.not_equal(in_order[1:], in_order[:-1], out=new[1:])
+    first = np.flatnonzero(new)
     n_runs = np.diff(np.append(first, code.size))
     level = in_order[first]
     count = np.arange(code.size) - np.repeat(first - n_earlier[level], n_runs)

@@ -23,16 +23,21 @@ class ScoredBlock:
     Attributes
     ----------
     z : (n,) scores.
+    reliability : (n,) squared correlation of each score with the one that an endless reference would give;
+        known from the reference's size alone.
     count : (n,) 1-based number of each run among the scored runs of the epoch.
     times : (n,) POSIX seconds, NaN where unknown.
     parent_z : (n,) score of the parent run, NaN where there is none.
+    parent_reliability : (n,) reliability of that score, 0 where there is none.
     groups : grouping by each nuisance.
     """
 
     z: FloatArray
+    reliability: FloatArray
     count: IntArray
     times: FloatArray
     parent_z: FloatArray
+    parent_reliability: FloatArray
     groups: Mapping[str, Grouping]
 
 
