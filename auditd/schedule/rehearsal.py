@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
@@ -18,8 +19,10 @@ from auditd.schedule.runs_needed import RunsNeeded, runs_to_decide, runs_to_dete
 from auditd.schedule.scenarios import DEFAULT_SCENARIOS, EXCHANGEABLE, Scenario
 from auditd.simulate import Layout, Simulated, blocked_layout, simulate
 
-AUTO_SHARE = 0.1
-"""Share of the alarm budget that `duration` and `completed` have together (the design of the audit)."""
+AUTO_SHARE, FACT_SHARE = 0.1, 0.1
+"""Shares of the alarm budget: of `duration` and `completed` together, and of the facts that count."""
+FIRST_EPOCH = 6 / math.pi**2
+"""Share of the budget that the first epoch may spend; a repair or an amendment begins the next."""
 DAYS = 14.0
 """Length of a rehearsed campaign, since a plan does not say how long a run takes; matters to `cycle` only."""
 DAY_S = 86400.0
@@ -188,7 +191,7 @@ def _stage_of(plan: Plan) -> tuple[_Stage, tuple[str, ...]]:
         host_name="host" if "host" in plan.nuisance or not plan.nuisance else next(iter(plan.nuisance)),
         baseline="cells" if plan.baseline.kind == "cells" else "pooled",
         n_responses=len(plan.responses),
-        alarm_budget=plan.campaign.alarm_budget * (1 - AUTO_SHARE if has_auto else 1),
+        alarm_budget=plan.campaign.alarm_budget * FIRST_EPOCH * (1 - FACT_SHARE - AUTO_SHARE * has_auto),
         confidence=plan.campaign.confidence,
         sides=sides,
     )
