@@ -6,8 +6,10 @@ from typing import Protocol
 
 from auditd.checks.facts.cap import CapFact
 from auditd.checks.facts.confound import ConfoundFact
+from auditd.checks.facts.failure import FailureFact
 from auditd.checks.facts.gap import GapFact
 from auditd.checks.facts.lineage import LineageFact
+from auditd.checks.facts.order import OrderFact
 from auditd.checks.facts.protocol import Fact
 from auditd.checks.facts.repeat import RepeatFact
 from auditd.checks.facts.rewrite import RewriteFact
@@ -29,6 +31,8 @@ FACTS: tuple[FactMaker, ...] = (
     RepeatFact,
     LineageFact,
     ConfoundFact,
+    OrderFact,
+    FailureFact,
     TimeFact,
     GapFact,
     RewriteFact,
