@@ -20,6 +20,7 @@ from auditd.evidence.result import Contrast
 from auditd.evidence.solution import solve
 
 MIN_SIDE_RUNS = 2
+NO_MEMORY = 0.5  # prior probability that differences of seed blocks do not depend on each other
 MIN_RESIDUAL_DF = 3  # runs beyond the fitted columns
 
 
@@ -163,4 +164,5 @@ def _paired_problem(runs: Runs, pairs: Pairs) -> Problem:
         side=np.full(n, 0.5),
         crossings=(),
         n_cells_spent=1,
+        at_zero=NO_MEMORY,
     )

@@ -118,7 +118,7 @@ def weigh(model: Model) -> tuple[Posterior, dict[int, float], int | None]:
     def fit(phi: Floats, share: Floats) -> Fits:
         return evaluate(moments, c, phi, model.ridge(share, lead, others), model.n_fixed)
 
-    return explore(fit, with_share=lead is not None), others, lead
+    return explore(fit, with_share=lead is not None, at_zero=model.problem.at_zero), others, lead
 
 
 def errors_of(model: Model, coefficients: Floats, leverage: Floats, phi: float) -> tuple[Floats, Floats]:

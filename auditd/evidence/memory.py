@@ -3,19 +3,20 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from auditd.evidence.chains import Stretches, along_order, within
 from auditd.evidence.inputs import Codes, Floats, Ints
-from auditd.evidence.moments import gather
-from auditd.evidence.posterior import Posterior, explore
+from auditd.evidence.moments import Moments, gather
+from auditd.evidence.posterior import Posterior, explore, none_found
 from auditd.evidence.restricted import FIXED_RIDGE, Fits, evaluate
 from auditd.evidence.steps import MIN_CHAIN_RUNS, segments
 
 MIN_MEAN_CHAIN = 4.0  # runs a chain, on average, for dependence within a nuisance's levels to be asked
 MAX_COLUMNS = 80  # columns of the restricted likelihood; beyond, residuals are taken as they are
+MIN_LEVEL_RUNS = 8.0  # runs a level, on average, for time to be asked where runs of one level follow each other
 MAX_STEP_CHAINS = 200  # chains that are searched for steps, the longest first
 
 
@@ -100,22 +101,40 @@ def _measure(residual: Floats, segment: Ints, owner: Ints) -> tuple[Steps, Float
 
 
 def _fit(residual: Floats, level: Ints, steps: Steps, chains: Stretches) -> tuple[Posterior, int]:
-    """Restricted likelihood of φ with the level and segment means as fixed effects, where they are not too many."""
+    """Restricted likelihood of φ with the level and segment means as fixed effects; with too many, the moments are corrected for them instead."""
     segment, n_segments, n_levels = steps.segment, steps.n_segments, int(level.max()) + 1
-    if n_levels > MAX_COLUMNS:
-        level, n_levels = np.zeros_like(level), 1
-    _, first, code = np.unique(level * (n_segments + 1) + segment + 1, return_index=True, return_inverse=True)
+    n_fixed = n_levels + steps.df
+    same = level[chains.child] == level[chains.parent]
+    if len(level) < MIN_LEVEL_RUNS * n_levels and 2 * int(same.sum()) > len(same):
+        return none_found(), n_fixed
+    many = n_levels > MAX_COLUMNS
+    columns = 1 if many else n_levels
+    group = np.zeros_like(level) if many else level
+    _, first, code = np.unique(group * (n_segments + 1) + segment + 1, return_index=True, return_inverse=True)
     table = np.hstack((
-        (level[first][:, None] == np.arange(n_levels)).astype(float),
+        (group[first][:, None] == np.arange(columns)).astype(float),
         (segment[first][:, None] == np.arange(n_segments)).astype(float),
     ))
     moments = gather(residual, code, table, chains)
-    ridge = np.concatenate((np.zeros(n_levels), np.full(n_segments, FIXED_RIDGE * len(residual) / (n_segments + 1))))
+    if many:
+        moments = _corrected(moments, level, chains)
+    ridge = np.concatenate((np.zeros(columns), np.full(n_segments, FIXED_RIDGE * len(residual) / (n_segments + 1))))
     c = np.zeros(len(ridge))
     c[0] = 1.0
-    n_fixed = n_levels + steps.df
 
     def fit(phi: Floats, _share: Floats) -> Fits:
         return evaluate(moments, c, phi, np.broadcast_to(ridge, (len(phi), len(ridge))), n_fixed)
 
     return explore(fit, with_share=False), n_fixed
+
+
+def _corrected(moments: Moments, level: Ints, chains: Stretches) -> Moments:
+    """Take out what removing many means did to sums of squares and of lagged products: −σ²/n_level for each pair within a level."""
+    n, n_levels = moments.n, int(level.max()) + 1
+    runs = np.bincount(level)
+    raised = n / max(n - n_levels, 1)
+    variance = moments.square[0] * raised / n
+    same = level[chains.child] == level[chains.parent]
+    lost = float((1 / runs[level[chains.child[same]]]).sum())
+    y0, y1, y2 = moments.square
+    return replace(moments, square=(y0 * raised, y1 + 2 * variance * lost, y2 * raised))

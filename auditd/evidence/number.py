@@ -22,6 +22,7 @@ from auditd.evidence.tally import TAIL, Effect, Ledger, Lineage, concentration, 
 
 MIN_RESIDUAL_DF = 3
 MAX_CELLS = 60  # cells whose means are columns of the lineage's likelihood
+AFTER_LINEAGE = 0.0005  # tail in place of 0.025 once lineage explains the order: its innovations are estimated
 SUSPECT = 0.05  # p below which level means are taken off before time is asked
 
 
@@ -178,30 +179,32 @@ def _count(runs: Runs, n: int, remarks: list[str]) -> EffectiveNumber:
     bare = Ledger(
         count=runs.count, lineage=family, effects=(), memory=memory, pairs=pairs, stepped=stepped, segment_weight=weight
     )
-    cell_inflation = bare.persistence(np.array([phi]))[0]
-    judged = tuple(_judged(e, dependence_of(e, memory, cell_inflation, phi, runs.cell)) for e in level_effects)
+    tail = AFTER_LINEAGE if inherited else TAIL
+    sure = phi if _sign(memory.posterior, tail) else 0.0
+    cell_inflation = bare.persistence(np.array([sure]))[0]
+    judged = tuple(_judged(e, dependence_of(e, memory, cell_inflation, sure, runs.cell)) for e in level_effects)
     ledger = Ledger(
         count=runs.count, lineage=family, effects=judged, memory=memory, pairs=pairs, stepped=stepped, segment_weight=weight
     )
-    return _result(ledger, n, rho, tuple(remarks + more))
+    return _result(ledger, n, rho, tail, tuple(remarks + more))
 
 
 def _judged(level_effects: LevelEffects, dependence: float) -> Effect:
     return Effect(effects=level_effects, dependence=dependence, found=level_effects.pvalue(dependence) < TAIL)
 
 
-def _sign(posterior: Posterior) -> int:
+def _sign(posterior: Posterior, tail: float = TAIL) -> int:
     """1 or −1 where the interval of a coefficient excludes 0, else 0."""
-    if posterior.quantile(posterior.phi, TAIL) > 0:
+    if posterior.quantile(posterior.phi, tail) > 0:
         return 1
-    return -1 if posterior.quantile(posterior.phi, 1 - TAIL) < 0 else 0
+    return -1 if posterior.quantile(posterior.phi, 1 - tail) < 0 else 0
 
 
-def _result(ledger: Ledger, n: int, rho: float, remarks: tuple[str, ...]) -> EffectiveNumber:
+def _result(ledger: Ledger, n: int, rho: float, tail: float, remarks: tuple[str, ...]) -> EffectiveNumber:
     """Factors of the causes one after the other, and the interval of all together."""
     memory, one = ledger.memory, np.ones(1)
     posterior = memory.posterior
-    dependent = _sign(posterior) != 0
+    dependent = _sign(posterior, tail) != 0
     phi = posterior.phi if dependent else np.zeros(1)
     mass = posterior.weight if dependent else one
     left = units(ledger, np.array([rho]))

@@ -49,7 +49,7 @@ def inflation(phi: Floats, pairs: Floats, count: Floats, chain_runs: float) -> F
     n_lags = len(pairs)
     exact = autocorrelations(phi, n_lags) @ pairs
     tail_share = pairs[-max(n_lags // 4, 1) :].mean(0)
-    left = max(chain_runs - n_lags, 0.0)
+    left = float(max(round(chain_runs) - n_lags, 0))
     decay = phi**n_lags
     whole = decay * phi / (1 - phi)
     cut = decay * phi * (1 - phi**left) / np.maximum(left * (1 - phi) ** 2, 1e-300) if left > 0 else whole

@@ -1,21 +1,22 @@
 """Weights over the nuisance parameters, so that an interval pays for not knowing them.
 
 A plug-in coefficient makes intervals too short where few effective runs are left. Here the contrast is averaged over the restricted likelihood
-of φ (and of a random effect's share) times a prior. The priors were chosen for coverage, not for belief: φ has density ∝ (1 − φ)^(−4/5), uniform in
-t = ((1 − φ)/2)^(1/5); the share B = σ² / (σ² + m·σ²_level) of a random effect has density ∝ B^(−1/2), uniform in √B.
+of φ (and of a random effect's share) times a prior. The priors were chosen for coverage and width, not for belief: φ has density ∝ (1 − φ)^(−1/5), uniform in
+t = ((1 − φ)/2)^(4/5); the share B = σ² / (σ² + m·σ²_level) of a random effect has density ∝ B^(−1/2), uniform in √B. For block differences, half the prior
+mass is on φ = 0: a mean of few differences would else pay for correlations that nothing speaks for.
 """
 
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 
 import numpy as np
 
 from auditd.evidence.inputs import Floats
 from auditd.evidence.restricted import Fits
 
-PHI_POWER = 5  # see above; coverage at 60 runs and φ = 0.9 chose it
+PHI_POWER = 1.25  # see above: larger is wider at 60 runs and φ = 0.3, smaller covers less at 60 runs and φ = 0.9
 PHI_RANGE = (-0.98, 0.999)  # beyond, a stationary fit has no meaning
 N_NODES = 25  # grid points for φ alone
 N_NODES_PLANE = 13  # grid points an axis when a random effect is estimated too
@@ -60,12 +61,19 @@ class Posterior:
         return float(self.weight @ x)
 
 
-def explore(fit: Callable[[Floats, Floats], Fits], *, with_share: bool) -> Posterior:
+def none_found() -> Posterior:
+    """All weight on φ = 0: dependence in time was not asked."""
+    zero, one = np.zeros(1), np.ones(1)
+    fits = Fits(loglik=zero, estimate=zero, unit=one, sigma2=one, coefficients=zero[None], leverage=zero[None])
+    return Posterior(phi=zero, share=one, weight=one, fits=fits, best=0)
+
+
+def explore(fit: Callable[[Floats, Floats], Fits], *, with_share: bool, at_zero: float = 0.0) -> Posterior:
     """Lay a grid, narrow it to where the likelihood is, weigh it.
 
-    `fit` takes φ (G,) and B (G,).
+    `fit` takes φ (G,) and B (G,); `at_zero` is the prior probability of φ = 0 (only without a share).
     """
-    t_range = (coordinate_of(PHI_RANGE[1]), coordinate_of(PHI_RANGE[0]))
+    t_range = whole = (coordinate_of(PHI_RANGE[1]), coordinate_of(PHI_RANGE[0]))
     s_range = (0.03, 1.0)
     n_nodes = N_NODES_PLANE if with_share else N_NODES
     for _ in range(MAX_ZOOMS):
@@ -78,14 +86,24 @@ def explore(fit: Callable[[Floats, Floats], Fits], *, with_share: bool) -> Poste
         enough_s, s_range = _narrow(s, kept.any(0), s_range) if with_share else (True, s_range)
         if enough_t and enough_s:
             break
-    weight = np.exp(fits.loglik - fits.loglik.max())
+    phi, prior = phi_of(np.repeat(t, len(s))), np.ones(len(t) * len(s))
+    if at_zero > 0:
+        fits = joined(fits, fit(np.zeros(1), np.ones(1)))
+        step = (t[1] - t[0]) / (whole[1] - whole[0])
+        phi, prior = np.append(phi, 0.0), np.append(prior * step * (1 - at_zero), at_zero)
+    weight = np.exp(fits.loglik - fits.loglik.max()) * prior
     return Posterior(
-        phi=phi_of(np.repeat(t, len(s))),
-        share=share_of(np.tile(s, len(t))),
+        phi=phi,
+        share=share_of(np.resize(s, len(phi))),
         weight=weight / weight.sum(),
         fits=fits,
-        best=int(np.argmax(fits.loglik)),
+        best=int(np.argmax(weight)) if at_zero > 0 else int(np.argmax(fits.loglik)),
     )
+
+
+def joined(first: Fits, second: Fits) -> Fits:
+    """Fits of two grids, one after the other."""
+    return Fits(**{f.name: np.concatenate((getattr(first, f.name), getattr(second, f.name))) for f in fields(Fits)})
 
 
 def _narrow(nodes: Floats, kept: np.ndarray, limits: tuple[float, float]) -> tuple[bool, tuple[float, float]]:

@@ -20,6 +20,7 @@ class Problem:
 
     y : (n,) centred and scaled. cell : (n,) code. contrast : (n_cells,) weights. side : (n,) −½ for a, +½ for b, 0 for other cells.
     crossings : nuisances with columns. n_cells_spent : degrees of freedom that cells cost (more than n_cells after centring).
+    at_zero : prior probability of no autocorrelation.
     """
 
     y: Floats
@@ -28,6 +29,7 @@ class Problem:
     side: Floats
     crossings: tuple[Crossing, ...]
     n_cells_spent: int
+    at_zero: float = 0.0
 
 
 @dataclass(frozen=True, kw_only=True)

@@ -16,7 +16,6 @@ import numpy as np
 from auditd.evidence.chains import along_order
 from auditd.evidence.inputs import Floats, Ints
 from auditd.evidence.moments import gather
-from auditd.evidence.posterior import phi_of
 from auditd.evidence.restricted import evaluate
 
 MIN_SEGMENT_RUNS = 8  # runs on each side of a step
@@ -24,7 +23,7 @@ MAX_SEGMENTS = 12  # in one chain; more is not a step but a wander, left to the 
 RATIO = 25.0  # twice the log-likelihood ratio that a step needs; simulated: see tests/calibration/tables/evidence.md
 WHITE_RATIO = 12.0  # squared standardised deviation below which no step can reach RATIO even in white noise
 MIN_CHAIN_RUNS = 3 * MIN_SEGMENT_RUNS
-T_NODES = np.linspace(0.22, 0.99, 32)  # grid of φ from about 0.999 down to −0.9
+PHI_NODES = 1 - 2 * np.linspace(0.22, 0.99, 32) ** 5  # grid of φ from 0.999 down to −0.9, finest near 1
 
 
 def segments(x: Floats) -> Ints:
@@ -64,7 +63,7 @@ def likelihood_ratio(y: Floats, place: int) -> float:
     code = (np.arange(len(y)) >= place).astype(np.int64)
     two = gather(y, code, np.eye(2), along_order(len(y)))
     one = gather(y, code, np.ones((2, 1)), along_order(len(y)))
-    phi = phi_of(T_NODES)
+    phi = PHI_NODES
     best = []
     for moments in (two, one):
         k = moments.matrix[0].shape[0]
