@@ -90,7 +90,7 @@ def _level(
     """Name the level with the largest evidence of its own; for `batch`, with the largest standardised mean."""
     if key[1] not in levels:
         return None
-    evidence = book.level_log_e(key, at)
+    evidence = book.level_log_wealth(key, at)
     if evidence is None:
         code = history.codes(key[1])[:n_scored]
         total = np.bincount(code, weights=history.z[history.index[:n_scored]])

@@ -32,12 +32,8 @@ class Book:
         self.keys: tuple[Key, ...] = tuple(
             (kind, bet.along) for bet in self._bets for kind, _ in bet.families
         )
-        self._joint = StartMixture([size for bet in self._bets for _, size in bet.families])
-        self._alone = {
-            bet.along: LevelsAlone([size for _, size in bet.families])
-            for bet in self._bets
-            if bet.has_levels_alone
-        }
+        self._joint = StartMixture([family for bet in self._bets for family in bet.families])
+        self._alone = {bet.along: LevelsAlone(bet.families) for bet in self._bets if bet.has_levels_alone}
 
     def advance(self, block: ScoredBlock) -> FloatArray:
         """Take the next scored runs; give each family's log e-value after each, (families, n)."""
@@ -48,16 +44,16 @@ class Book:
             rows = slice(row, row + len(bet.families))
             row = rows.stop
             if bet.has_levels_alone:
-                alone = self._alone[bet.along].follow(bets_log_l, block.groups[bet.along])
+                alone = self._alone[bet.along].follow(bets_log_l, block.count, block.groups[bet.along])
                 log_e[rows] = np.logaddexp(log_e[rows] + LOG_EVERY, alone + LOG_ONE)
         return log_e
 
-    def level_log_e(self, key: Key, at: int) -> FloatArray | None:
-        """Give each level's own log e-value after run `at` of the block taken last, where levels stand alone."""
+    def level_log_wealth(self, key: Key, at: int) -> FloatArray | None:
+        """Give each level's own log wealth after run `at` of the block taken last, where levels stand alone."""
         for bet in self._bets:
             kinds = [kind for kind, _ in bet.families]
             if bet.has_levels_alone and bet.along == key[1] and key[0] in kinds:
-                return self._alone[bet.along].level_log_e(kinds.index(key[0]), at)
+                return self._alone[bet.along].level_log_wealth(kinds.index(key[0]), at)
         return None
 
     def state(self) -> dict[str, State]:

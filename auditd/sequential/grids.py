@@ -44,8 +44,16 @@ LINEAGE_PHI: Final = (-0.6, -0.3, 0.3, 0.6, 0.85)
 SINGLE_LEVEL_MASS: Final = 0.5
 """Share of a nuisance's mass on "one level alone"; the rest is on "every level has its own"."""
 
-FIRST_START_MASS: Final = 0.5
-"""Mass of the bet that starts at the first scored run; later starts share the rest."""
+FIRST_START_MASS: Final[dict[str, float]] = {
+    "serial": 0.5,
+    "drift": 0.25,
+    "spread": 0.25,
+    "batch": 0.8,
+    "clock": 0.8,
+    "lineage": 0.8,
+}
+"""Mass of the bet that starts at the first scored run; later starts share the rest. Levels, cycles and
+restarts have their effects from the beginning; drifts and spreads begin at some time."""
 
 START_NORM: Final = 1.3064
 """Not less than the sum over t >= 1 of 1 / ((t + 1) ln(t + 2)^2); held by a test."""

@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 import numpy.typing as npt
 
 from auditd.sequential.latest_sum import log_sum_of_latest
 from auditd.sequential.levels import Grouping, grown
-from auditd.sequential.start_weights import log_start_weight, log_unspent
-from auditd.sequential.wealth import LOG_FIRST_START, FamilyRows, grow_wealth
+from auditd.sequential.start_weights import log_start_weight, log_unstarted
+from auditd.sequential.wealth import FamilyRows, grow_wealth
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
@@ -22,54 +24,59 @@ def log_level_weight(level: IntArray) -> FloatArray:
 
 
 class LevelsAlone:
-    """A wealth for each level, its starts counted in its own runs.
+    """A wealth for each level of a nuisance.
 
-    The j-th level to appear has weight 1/(j(j+1)), since the number of levels is not known beforehand; what no
-    level has claimed stays unspent, so that the weights always sum to 1 and the sum is an e-process.
+    The first start's mass is shared among levels by 1/(j(j+1)) for the j-th to appear, since the number of
+    levels is not known beforehand. A later start belongs to the level of the run at which it happens, so that
+    a late change in one of many levels costs no more than one in one of few. Nothing is spent twice: what no
+    level has claimed and what has not started stay as they are, and the sum is an e-process.
     """
 
-    def __init__(self, sizes: list[int]) -> None:
-        self._rows = FamilyRows(sizes)
-        self.log_wealth = np.zeros((self._rows.n_rows, 0))
-        self.latest = np.zeros((len(sizes), 0))
-        self._past: tuple[IntArray, FloatArray, FloatArray] = (
-            np.zeros(0, dtype=np.int64),
-            np.zeros((len(sizes), 0)),
-            self.latest,
-        )
+    def __init__(self, families: Sequence[tuple[str, int]]) -> None:
+        self._rows = FamilyRows(families)
+        self._late = self._rows.by_row(self._rows.log_late)
+        self.log_wealth = np.zeros((int(self._rows.sizes.sum()), 0))
+        self.latest = np.zeros((len(families), 0))
+        self._past = (np.zeros(0, dtype=np.int64), self.latest, self.latest)
 
-    def follow(self, log_l: FloatArray, groups: Grouping) -> FloatArray:
-        """Give each family's log e-value after each run, (families, n)."""
-        self.log_wealth = grown(self.log_wealth, groups.n_levels, LOG_FIRST_START)
-        n_seen = np.maximum.accumulate(np.maximum(groups.code, self.latest.shape[1] - 1)) + 1
-        self.latest = grown(self.latest, groups.n_levels, -np.inf)
-        weighted = self._level_values(log_l, groups) + log_level_weight(groups.code)
-        self._past = (groups.code, weighted, self.latest.copy())
+    def follow(self, log_l: FloatArray, count: IntArray, groups: Grouping) -> FloatArray:
+        """Give each family's log e-value after each run, (families, n); count is 1-based over all levels."""
+        n_before = self.latest.shape[1]
+        self._join(np.arange(n_before, groups.n_levels))
+        value = self._level_values(log_l, log_start_weight(count), groups)
+        self._past = (groups.code, value, self.latest.copy())
         total = np.vstack(
             [
-                log_sum_of_latest(groups.code, value, latest)
-                for value, latest in zip(weighted, self.latest, strict=True)
+                log_sum_of_latest(groups.code, own, latest)
+                for own, latest in zip(value, self.latest, strict=True)
             ]
         )
-        return np.logaddexp(total, -np.log1p(n_seen))
+        n_seen = np.maximum.accumulate(np.maximum(groups.code, n_before - 1)) + 1
+        total = np.logaddexp(total, self._rows.log_first[:, None] - np.log1p(n_seen))
+        return np.logaddexp(total, self._rows.log_late + log_unstarted(count))
 
-    def _level_values(self, log_l: FloatArray, groups: Grouping) -> FloatArray:
-        """Give, for each run, its own level's log e-values after it, (families, n)."""
-        by_level = log_l[:, groups.by_level]
-        log_start, unspent = log_start_weight(groups.count + 1), log_unspent(groups.count + 1)
+    def _join(self, new: IntArray) -> None:
+        """Give new levels their share of the first start."""
+        n_levels = self.latest.shape[1] + new.size
+        first = self._rows.by_row(self._rows.log_first)[:, None] + log_level_weight(new)
+        self.log_wealth = np.concatenate((self.log_wealth, first), axis=1)
+        self.latest = grown(self.latest, n_levels, -np.inf)
+
+    def _level_values(self, log_l: FloatArray, log_start: FloatArray, groups: Grouping) -> FloatArray:
+        """Give, for each run, its own level's log wealth after it, (families, n)."""
+        by_level, log_start = log_l[:, groups.by_level], log_start[groups.by_level]
         value = np.empty((self._rows.sizes.size, groups.code.size))
         for first, n_runs, level in zip(groups.first, groups.n_runs, groups.level, strict=True):
             part = slice(first, first + n_runs)
-            path = grow_wealth(self.log_wealth[:, level], by_level[:, part], log_start[part])
+            path = grow_wealth(self.log_wealth[:, level], by_level[:, part], log_start[part], self._late)
             self.log_wealth[:, level] = path[:, -1]
-            value[:, groups.by_level[part]] = self._rows.log_e(path, unspent[part])
+            value[:, groups.by_level[part]] = self._rows.log_mean(path)
         return value
 
-    def level_log_e(self, family: int, at: int) -> FloatArray:
-        """Give each level's own log e-value after run `at` of the block taken last."""
-        code, weighted, before = self._past
+    def level_log_wealth(self, family: int, at: int) -> FloatArray:
+        """Give each level's log wealth after run `at` of the block taken last; −inf before its first run."""
+        code, value, before = self._past
         latest = before[family].copy()
         # Of repeated positions the last assignment stands.
-        latest[code[: at + 1]] = weighted[family, : at + 1]
-        evidence: FloatArray = latest - log_level_weight(np.arange(latest.size))
-        return evidence
+        latest[code[: at + 1]] = value[family, : at + 1]
+        return latest

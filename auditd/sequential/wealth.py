@@ -2,19 +2,21 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 import numpy.typing as npt
 
 from auditd.sequential.grids import FIRST_START_MASS
-from auditd.sequential.start_weights import log_start_weight, log_unspent
+from auditd.sequential.start_weights import log_start_weight, log_unstarted
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
-LOG_FIRST_START = float(np.log(FIRST_START_MASS))
 
-
-def grow_wealth(log_wealth: FloatArray, log_l: FloatArray, log_start: FloatArray) -> FloatArray:
+def grow_wealth(
+    log_wealth: FloatArray, log_l: FloatArray, log_start: FloatArray, log_late: FloatArray
+) -> FloatArray:
     """Follow S_t = (S_{t−1} + π_t)·L_t over a block.
 
     Under exchangeability each S plus the mass not yet started is a non-negative martingale of mean 1, since
@@ -26,19 +28,20 @@ def grow_wealth(log_wealth: FloatArray, log_l: FloatArray, log_start: FloatArray
     log_wealth : (G,) log S before the block.
     log_l : (G, n) log L.
     log_start : (n,) log π.
+    log_late : (G, 1) log of the mass that later starts share: what multiplies π.
 
     Returns
     -------
     path : (G, n) log S after each run.
     """
     if log_start.size == 1:
-        single: FloatArray = np.logaddexp(log_wealth, log_start)[:, None] + log_l
+        single: FloatArray = np.logaddexp(log_wealth[:, None], log_start + log_late) + log_l
         return single
     total = np.cumsum(log_l, axis=1)
     started = np.empty((log_l.shape[0], log_l.shape[1] + 1))
     started[:, 0] = log_wealth
-    started[:, 1] = log_start[0]
-    np.subtract(log_start[1:], total[:, :-1], out=started[:, 2:])
+    started[:, 1:] = log_start + log_late
+    started[:, 2:] -= total[:, :-1]
     path: FloatArray = np.logaddexp.accumulate(started, axis=1)[:, 1:]
     path += total
     return path
@@ -60,39 +63,48 @@ def log_mean(paths: FloatArray) -> FloatArray:
 
 
 class FamilyRows:
-    """Which rows of a stack of grids belong to which family.
+    """Which rows of a stack of grids belong to which family, and how each family's starts are mixed.
 
     Attributes
     ----------
     sizes : (families,) grid points of each.
+    log_first : (families,) log of the mass of the first start.
+    log_late : (families, 1) log of the mass of later starts.
     """
 
-    def __init__(self, sizes: list[int]) -> None:
-        self.sizes = np.array(sizes, dtype=np.int64)
-        self._first = np.cumsum(self.sizes) - self.sizes
+    def __init__(self, families: Sequence[tuple[str, int]]) -> None:
+        self.sizes = np.array([size for _, size in families], dtype=np.int64)
+        first = np.array([FIRST_START_MASS[kind] for kind, _ in families])
+        self.log_first = np.log(first)
+        self.log_late = np.log1p(-first)[:, None]
+        self._first_row = np.cumsum(self.sizes) - self.sizes
         self._log_size = np.log(self.sizes)[:, None]
 
-    @property
-    def n_rows(self) -> int:
-        """Rows of the stack."""
-        return int(self.sizes.sum())
+    def by_row(self, by_family: FloatArray) -> FloatArray:
+        """Repeat what belongs to each family for its rows."""
+        return np.repeat(by_family, self.sizes, axis=0)
 
-    def log_e(self, path: FloatArray, unspent: FloatArray) -> FloatArray:
-        """Give each family's log e-value, (families, n): the mean of its wealths plus the unspent mass."""
-        top = np.maximum.reduceat(path, self._first, axis=0)
-        sums = np.add.reduceat(np.exp(path - np.repeat(top, self.sizes, axis=0)), self._first, axis=0)
-        return np.logaddexp(np.log(sums) + top - self._log_size, unspent)
+    def log_mean(self, path: FloatArray) -> FloatArray:
+        """Give the log of each family's mean over its rows, (families, n)."""
+        top = np.maximum.reduceat(path, self._first_row, axis=0)
+        sums = np.add.reduceat(np.exp(path - self.by_row(top)), self._first_row, axis=0)
+        mean: FloatArray = np.log(sums) + top - self._log_size
+        return mean
 
 
 class StartMixture:
     """Wealths of all families' grids over the whole order."""
 
-    def __init__(self, sizes: list[int]) -> None:
-        self._rows = FamilyRows(sizes)
-        self.log_wealth = np.full(self._rows.n_rows, LOG_FIRST_START)
+    def __init__(self, families: Sequence[tuple[str, int]]) -> None:
+        self._rows = FamilyRows(families)
+        self._late = self._rows.by_row(self._rows.log_late)
+        self.log_wealth = self._rows.by_row(self._rows.log_first)
 
     def follow(self, log_l: FloatArray, count: IntArray) -> FloatArray:
-        """Give each family's log e-value after each run, (families, n); count is 1-based."""
-        path = grow_wealth(self.log_wealth, log_l, log_start_weight(count))
+        """Give each family's log e-value after each run, (families, n); count is 1-based.
+
+        It is the mean of the family's wealths plus the mass that has not started.
+        """
+        path = grow_wealth(self.log_wealth, log_l, log_start_weight(count), self._late)
         self.log_wealth = path[:, -1].copy()
-        return self._rows.log_e(path, log_unspent(count))
+        return np.logaddexp(self._rows.log_mean(path), self._rows.log_late + log_unstarted(count))
