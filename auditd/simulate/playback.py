@@ -31,7 +31,7 @@ class Part:
 
 @dataclass(frozen=True, kw_only=True)
 class Piece:
-    """What landed within one slice of 8 hours; `until` is the last finish in it, in POSIX seconds.
+    """What landed within one slice of 9 hours; `until` is the last finish in it, in POSIX seconds.
 
     All parts of a piece must land before the next piece: then no run lands later than the plan's patience.
     """
@@ -57,7 +57,7 @@ class _Chunk:
 
 
 def pieces(folder: Path) -> tuple[Piece, ...]:
-    """Split an edition's results into slices of 8 hours, in order of time.
+    """Split an edition's results into slices of 9 hours, in order of time.
 
     Parameters
     ----------

@@ -36,8 +36,9 @@ class SampleFault:
     """A planted fault as `planted.json` states it.
 
     `kinds` are the kinds of warning that name it rightly, `along`, `level` and `response` what such a warning
-    says where they are not None, `cells` those that it may name. `index` is the first run that it touches, in
-    order of start from 0, and `run` that run's id; `seen_from` is the first index at which it can be seen.
+    says where they are not None, `cells` those that it may name, `says` a text that its message has. `index`
+    is the first run that it touches, in order of start from 0, and `run` that run's id; `seen_from` is the
+    first index at which it can be seen.
     """
 
     name: str
@@ -46,6 +47,7 @@ class SampleFault:
     level: str | None
     response: str | None
     cells: tuple[str, ...]
+    says: str
     run: str
     index: int
     seen_from: int
@@ -121,6 +123,7 @@ def _fault(
     kinds: tuple[str, ...],
     what: str,
     *,
+    says: str,
     along: str | None = None,
     level: str | None = None,
     response: str | None = None,
@@ -134,6 +137,7 @@ def _fault(
         level=level,
         response=response,
         cells=cells,
+        says=says,
         run=sample_run_id(index),
         index=index,
         seen_from=index if seen_from is None else seen_from,
@@ -144,7 +148,15 @@ def _fault(
 def _confound(layout: Layout) -> SampleFault:
     index = int(np.argmax(layout.nuisance["host"] == LONE_HOST))
     what = f"mesh={LONE_LEVEL} ran only on {LONE_HOST}, and {LONE_HOST} ran nothing else"
-    return _fault(index, "lone configuration", ("confound",), what, along="host", level=LONE_HOST)
+    return _fault(
+        index,
+        "lone configuration",
+        ("confound",),
+        what,
+        says=f"mesh {LONE_LEVEL}",
+        along="host",
+        level=LONE_HOST,
+    )
 
 
 def _ignored_seed(layout: Layout, failed: NDArray[np.bool_]) -> SampleFault:
@@ -158,6 +170,7 @@ def _ignored_seed(layout: Layout, failed: NDArray[np.bool_]) -> SampleFault:
         "ignored seed",
         ("repeat", "seed"),
         what,
+        says=IGNORED_SEED_CELL,
         cells=(IGNORED_SEED_CELL,),
         seen_from=int(runs[1]),
     )
@@ -171,7 +184,14 @@ def _build_shift(layout: Layout) -> SampleFault:
         f"{BUILD_SHIFT:g} standard deviations of a run"
     )
     return _fault(
-        index, "build shift", ("batch", "drift"), what, along="build", level=BUILDS[1], response="offset"
+        index,
+        "build shift",
+        ("batch", "drift"),
+        what,
+        says=BUILDS[1],
+        along="build",
+        level=BUILDS[1],
+        response="offset",
     )
 
 
@@ -185,6 +205,7 @@ def _host_drift(layout: Layout) -> SampleFault:
         "drifting host",
         ("drift",),
         what,
+        says=DRIFT_HOST,
         along="host",
         level=DRIFT_HOST,
         response="peak_tension",
@@ -195,7 +216,7 @@ def _cache(layout: Layout, failed: NDArray[np.bool_]) -> SampleFault:
     echoes = [second for first, second in cached_pairs(layout) if not failed[first] and not failed[second]]
     what = f"a cache on {CACHE_HOST} gave {len(echoes)} results twice, to the last digit, under other seeds"
     cells = tuple(sorted(set(layout.cells[echoes].tolist())))
-    return _fault(echoes[0], "cache", ("repeat",), what, cells=cells)
+    return _fault(echoes[0], "cache", ("repeat",), what, says="cache", cells=cells)
 
 
 def _failure_spell(layout: Layout, failed: NDArray[np.bool_]) -> SampleFault:
@@ -207,4 +228,4 @@ def _failure_spell(layout: Layout, failed: NDArray[np.bool_]) -> SampleFault:
         f"{FAILURE_DAYS[1]:g} failed; elsewhere {n_all - n_inside} did"
     )
     kinds = ("failure", "serial", "drift", "spread")
-    return _fault(index, "failures", kinds, what, response="completed")
+    return _fault(index, "failures", kinds, what, says="failed", response="completed")

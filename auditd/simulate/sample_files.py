@@ -13,8 +13,8 @@ from auditd.simulate.sample_timetable import HOSTS
 
 ARRAY_HOST, TABLE_HOST = "plover", "teal"
 """One host writes a JSON array a slice, one a single CSV table; the others append lines of JSON."""
-SLICE_S = 8 * 3600.0
-"""The array's host closes a file every 8 hours, counted from the campaign's first start."""
+SLICE_S = 9 * 3600.0
+"""The array's host closes a file every 9 hours, counted from the campaign's first start."""
 
 Records = Sequence[Mapping[str, Any]]  # Any: JSON values
 

@@ -55,7 +55,7 @@ exclusive = ["host"]
 
 [order]
 by = "started"
-patience = "12h"                 # one host lands its runs in files of 8 hours
+patience = "12h"                 # one host lands its runs in files of 9 hours
 
 [schedule]
 replicates = 48
@@ -75,7 +75,7 @@ response = "offset"
 between = [{{mesh = "middle"}}, {{mesh = "fine"}}]
 """
 TITLES = {"faulty": "Kelp raft mooring study", "clean": "Kelp raft mooring study, clean twin"}
-SETTLE = "200ms"
+SETTLE = "100ms"
 """Short, since the demo lands weeks within a minute."""
 
 README = """\
@@ -91,11 +91,12 @@ measured.
   complete blocks, the build changes without effect, and {n_clean_failed} runs failed, here and there, as some
   always do.
 - `planted.json`: the faults for programs. `index` counts the runs from 0 in order of start, `run` is the id
-  of the first run touched, `seen_from` the first index at which the fault can be seen at all, `kinds` the
-  kinds of warning that name it rightly.
+  of the first run touched, `seen_from` the first index at which the fault can be seen at all; a
+  warning names the fault rightly if it is of one of `kinds`, agrees with `along`, `level` and `response` where
+  they are stated, and its message has the text `says`.
 
 Each edition has its `plan.toml` and its `results/`. Three hosts append lines of JSON (`gull`, `heron`,
-`ibis`), `plover` lands a JSON array every 8 hours, and `teal` appends to one CSV table. Runs stand in a file
+`ibis`), `plover` lands a JSON array every 9 hours, and `teal` appends to one CSV table. Runs stand in a file
 as they finished.
 
 ## What was planted
