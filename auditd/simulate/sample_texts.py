@@ -91,9 +91,9 @@ measured.
   complete blocks, the build changes without effect, and {n_clean_failed} runs failed, here and there, as some
   always do.
 - `planted.json`: the faults for programs. `index` counts the runs from 0 in order of start, `run` is the id
-  of the first run touched, `seen_from` the first index at which the fault can be seen at all; a
-  warning names the fault rightly if it is of one of `kinds`, agrees with `along`, `level` and `response` where
-  they are stated, and its message has the text `says`.
+  of the first run touched, `seen_from` the first index at which the fault can be seen at all. A
+  warning names the fault rightly if it is of one of `kinds`, agrees with `along`, `level` and `response`
+  where they are stated, and its message has the text `says`.
 
 Each edition has its `plan.toml` and its `results/`. Three hosts append lines of JSON (`gull`, `heron`,
 `ibis`), `plover` lands a JSON array every 9 hours, and `teal` appends to one CSV table. Runs stand in a file
