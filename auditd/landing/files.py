@@ -82,10 +82,10 @@ class Files:
 
     def look(self, path: str, now: float) -> Iterator[Batch]:
         """Give what one file has, if anything; an error of the filesystem is noted and backs off."""
-        seen, pending = self.memory.get(path), self.pending.get(path)
+        seen = self.memory.get(path)
         try:
             status = os.lstat(self._area.real(path))
-            if seen is not None and seen.is_of(status) and (pending is None or seen.state != "growing"):
+            if seen is not None and seen.is_of(status) and seen.state != "growing":
                 self.pending.pop(path, None)
                 return
             if stat.S_ISREG(status.st_mode):
@@ -174,6 +174,8 @@ class Files:
             self.progress.n_done += 1
             return
         file.pending.tried = trial
+        if file.shape == "lines":
+            self.growing.note(file.path, file.now)
         until_still_s = STILL_S - still_s if file.shape == "lines" and still_s < STILL_S else 0.0
         file.pending.wait_for(waits, file.now, max(self._settle_s, until_still_s))
 

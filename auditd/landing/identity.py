@@ -74,7 +74,8 @@ def _start_of_document(descriptor: int, status: os.stat_result, seen: Seen) -> S
 def _start_of_lines(descriptor: int, status: os.stat_result, seen: Seen) -> Start | None:
     same_file = seen.inode == status.st_ino
     change: Change = "append"
-    if status.st_size < seen.offset:
+    begins_anew = seen.offset == 0 and seen.first != b""  # it had been emptied
+    if status.st_size < seen.offset or begins_anew:
         change = "truncated" if same_file else "rotated"
     elif not matches(descriptor, seen):
         change = "rewritten" if same_file else "rotated"

@@ -95,7 +95,7 @@ class Taking:
             if portion.waits and reader.shape == "document":
                 yield Step(batch=None, seen=None, waits=portion.waits)
                 return
-            yield self._step(portion, mapper, change, reader.shape)
+            yield self._step(portion, mapper, change)
             change = "append"
 
     def refused(self, reason: str) -> Step:
@@ -105,9 +105,8 @@ class Taking:
         batch = Batch(source=to_source(self._path, seen), items=(refusal,), change=self._start.change)
         return Step(batch=batch, seen=seen)
 
-    def _step(self, portion: Portion, mapper: Mapper, change: Change, shape: str) -> Step:
+    def _step(self, portion: Portion, mapper: Mapper, change: Change) -> Step:
         items = self._mapped(portion, mapper)
-        whole = portion.offset == self._status.st_size if shape == "document" else not portion.waits
         n_head, head, tail = head_and_tail(self._descriptor, portion.offset)
         seen = seen_of(
             self._status,
@@ -116,18 +115,16 @@ class Taking:
             n_head=n_head,
             head=head,
             tail=tail,
-            state="taken" if whole else "growing",
+            state="taken" if portion.offset == self._status.st_size else "growing",
             generation=self._generation,
             first=self._first,
             context=portion.context,
         )
-        if (
-            not items
-            and change in {"new", "append"}
-            and portion.waits
-            and portion.offset == self._start.offset
-        ):
-            return Step(batch=None, seen=seen if change == "append" else None, waits=portion.waits)
+        if not items and portion.offset == self._start.offset:
+            if change == "append":
+                return Step(batch=None, seen=seen, waits=portion.waits)
+            if change == "new" and portion.waits:
+                return Step(batch=None, seen=None, waits=portion.waits)
         batch = Batch(source=to_source(self._path, seen), items=items, change=change)
         return Step(batch=batch, seen=seen, waits=portion.waits)
 

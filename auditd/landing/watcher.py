@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import threading
+import warnings
 from collections import deque
 from typing import Literal
 
@@ -62,6 +63,8 @@ class Watcher:
         if why_not:
             self._poll(why_not)
             return
+        # watchdog warns, with a line of its whole state, where a folder is watched twice: harmless
+        warnings.filterwarnings("ignore", message="Callback with id", category=RuntimeWarning)
         self._overflows.attach()
         self._observe()
 
