@@ -8,14 +8,11 @@ from typing import ClassVar
 
 from auditd.checks.facts.condition import counted
 from auditd.checks.facts.counting import threshold_log_e
-from auditd.checks.facts.failing_e import FailingLevelsE, FailingStretchE
+from auditd.checks.facts.failing_e import FailingLevelsE, FailingStretchE, Outcomes
 from auditd.checks.facts.labels import CellIndex, LevelIndex
 from auditd.checks.facts.protocol import Quiet
 from auditd.plan import Plan
 from auditd.records import Finding, Kind, Run
-
-PSEUDO_FAILED = 0.5
-"""Failures added to the common rate, so that it is never 0 or 1 (Krichevsky & Trofimov 1981)."""
 
 
 class FailureFact(Quiet):
@@ -33,8 +30,8 @@ class FailureFact(Quiet):
         super().__init__(plan, alarm_budget=alarm_budget)
         self._asked = plan.record.status is not None
         self._threshold = threshold_log_e(plan, alarm_budget)
-        self._n = 0
-        self._n_failed = 0
+        self._bar = math.exp(self._threshold)
+        self._outcomes = Outcomes()
         self._cells = CellIndex()
         self._levels = {name: LevelIndex() for name in plan.nuisance}
         self._by: dict[str, FailingLevelsE] = {name: FailingLevelsE() for name in ("cell", *plan.nuisance)}
@@ -47,24 +44,19 @@ class FailureFact(Quiet):
         """Settle the bets on whether the run failed."""
         if not self._asked:
             return ()
-        failed = not run.completed
-        common = (self._n_failed + PSEUDO_FAILED) / (self._n + 2 * PSEUDO_FAILED)
-        betting = self._n_failed > 0
+        failed, outcomes, bar = not run.completed, self._outcomes, self._bar
+        outcomes.take(failed=failed)
         crossed: list[str] = []
-        for name, e in self._by.items():
-            level = (
-                self._cells.number(run.cell)
-                if name == "cell"
-                else self._levels[name].number(run.nuisance.get(name))
-            )
-            if e.observe(level, failed=failed, common=common, betting=betting) >= self._threshold:
+        if self._by["cell"].observe(self._cells.number(run.cell), outcomes, failed=failed) >= bar:
+            crossed.append("cell")
+        for name, index in self._levels.items():
+            level = index.number(run.nuisance.get(name))
+            if self._by[name].observe(level, outcomes, failed=failed) >= bar:
                 crossed.append(name)
-        if self._stretch.observe(failed=failed, common=common, betting=betting) >= self._threshold:
+        if self._stretch.observe(outcomes, failed=failed) >= bar:
             crossed.append("order")
-        self._spell.take(run.id, position, failed=failed, common=common)
-        self._n += 1
-        self._n_failed += failed
-        return self._raised(run, position, crossed, failed=failed)
+        self._spell.take(run.id, position, failed=failed, common=outcomes.common)
+        return self._raised(run, position, crossed, failed=failed) if crossed or failed else ()
 
     def standing(self) -> Iterator[Finding]:
         """Tell how the failures stand by now."""
@@ -90,7 +82,7 @@ class FailureFact(Quiet):
         message = (
             f"{k} of {counted(n, 'run')} {'of cell' if name == 'cell' else f'on {name}'} "
             f"{labels[level]} failed, "
-            f"{self._n_failed - k} of {self._n - n:,} elsewhere"
+            f"{self._outcomes.n_failed - k} of {self._outcomes.n - n:,} elsewhere"
         )
         return Finding(
             key=f"failure:{name}",
@@ -100,11 +92,11 @@ class FailureFact(Quiet):
             level=labels[level],
             run=run,
             index=index,
-            n=self._n,
-            log_e=e.bets.log_e,
+            n=self._outcomes.n,
+            log_e=e.segments.log_e(),
             threshold=self._threshold,
             cells=(labels[level],) if name == "cell" else (),
-            share=k / max(1, self._n_failed),
+            share=k / max(1, self._outcomes.n_failed),
             n_again=k,
         )
 
@@ -112,7 +104,7 @@ class FailureFact(Quiet):
         spell = self._spell
         message = (
             f"{spell.n_failed} of {counted(spell.n, 'run')} from {spell.first} to {spell.last} failed, "
-            f"{self._n_failed - spell.n_failed} of {self._n - spell.n:,} before and after"
+            f"{self._outcomes.n_failed - spell.n_failed} of {self._outcomes.n - spell.n:,} before and after"
         )
         return Finding(
             key="failure:order",
@@ -121,21 +113,23 @@ class FailureFact(Quiet):
             along="order",
             run=run,
             index=index,
-            n=self._n,
+            n=self._outcomes.n,
             since=spell.since,
-            log_e=self._stretch.bets.log_e,
+            log_e=self._stretch.segments.log_e(),
             threshold=self._threshold,
-            share=spell.n_failed / max(1, self._n_failed),
+            share=spell.n_failed / max(1, self._outcomes.n_failed),
             n_again=spell.n_failed,
         )
 
     def _excess(self, k: int, n: int) -> float:
         """Return the log likelihood that a level gains by a higher rate of its own."""
-        rest_n, rest_k = self._n - n, self._n_failed - k
+        rest_n, rest_k = self._outcomes.n - n, self._outcomes.n_failed - k
         if not n or not rest_n or k * rest_n <= rest_k * n:
             return 0.0
         return (
-            _log_likelihood(k, n) + _log_likelihood(rest_k, rest_n) - _log_likelihood(self._n_failed, self._n)
+            _log_likelihood(k, n)
+            + _log_likelihood(rest_k, rest_n)
+            - _log_likelihood(self._outcomes.n_failed, self._outcomes.n)
         )
 
 

@@ -33,6 +33,7 @@ class GapFact(Quiet):
         self._wait = 0 if by_sequence else N_WAIT_NUMBERS
         self._next: int | None = None  # every number below is there or missing
         self._ahead: set[int] = set()
+        self._landed: set[int] = set()  # numbers without a place: they wait, or came late
         self._missing: dict[int, None] = {}  # in the order in which they were found missing
         self._gap: Condition | None = None
         self._twice: Condition | None = None
@@ -43,6 +44,8 @@ class GapFact(Quiet):
         if run.sequence in self._missing and self._gap is not None:
             del self._missing[run.sequence]
             self._gap.unseen()
+        elif run.sequence is not None:
+            self._landed.add(run.sequence)
         return ()
 
     def placed(self, run: Run, _position: int) -> Iterable[Finding]:
@@ -50,6 +53,7 @@ class GapFact(Quiet):
         number = run.sequence
         if number is None:
             return ()
+        self._landed.discard(number)
         if self._next is None:
             self._next = number
         if number == self._next and not self._ahead:
@@ -71,7 +75,7 @@ class GapFact(Quiet):
         found: list[Finding] = []
         at = self._next or 0
         while self._ahead:
-            if at in self._ahead:
+            if at in self._ahead or at in self._landed:
                 self._ahead.discard(at)
             elif largest - at > self._wait or not self._wait:
                 found += self._is_missing(run, at)

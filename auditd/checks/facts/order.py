@@ -31,7 +31,7 @@ class _Factor:
         self.told: Finding | None = None
 
     def take(self, level: int, position: int) -> float:
-        """Enter a run's level and return log e."""
+        """Enter a run's level and return the wealth."""
         if level == len(self.first):
             self.first.append(position)
             self.last.append(position)
@@ -54,6 +54,7 @@ class OrderFact(Quiet):
     def __init__(self, plan: Plan, *, alarm_budget: float) -> None:
         super().__init__(plan, alarm_budget=alarm_budget)
         self._threshold = threshold_log_e(plan, alarm_budget)
+        self._bar = math.exp(self._threshold)
         self._factors = {name: _Factor() for name in plan.factors}
         self._position = -1
         self._changed: set[str] = set()
@@ -63,10 +64,10 @@ class OrderFact(Quiet):
         self._position += 1
         found: list[Finding] = []
         for name, factor in self._factors.items():
-            log_e = factor.take(factor.levels.number(run.cell.get(name)), self._position)
+            wealth = factor.take(factor.levels.number(run.cell.get(name)), self._position)
             if factor.told is not None:
                 self._changed.add(name)
-            elif log_e >= self._threshold:
+            elif wealth >= self._bar:
                 factor.told = self._finding(name, factor, run.id, self._position)
                 found.append(factor.told)
         return found
@@ -91,7 +92,7 @@ class OrderFact(Quiet):
             run=run,
             index=index,
             n=n,
-            log_e=factor.e.log_e,
+            log_e=factor.e.segments.log_e(),
             threshold=self._threshold,
             cells=tuple(f"{name}={label}" for label in factor.levels.labels[:20]),
             share=factor.n_alike / max(1, n - 1),
