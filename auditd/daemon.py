@@ -197,7 +197,9 @@ class Daemon:
                 raise PlanError("store.url changed; end the daemon and start it again for another store")
             Session(campaign)
         except AuditdError as error:
-            log.error("the plan was not taken into use, the old one stays: %s", error)
+            log.error(  # noqa: TRY400 - one line for the operator, no traceback
+                "the plan was not taken into use, the old one stays: %s", error
+            )
         else:
             self._close(final=False)
             self._campaign = campaign

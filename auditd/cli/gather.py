@@ -26,16 +26,16 @@ def gather(context: click.Context) -> None:
 
     began = time.monotonic()
     if is_terminal():
+        from rich import progress as rich_progress
         from rich.console import Console
-        from rich.progress import BarColumn, Progress, TextColumn, TimeRemainingColumn
 
-        with Progress(
-            TextColumn("{task.description}"),
-            BarColumn(),
-            TextColumn(
+        with rich_progress.Progress(
+            rich_progress.TextColumn("{task.description}"),
+            rich_progress.BarColumn(),
+            rich_progress.TextColumn(
                 "{task.completed}/{task.total} files, {task.fields[runs]} runs, {task.fields[rate]}/s"
             ),
-            TimeRemainingColumn(),
+            rich_progress.TimeRemainingColumn(),
             console=Console(stderr=True),
             transient=True,
         ) as bar:
@@ -57,8 +57,8 @@ def gather(context: click.Context) -> None:
         done = take_all(plan_path(context), _say_nothing())
     taken, seconds = done.taken, time.monotonic() - began
     message(
-        f"gathered {taken.n_runs} runs from {done.n_files} files in {seconds:.1f} s; {taken.n_refused} refused, "
-        f"{taken.n_seen_before} taken before; {taken.n_raised} new warnings"
+        f"gathered {taken.n_runs} runs from {done.n_files} files in {seconds:.1f} s; "
+        f"{taken.n_refused} refused, {taken.n_seen_before} taken before; {taken.n_raised} new warnings"
     )
     for waiting in done.waiting:
         message(f"not taken: {waiting.path}: {waiting.why}")

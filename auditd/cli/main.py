@@ -5,7 +5,6 @@ from __future__ import annotations
 import os
 import sys
 import traceback
-from typing import Any
 
 import click
 
@@ -48,7 +47,7 @@ EXIT_INTERRUPTED = 130
 @click.version_option(__version__, prog_name="runaudit")
 @click.pass_context
 def main(context: click.Context, plan: str | None) -> None:
-    """Watch a long campaign of runs for broken independence while it is being made.
+    r"""Watch a long campaign of runs for broken independence while it is being made.
 
     \b
     First steps:
@@ -97,31 +96,35 @@ def run(arguments: list[str] | None = None) -> None:
 def run_code(arguments: list[str]) -> int:
     """Run the command and return its exit code; every end has one that is stated."""
     try:
-        return _code(main.main(args=arguments, prog_name="runaudit", standalone_mode=False))
-    except click.exceptions.Exit as end:
-        return end.exit_code
-    except click.ClickException as error:
-        error.show()
-        return EXIT_USAGE
-    except (click.Abort, KeyboardInterrupt):
-        return EXIT_INTERRUPTED
-    except BrokenPipeError:
-        _close_quietly()
-        return 0
-    except AuditdError as error:
-        message(f"runaudit: {error}")
-        return error.exit_code
-    except Exception as error:  # noqa: BLE001 - the last resort of a command: one line and exit 70
-        return _unexpected(error)
-
-
-def _code(result: Any) -> int:  # click returns what the command returned
+        result = main.main(args=arguments, prog_name="runaudit", standalone_mode=False)
+    except BaseException as error:  # noqa: BLE001 - the last resort of a command: one line and a stated code
+        return _code_of(error)
     return result if isinstance(result, int) else 0
 
 
-def _unexpected(error: Exception) -> int:
+def _code_of(error: BaseException) -> int:
+    """Say what ended the command, and return the exit code for it."""
+    match error:
+        case click.exceptions.Exit():
+            return error.exit_code
+        case click.ClickException():
+            error.show()
+            return EXIT_USAGE
+        case click.Abort() | KeyboardInterrupt():
+            return EXIT_INTERRUPTED
+        case BrokenPipeError():
+            _close_quietly()
+            return 0
+        case AuditdError():
+            message(f"runaudit: {error}")
+            return error.exit_code
+        case _:
+            return _unexpected(error)
+
+
+def _unexpected(error: BaseException) -> int:
     if os.environ.get("RUNAUDIT_TRACE"):
-        traceback.print_exc()
+        traceback.print_exception(error)
     if type(error).__module__.startswith("sqlalchemy"):
         reason = str(getattr(error, "orig", error)).splitlines()[0]
         message(f"runaudit: the store does not answer: {reason}")

@@ -34,7 +34,7 @@ def _print(title: str, document: dict[str, Any]) -> None:  # the JSON document
     click.echo(f"  daemon    {_daemon(document['daemon'])}")
     click.echo(
         f"  runs      {document['runs']} landed, {document['completed']} completed, "
-        f"{document['refused']} refused, {document['waiting']} waiting for their place, {document['late']} late"
+        f"{document['refused']} refused, {document['waiting']} waiting for a place, {document['late']} late"
     )
     click.echo(f"  audited   {document['audited']} in order, {document['scored']} scored")
     for reason in document["withheld"]:

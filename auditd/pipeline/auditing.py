@@ -165,7 +165,7 @@ class Audit:
         )
 
     def _cells(self, block: Sequence[StoredRun]) -> list[str]:
-        """Return the labels within which runs are ranked; a restarted or absorbed level has cells of its own."""
+        """Return the labels within which runs are ranked; a restarted or absorbed level has its own."""
         found = []
         for stored in block:
             run = stored.run

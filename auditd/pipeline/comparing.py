@@ -213,9 +213,15 @@ def sentence(document: Document) -> str:
     naive = document["naive_high"] - document["naive_low"]
     ratio = honest / naive if naive else 1.0
     if ratio > 1.1:
-        text = f"The naive interval is too narrow: {n} runs are worth {worth:.0f} here, so it is {ratio:.1f} times as wide"
+        text = (
+            f"The naive interval is too narrow: {n} runs are worth {worth:.0f} here, "
+            f"and the honest one is {ratio:.1f} times as wide"
+        )
     elif ratio < 0.9:
-        text = f"The honest interval is narrower, {ratio:.2f} of the naive one: order or blocks take out what {n} runs share"
+        text = (
+            f"The honest interval is {ratio:.2f} times the naive one: order or blocks take out "
+            f"what the {n} runs share"
+        )
     else:
         text = f"Naive and honest interval agree: {n} runs are worth {min(worth, n):.0f}"
     return text + _judged(document) + "."

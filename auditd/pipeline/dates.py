@@ -1,4 +1,4 @@
-"""Since when, in the campaign's own runs: the last before and the first after, and what else changed there."""
+"""Since when, in the campaign's own runs: the last before, the first after, and what else changed."""
 
 from __future__ import annotations
 

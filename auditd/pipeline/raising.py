@@ -146,7 +146,7 @@ class Raiser:
         return 1
 
     def _may_lead(self, leader: Caution, finding: Finding) -> bool:
-        """Whether a warning can take in a finding: it stands, and both are of one epoch where that matters."""
+        """Whether a warning can take in a finding: it stands, and of the same epoch where that matters."""
         if leader.state == "withdrawn":
             return False
         if leader.finding.kind in SEQUENTIAL and finding.kind in SEQUENTIAL:

@@ -69,7 +69,7 @@ def _check_scope(plan: Plan, action: Action, scope: dict[str, str]) -> None:
 
 def apply_answers(connection: Connection, plan: Plan, position: int, *, only_ask: bool = False) -> bool:
     """Put answers into force from a position on; return whether the audit has to be opened again."""
-    new = [answer for answer in stored_answers(connection, answers.c.from_position.is_(None))]
+    new = stored_answers(connection, answers.c.from_position.is_(None))
     if only_ask or not new:
         return bool(new)
     again = False

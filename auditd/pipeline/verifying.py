@@ -1,4 +1,4 @@
-"""`store verify`: the store's pages and counts, and the audit made anew against the warnings that were raised."""
+"""`store verify`: pages and counts, and the audit made anew against the warnings that were raised."""
 
 from __future__ import annotations
 
@@ -11,10 +11,10 @@ from auditd.pipeline.auditing import replayed_alarms
 from auditd.pipeline.raising import key_of
 from auditd.plan import Plan
 from auditd.plan_reading import load_plan
+from auditd.store.cautions import stored_cautions
 from auditd.store.engine import open_engine
 from auditd.store.place import store_url
 from auditd.store.plans import plan_versions, stored_epochs
-from auditd.store.cautions import stored_cautions
 from auditd.store.verify import verify_store
 
 TOLERANCE = 1e-6
@@ -53,8 +53,8 @@ def _compare_alarms(connection: Connection, plan: Plan) -> list[str]:
         index = alarm.first_position + alarm.alarm.index
         if stored.index != index or not math.isclose(stored.log_e, alarm.alarm.log_e, abs_tol=TOLERANCE):
             complaints.append(
-                f"{key}: raised at position {stored.index} with log e {stored.log_e:.6f}, but the stored runs "
-                f"give position {index} with {alarm.alarm.log_e:.6f}"
+                f"{key}: raised at position {stored.index} with log e {stored.log_e:.6f}, "
+                f"but the stored runs give position {index} with {alarm.alarm.log_e:.6f}"
             )
     complaints += [
         f"{key}: raised, but the stored runs do not give it"

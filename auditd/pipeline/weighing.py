@@ -9,6 +9,7 @@ from typing import Any
 
 import numpy as np
 
+from auditd.checks.duplicates import duplicate_groups
 from auditd.errors import BadInput, NotTestable
 from auditd.pipeline.asking import Document
 from auditd.pipeline.auditing import ORDER_KINDS, Audit
@@ -16,7 +17,6 @@ from auditd.pipeline.circumstances import circumstances
 from auditd.pipeline.comparing import compare_document, losses, planned_questions
 from auditd.pipeline.session import Session
 from auditd.plan import Plan
-from auditd.checks.duplicates import duplicate_groups
 from auditd.series.load import load_table
 from auditd.series.strips import strip
 from auditd.series.table import RunTable, Series
@@ -30,6 +30,16 @@ REST_FACTOR = 30.0
 STALE_S = 60.0
 """… or when runs have come and so long has passed."""
 REST_MAX_S = 900.0
+
+
+STEERED = (
+    "results decide what runs next (design.allocation), and no stage is stated: even independent runs would "
+    "alarm, so the sequential audit is withheld; state design.stage"
+)
+NO_ORDER = (
+    f"{', '.join(ORDER_KINDS)}: no order can be established, since runs landed in whole tables without a "
+    "sequence number or a start; state record.sequence or record.started"
+)
 
 
 class Weigher:
@@ -171,14 +181,8 @@ def withheld_sentences(session: Session) -> list[str]:
     if not left_out:
         return []
     if session.plan.design.allocation == "outcome":
-        return [
-            "results decide what runs next (design.allocation), and no stage is stated: "
-            "even independent runs would alarm, so the sequential audit is withheld; state design.stage"
-        ]
-    return [
-        f"{', '.join(ORDER_KINDS)}: no order can be established, since runs landed in whole tables without "
-        "a sequence number or a start; state record.sequence or record.started"
-    ]
+        return [STEERED]
+    return [NO_ORDER]
 
 
 def not_checked(session: Session, weighed: Mapping[str, Document | None]) -> list[str]:

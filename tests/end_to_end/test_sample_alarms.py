@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from auditd.sequential import replay
-from auditd.simulate.sample_campaign import RESPONSES, rfc3339, sample_campaign
+from auditd.simulate.sample_campaign import RESPONSES, sample_campaign, time_text
 
 N_KEYS = 8
 FIRST_EPOCH = 0.05 * 6 / np.pi**2
@@ -72,4 +72,4 @@ def test_first_alarm_names_the_planted_fault_soon_after_it_began(response, withi
 
 def test_times_are_written_as_rfc_3339_in_utc():
     """RFC 3339, section 5.8: 1937-01-01T12:00:27.87+00:20 is 11:40:27.87Z."""
-    assert rfc3339(-1041337172.13) == "1937-01-01T11:40:27.870Z"
+    assert time_text(-1041337172.13) == "1937-01-01T11:40:27.870Z"
