@@ -77,16 +77,17 @@ def would_see(
     needed = math.log(n_asked / alarm_budget)
     z = NormalDist().inv_cdf(probability)
     drift_loss = LOSS_DRIFT + n_scored / RUNS_PER_DRIFT_LOSS
+    drift = _smallest_drift(n_scored, _needed_noncentrality(needed + drift_loss, z))
     counts = [[int(m) for m in own if m > 0] for own in (level_counts or {}).values()]
     seen = [_smallest_icc(own, needed + LOSS_BATCH, probability) for own in counts if len(own) > 1]
     return {
-        "drift": _below(LARGEST_DRIFT, _smallest_drift(n_scored, _noncentrality(needed + drift_loss, z))),
+        "drift": _below(LARGEST_DRIFT, drift),
         "icc": _below(LARGEST_ICC, min(seen, default=math.inf)),
         "ar": _below(LARGEST_AR, _smallest_ar(n_scored, needed + LOSS_SERIAL, z)),
     }
 
 
-def _noncentrality(log_e: float, z: float) -> float:
+def _needed_noncentrality(log_e: float, z: float) -> float:
     """Return h with P(N(h²/2, h²) ≥ log_e) = Φ(z)."""
     return max(0.0, z + math.sqrt(z * z + 2 * log_e))
 

@@ -223,13 +223,13 @@ def _played(stage: _Stage, scenario: Scenario, rng: np.random.Generator) -> _Out
     """Lay out, simulate, audit and compare one campaign."""
     layout = _rehearsed_layout(stage, rng)
     made = simulate(layout, rng, effects=scenario.effects(layout, stage.host_name))
-    run, named = _first_alarm(made, stage, scenario)
+    run, named = _rehearsed_alarm(made, stage, scenario)
     if scenario.kind == EXCHANGEABLE.kind:  # any response may cry wolf
         others = [
-            _first_alarm(simulate(layout, rng), stage, scenario)[0] for _ in range(stage.n_responses - 1)
+            _rehearsed_alarm(simulate(layout, rng), stage, scenario)[0] for _ in range(stage.n_responses - 1)
         ]
         run = min((own for own in (run, *others) if own is not None), default=None)
-    covered, width, naive_width = _interval(made, stage)
+    covered, width, naive_width = _rehearsed_interval(made, stage)
     return _Outcome(run=run, named=named, covered=covered, width=width, naive_width=naive_width)
 
 
@@ -241,7 +241,7 @@ def _rehearsed_layout(stage: _Stage, rng: np.random.Generator) -> Layout:
     return replace(made, nuisance=nuisance)
 
 
-def _first_alarm(made: Simulated, stage: _Stage, scenario: Scenario) -> tuple[int | None, bool]:
+def _rehearsed_alarm(made: Simulated, stage: _Stage, scenario: Scenario) -> tuple[int | None, bool]:
     from auditd.sequential import replay
 
     audit = replay(
@@ -258,7 +258,7 @@ def _first_alarm(made: Simulated, stage: _Stage, scenario: Scenario) -> tuple[in
     return first.index + 1, named
 
 
-def _interval(made: Simulated, stage: _Stage) -> tuple[bool | None, float, float]:
+def _rehearsed_interval(made: Simulated, stage: _Stage) -> tuple[bool | None, float, float]:
     """Return whether the honest interval holds the true difference of zero, and both widths."""
     from auditd.evidence import contrast
 

@@ -9,13 +9,13 @@ from types import MappingProxyType
 from auditd.errors import BadInput
 from auditd.simulate import (
     Autoregressive,
+    BatchEffects,
     DailyCycle,
     Drift,
-    Effect,
+    Fault,
     Layout,
-    LevelEffects,
-    SpreadChange,
-    Step,
+    SpreadJump,
+    StepShift,
 )
 
 
@@ -36,7 +36,7 @@ class Scenario:
     kind: str
     along: str | None
     strength: float
-    effects: Callable[[Layout, str], tuple[Effect, ...]]
+    effects: Callable[[Layout, str], tuple[Fault, ...]]
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -48,19 +48,19 @@ class Form:
     low: float
     high: float
     means: str
-    make: Callable[[float, Layout, str], Effect]
+    make: Callable[[float, Layout, str], Fault]
 
 
-def _spread_at_middle(ratio: float, layout: Layout, host: str) -> Effect:
+def _spread_at_middle(ratio: float, layout: Layout, host: str) -> Fault:
     del host
-    return SpreadChange(at=layout.n // 2, ratio=ratio)
+    return SpreadJump(at=layout.n // 2, ratio=ratio)
 
 
-def _step_at_middle(size: float, layout: Layout, host: str) -> Effect:
-    return Step(at=layout.n // 2, size=size, along=host, level=str(layout.nuisance[host][0]))
+def _step_at_middle(size: float, layout: Layout, host: str) -> Fault:
+    return StepShift(at=layout.n // 2, size=size, along=host, level=str(layout.nuisance[host][0]))
 
 
-def _drift_from_third(size: float, layout: Layout, host: str) -> Effect:
+def _drift_from_third(size: float, layout: Layout, host: str) -> Fault:
     return Drift(at=layout.n // 3, size=size, along=host, level=str(layout.nuisance[host][0]))
 
 
@@ -72,7 +72,7 @@ FORMS: MappingProxyType[str, Form] = MappingProxyType(
             low=0.0,
             high=0.99,
             means="intraclass correlation of the runs of a host",
-            make=lambda size, _, host: LevelEffects(icc=size, along=host),
+            make=lambda size, _, host: BatchEffects(icc=size, along=host),
         ),
         "ar": Form(
             kind="serial",

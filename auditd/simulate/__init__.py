@@ -3,41 +3,41 @@
 from auditd.simulate.campaign import simulate
 from auditd.simulate.effects import (
     Autoregressive,
+    BatchEffects,
     CachedResults,
     DailyCycle,
     Drift,
-    Effect,
     Failures,
+    Fault,
     IgnoredSeed,
-    LevelEffects,
     LevelShift,
     RestartLineage,
     SeedBlocks,
-    SpreadChange,
-    Step,
+    SpreadJump,
+    StepShift,
 )
 from auditd.simulate.laws import LAWS
 from auditd.simulate.layouts import blocked_layout, sequential_layout, sweep_layout
-from auditd.simulate.simulated import Layout, Planted, Simulated
+from auditd.simulate.simulated import Layout, PlantedFault, Simulated
 
 __all__ = [
     "LAWS",
     "Autoregressive",
+    "BatchEffects",
     "CachedResults",
     "DailyCycle",
     "Drift",
-    "Effect",
     "Failures",
+    "Fault",
     "IgnoredSeed",
     "Layout",
-    "LevelEffects",
     "LevelShift",
-    "Planted",
+    "PlantedFault",
     "RestartLineage",
     "SeedBlocks",
     "Simulated",
-    "SpreadChange",
-    "Step",
+    "SpreadJump",
+    "StepShift",
     "blocked_layout",
     "sequential_layout",
     "simulate",

@@ -7,7 +7,7 @@ from collections.abc import Mapping, Sequence
 import numpy as np
 
 from auditd.errors import BadInput
-from auditd.simulate.effects import Effect, Latent
+from auditd.simulate.effects import Fault, Latent
 from auditd.simulate.laws import law_named
 from auditd.simulate.simulated import Layout, Simulated
 
@@ -20,7 +20,7 @@ def simulate(
     rng: np.random.Generator,
     *,
     law: str = "normal",
-    effects: Sequence[Effect] = (),
+    effects: Sequence[Fault] = (),
     cell_means: Mapping[str, float] | None = None,
 ) -> Simulated:
     """Simulate one response of a campaign with known truth.

@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from auditd.errors import BadInput
-from auditd.simulate.simulated import Floats, Layout, Planted
+from auditd.simulate.simulated import Floats, Layout, PlantedFault
 
 DAY_S = 86400.0
 
@@ -27,14 +27,14 @@ class Latent:
     seeds: tuple[str, ...]
     parents: NDArray[np.int64]
     failed: NDArray[np.bool_]
-    truth: tuple[Planted, ...] = ()
+    truth: tuple[PlantedFault, ...] = ()
 
-    def with_fault(self, planted: Planted, **changed: object) -> Latent:
+    def with_fault(self, planted: PlantedFault, **changed: object) -> Latent:
         """Return the state with some fields changed and the fault noted."""
         return replace(self, truth=(*self.truth, planted), **changed)  # type: ignore[arg-type]
 
 
-class Effect(Protocol):
+class Fault(Protocol):
     """What plants one fault."""
 
     def __call__(self, state: Latent, rng: np.random.Generator) -> Latent:
@@ -62,11 +62,11 @@ class Autoregressive:
             own = labels == level
             start = [(1 - gain) * z[own][0]]  # the first value is stationary
             z[own], _ = lfilter([gain], [1.0, -self.phi], z[own], zi=start)
-        return state.with_fault(Planted(kind="serial", along=self.along, size=self.phi), z=z)
+        return state.with_fault(PlantedFault(kind="serial", along=self.along, size=self.phi), z=z)
 
 
 @dataclass(frozen=True, kw_only=True)
-class LevelEffects:
+class BatchEffects:
     """A normal effect a level of a nuisance with intraclass correlation `icc`; the variance stays one."""
 
     icc: float
@@ -79,7 +79,7 @@ class LevelEffects:
         levels, codes = np.unique(state.layout.along(self.along), return_inverse=True)
         shifts = rng.standard_normal(levels.size)
         z = np.sqrt(1 - self.icc) * state.z + np.sqrt(self.icc) * shifts[codes]
-        return state.with_fault(Planted(kind="batch", along=self.along, size=self.icc), z=z)
+        return state.with_fault(PlantedFault(kind="batch", along=self.along, size=self.icc), z=z)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -94,14 +94,14 @@ class LevelShift:
         """Shift the runs of the level."""
         del rng
         own = _runs_of(state.layout, self.along, self.level, 0)
-        planted = Planted(
+        planted = PlantedFault(
             kind="batch", along=self.along, level=self.level, index=int(np.argmax(own)), size=self.size
         )
         return state.with_fault(planted, z=state.z + self.size * own)
 
 
 @dataclass(frozen=True, kw_only=True)
-class Step:
+class StepShift:
     """From run `at` on, all runs (or those of one level) lie higher by `size`."""
 
     at: int
@@ -145,11 +145,13 @@ class DailyCycle:
         """Add the sine, at a random phase."""
         phase = rng.uniform(0, 2 * np.pi)
         wave = self.amplitude * np.sin(2 * np.pi * state.layout.times / self.period_s + phase)
-        return state.with_fault(Planted(kind="clock", along="order", size=self.amplitude), z=state.z + wave)
+        return state.with_fault(
+            PlantedFault(kind="clock", along="order", size=self.amplitude), z=state.z + wave
+        )
 
 
 @dataclass(frozen=True, kw_only=True)
-class SpreadChange:
+class SpreadJump:
     """From run `at` on, errors are `ratio` times as wide."""
 
     at: int
@@ -159,7 +161,9 @@ class SpreadChange:
         """Stretch the later errors."""
         del rng
         z = np.where(np.arange(state.layout.n) >= self.at, self.ratio, 1.0) * state.z
-        return state.with_fault(Planted(kind="spread", along="order", index=self.at, size=self.ratio), z=z)
+        return state.with_fault(
+            PlantedFault(kind="spread", along="order", index=self.at, size=self.ratio), z=z
+        )
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -197,7 +201,9 @@ class RestartLineage:
                 z[i] = self.phi * z[parents[i]] + gain * z[i]
             earlier.append(i)
         first = int(np.argmax(parents >= 0)) if bool(np.any(parents >= 0)) else 0
-        return state.with_fault(Planted(kind="lineage", index=first, size=self.phi), z=z, parents=parents)
+        return state.with_fault(
+            PlantedFault(kind="lineage", index=first, size=self.phi), z=z, parents=parents
+        )
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -214,7 +220,7 @@ class Failures:
         inside = (number >= self.at) & (number < self.until)
         failed = state.failed | (inside & (rng.random(state.layout.n) < self.probability))
         return state.with_fault(
-            Planted(kind="failure", along="order", index=self.at, size=self.probability), failed=failed
+            PlantedFault(kind="failure", along="order", index=self.at, size=self.probability), failed=failed
         )
 
 
@@ -232,7 +238,7 @@ class IgnoredSeed:
             raise BadInput(f"no run of cell {self.cell!r}; known: {', '.join(np.unique(state.layout.cells))}")
         z = state.z.copy()
         z[own] = z[own[0]]
-        planted = Planted(
+        planted = PlantedFault(
             kind="repeat", along="cell", level=self.cell, index=int(own[0]), size=float(own.size)
         )
         return state.with_fault(planted, z=z)
@@ -257,7 +263,7 @@ class CachedResults:
                 )
             z[second] = z[first]
         index = min(second for _, second in self.pairs)
-        planted = Planted(
+        planted = PlantedFault(
             kind="repeat", along=self.along, level=self.level, index=index, size=float(len(self.pairs))
         )
         return state.with_fault(planted, z=z)
@@ -284,7 +290,7 @@ def _runs_of(layout: Layout, along: str, level: str | None, at: int) -> NDArray[
     return own
 
 
-def _drift_of(effect: Step | Drift, own: NDArray[np.bool_]) -> Planted:
-    return Planted(
+def _drift_of(effect: StepShift | Drift, own: NDArray[np.bool_]) -> PlantedFault:
+    return PlantedFault(
         kind="drift", along=effect.along, level=effect.level, index=int(np.argmax(own)), size=effect.size
     )

@@ -72,7 +72,7 @@ def sample_campaign(edition: Edition) -> SampleCampaign:
     return SampleCampaign(edition=edition, records=records, finished=timetable.finished, faults=faults)
 
 
-def rfc3339(posix_s: float) -> str:
+def time_text(posix_s: float) -> str:
     """Return a time as RFC 3339 in UTC with milliseconds."""
     text = datetime.fromtimestamp(posix_s, UTC).isoformat(timespec="milliseconds")
     return text.replace("+00:00", "Z")
@@ -96,8 +96,8 @@ def _sample_records(
     for i in range(layout.n):
         row: dict[str, Any] = {
             "run": sample_run_id(i),
-            "started": rfc3339(float(layout.times[i])),
-            "finished": rfc3339(float(timetable.finished[i])),
+            "started": time_text(float(layout.times[i])),
+            "finished": time_text(float(timetable.finished[i])),
             "host": str(layout.nuisance["host"][i]),
             "build": str(layout.nuisance["build"][i]),
             "anchor": str(timetable.anchors[i]),

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from auditd.simulate.effects import CachedResults, Drift, Effect, IgnoredSeed, LevelShift
+from auditd.simulate.effects import CachedResults, Drift, Fault, IgnoredSeed, LevelShift
 from auditd.simulate.sample_timetable import (
     BUILD_DAYS,
     BUILDS,
@@ -54,7 +54,7 @@ class SampleFault:
     what: str
 
 
-def own_effects(response: str, layout: Layout) -> list[Effect]:
+def own_effects(response: str, layout: Layout) -> list[Fault]:
     """The faults of one response: the drifting host in one, the build's shift in another."""
     if response == "peak_tension":
         at = first_run(layout, DRIFT_DAY, DRIFT_HOST)
@@ -64,7 +64,7 @@ def own_effects(response: str, layout: Layout) -> list[Effect]:
     return []
 
 
-def shared_effects(layout: Layout) -> list[Effect]:
+def shared_effects(layout: Layout) -> list[Fault]:
     """Faults that repeat whole results, so that all responses share them."""
     return [
         IgnoredSeed(cell=IGNORED_SEED_CELL),
@@ -97,7 +97,7 @@ def failing_runs(edition: Edition, layout: Layout, rng: np.random.Generator) -> 
 def planted_faults(layout: Layout, failed: NDArray[np.bool_]) -> tuple[SampleFault, ...]:
     """List the faults of the faulty edition, in the order in which they begin."""
     faults = (
-        _confound(layout),
+        _lone_configuration(layout),
         _ignored_seed(layout, failed),
         _build_shift(layout),
         _host_drift(layout),
@@ -145,7 +145,7 @@ def _fault(
     )
 
 
-def _confound(layout: Layout) -> SampleFault:
+def _lone_configuration(layout: Layout) -> SampleFault:
     index = int(np.argmax(layout.nuisance["host"] == LONE_HOST))
     what = f"mesh={LONE_LEVEL} ran only on {LONE_HOST}, and {LONE_HOST} ran nothing else"
     return _fault(

@@ -16,7 +16,7 @@ Labels: TypeAlias = NDArray[np.str_]
 
 
 @dataclass(frozen=True, kw_only=True)
-class Planted:
+class PlantedFault:
     """One fault as it was planted.
 
     Attributes
@@ -101,7 +101,7 @@ class Simulated:
     ids: tuple[str, ...]
     completed: NDArray[np.bool_]
     cell_means: Mapping[str, float]
-    truth: tuple[Planted, ...] = ()
+    truth: tuple[PlantedFault, ...] = ()
 
     def arguments(self) -> dict[str, Any]:  # Any: the keyword arguments of `auditd.sequential.replay`
         """Keyword arguments for `auditd.sequential.replay`; parents are left out where no run has one."""

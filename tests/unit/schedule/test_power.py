@@ -11,7 +11,7 @@ from auditd.schedule import would_see
 from auditd.schedule.binomial_bounds import clopper_pearson
 from auditd.schedule.power import LOSS_BATCH, _quadratic_needed, _smallest_icc
 from auditd.sequential import replay
-from auditd.simulate import Autoregressive, Drift, LevelEffects, blocked_layout, simulate
+from auditd.simulate import Autoregressive, BatchEffects, Drift, blocked_layout, simulate
 
 HOSTS = ("h1", "h2", "h3", "h4", "h5")
 CELLS = ("a", "b", "c", "d")
@@ -20,7 +20,7 @@ N_RUNS = len(HOSTS) * len(CELLS) * REPLICATES
 N_CAMPAIGNS = 120
 EFFECTS = {
     "drift": lambda size: Drift(at=0, size=size),
-    "icc": lambda size: LevelEffects(icc=size),
+    "icc": lambda size: BatchEffects(icc=size),
     "ar": lambda size: Autoregressive(phi=size),
 }
 

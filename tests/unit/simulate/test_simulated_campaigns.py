@@ -11,17 +11,17 @@ from auditd.sequential import replay
 from auditd.simulate import (
     LAWS,
     Autoregressive,
+    BatchEffects,
     CachedResults,
     DailyCycle,
     Drift,
     Failures,
     IgnoredSeed,
-    LevelEffects,
     LevelShift,
     RestartLineage,
     SeedBlocks,
-    SpreadChange,
-    Step,
+    SpreadJump,
+    StepShift,
     blocked_layout,
     sequential_layout,
     simulate,
@@ -128,7 +128,7 @@ def test_autoregressive_errors_within_hosts_are_invisible_across_them(layout, rn
 def test_level_effects_have_their_intraclass_correlation(rng):
     hosts = tuple(f"h{i}" for i in range(200))
     made = simulate(
-        blocked_layout(rng, cells=CELLS, hosts=hosts, replicates=5), rng, effects=[LevelEffects(icc=0.4)]
+        blocked_layout(rng, cells=CELLS, hosts=hosts, replicates=5), rng, effects=[BatchEffects(icc=0.4)]
     )
     means = [made.values[made.nuisance["host"] == host].mean() for host in hosts]
     assert np.var(means) == pytest.approx(0.4 + 0.6 / 20, rel=0.35)
@@ -139,7 +139,7 @@ def test_shift_step_and_drift_touch_only_their_runs(layout, rng):
     n, host = layout.n, layout.nuisance["host"]
     effects = [
         LevelShift(size=50, along="host", level="h1"),
-        Step(at=2000, size=500, along="host", level="h2"),
+        StepShift(at=2000, size=500, along="host", level="h2"),
         Drift(at=2400, size=5000, along="host", level="h3"),
     ]
     made = simulate(layout, rng, effects=effects)
@@ -167,7 +167,7 @@ def test_daily_cycle_is_found_by_its_period(layout, rng):
 
 
 def test_spread_change_stretches_later_errors(layout, rng):
-    made = simulate(layout, rng, effects=[SpreadChange(at=2400, ratio=3.0)])
+    made = simulate(layout, rng, effects=[SpreadJump(at=2400, ratio=3.0)])
     assert made.values[2400:].std() / made.values[:2400].std() == pytest.approx(3.0, rel=0.1)
 
 
@@ -224,7 +224,7 @@ def test_arguments_run_through_the_audit_and_the_fault_alarms(layout, rng):
 
 def test_one_seed_gives_one_campaign(layout):
     once, again = (
-        simulate(layout, np.random.default_rng(5), effects=[LevelEffects(icc=0.1)]) for _ in range(2)
+        simulate(layout, np.random.default_rng(5), effects=[BatchEffects(icc=0.1)]) for _ in range(2)
     )
     other = simulate(layout, np.random.default_rng(6))
     assert np.array_equal(once.values, again.values)
@@ -237,9 +237,9 @@ def test_one_seed_gives_one_campaign(layout):
     ("effect", "message"),
     [
         (Autoregressive(phi=1.0), "phi is 1.0"),
-        (LevelEffects(icc=1.0), "icc is 1.0"),
-        (LevelEffects(icc=0.1, along="rack"), "no nuisance"),
-        (Step(at=10**6, size=1.0), "no run of order"),
+        (BatchEffects(icc=1.0), "icc is 1.0"),
+        (BatchEffects(icc=0.1, along="rack"), "no nuisance"),
+        (StepShift(at=10**6, size=1.0), "no run of order"),
         (LevelShift(size=1.0, along="host", level="h9"), "no run of host=h9"),
         (IgnoredSeed(cell="z"), "no run of cell"),
     ],
