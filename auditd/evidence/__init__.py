@@ -1,4 +1,4 @@
-"""How many independent runs a campaign is worth, and comparisons whose intervals are honest under the dependence found."""
+"""How many independent runs a campaign is worth, and comparisons with honest intervals."""
 
 from auditd.evidence.contrast import contrast
 from auditd.evidence.loss import evidence_loss

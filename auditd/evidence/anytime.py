@@ -5,20 +5,24 @@ from __future__ import annotations
 import functools
 import math
 
-MIXTURE_RUNS = 10.0  # effective runs: scale of the mixture, where the sequence is tightest (about 4 to 40 times it)
+MIXTURE_RUNS = (
+    10.0  # effective runs: scale of the mixture, where the sequence is tightest (about 4 to 40 times it)
+)
 FIRST_LOOK_RUNS = 30.0  # effective runs from which the sequence holds; an earlier start costs width later
 
 
 def critical(n_effective: float, confidence: float) -> float:
     """Critical value, in standard errors, of the confidence sequence at n_effective runs.
 
-    The martingale (1 + r)^(−1/2)·exp(z²r / (2(1 + r))), r = n_effective / 10, stays below 1/a for ever after 30 effective runs with
-    probability 1 − α, where a solves P(|Z| ≥ u₃₀) + a·P(|Z| < u₃₀ / √(1 + r₃₀)) = α exactly for Brownian motion.
+    The martingale (1 + r)^(−1/2)·exp(z²r / (2(1 + r))), r = n_effective / 10, stays below 1/a for ever
+    after 30 effective runs with probability 1 − α, where a solves P(|Z| ≥ u₃₀) + a·P(|Z| < u₃₀ / √(1 +
+    r₃₀)) = α exactly for Brownian motion.
 
     References
     ----------
-    Robbins (1970), Annals of Mathematical Statistics 41:1397-1409; Robbins & Siegmund (1970), ibid. 41:1410-1429; Waudby-Smith, Arbour,
-    Sinha, Kennedy & Ramdas (2024), Annals of Statistics 52:2613-2640 (the asymptotic form).
+    Robbins (1970), Annals of Mathematical Statistics 41:1397-1409; Robbins & Siegmund (1970), ibid.
+    41:1410-1429; Waudby-Smith, Arbour, Sinha, Kennedy & Ramdas (2024), Annals of Statistics 52:2613-2640
+    (the asymptotic form).
     """
     return _boundary(max(n_effective, 1e-3) / MIXTURE_RUNS, _crossing_level(confidence))
 

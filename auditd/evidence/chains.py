@@ -19,7 +19,7 @@ class Chains:
     starts: Ints
 
     def innovations(self, x: Floats, phi: float) -> Floats:
-        """x less φ times the parent's; a start is scaled by √(1 − φ²), so that all have one variance."""
+        """X less φ times the parent's; a start is scaled by √(1 − φ²), so that all have one variance."""
         e = x.copy()
         e[self.child] -= phi * x[self.parent]
         e[self.starts] *= np.sqrt(1 - phi * phi)
@@ -33,6 +33,11 @@ class Stretches(Chains):
     runs: Ints
     offsets: Ints
 
+    @property
+    def mean_runs(self) -> float:
+        """Mean length of a chain, in runs."""
+        return len(self.runs) / max(len(self.offsets), 1)
+
     def longest(self, n_chains: int, n_least: int) -> list[Ints]:
         """Runs of each of the longest chains that have at least n_least runs."""
         ends = np.append(self.offsets[1:], len(self.runs))
@@ -44,7 +49,9 @@ class Stretches(Chains):
 def along_order(n: int) -> Stretches:
     """The order of the audit as one chain of n runs."""
     index = np.arange(n, dtype=np.int64)
-    return Stretches(along="order", child=index[1:], parent=index[:-1], starts=index[:1], runs=index, offsets=index[:1])
+    return Stretches(
+        along="order", child=index[1:], parent=index[:-1], starts=index[:1], runs=index, offsets=index[:1]
+    )
 
 
 def within(codes: Codes, name: str) -> Stretches:

@@ -1,11 +1,13 @@
 """A nuisance with very many levels: levels are clusters, and the variance is taken from their sums.
 
-Runs of one level are given an exchangeable correlation, and the variance of the estimate comes from the levels' own scores, so that it holds whatever
-the dependence within a level is (serial, interaction, unequal spread), as long as levels are many.
+Runs of one level are given an exchangeable correlation, and the variance of the estimate comes from the
+levels' own scores, so that it holds whatever the dependence within a level is (serial, interaction, unequal
+spread), as long as levels are many.
 
 References
 ----------
-Liang & Zeger (1986), Biometrika 73:13-22; Bell & McCaffrey (2002), Survey Methodology 28:169-181 (degrees of freedom).
+Liang & Zeger (1986), Biometrika 73:13-22; Bell & McCaffrey (2002), Survey Methodology 28:169-181 (degrees
+of freedom).
 """
 
 from __future__ import annotations

@@ -3,17 +3,26 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from auditd.errors import NotTestable
 from auditd.evidence.clustered import by_cluster
-from auditd.evidence.crossing import Crossing, cross
+from auditd.evidence.crossing import MAX_LEVELS, Crossing, cross
 from auditd.evidence.fit import build
-from auditd.evidence.inputs import Codes, Floats, Labels, as_codes, as_confidence, as_nuisances, as_values, matched_sides
-from auditd.evidence.naive import Naive, welch
-from auditd.evidence.paired import Pairs, pair
+from auditd.evidence.inputs import (
+    Codes,
+    Floats,
+    Labels,
+    as_codes,
+    as_confidence,
+    as_nuisances,
+    as_values,
+    matched_sides,
+)
+from auditd.evidence.naive import welch
+from auditd.evidence.paired import Pairs, adjusted, constant_within, pair
 from auditd.evidence.problem import MAX_CELLS, Problem
 from auditd.evidence.report import Scene, aliased, clustered, solved
 from auditd.evidence.result import Contrast
@@ -46,18 +55,21 @@ def contrast(
 ) -> Contrast:
     """Compare two sides, b − a, with an interval that is honest under the dependence found.
 
-    Errors follow an AR(1) along the order or within a nuisance's levels (whichever shows more), fitted by restricted likelihood and averaged over its
-    coefficient. A nuisance that each compared cell meets is a block; one that is partly crossed is a random effect; each level's own difference between
-    the sides is the error of the comparison. Levels beyond 40 are clusters. A nuisance that cannot be separated from the sides makes the
-    comparison not estimable.
+    Errors follow an AR(1) along the order or within a nuisance's levels (whichever shows more), fitted by
+    restricted likelihood and averaged over its coefficient. A nuisance that each compared cell meets is a
+    block; one that is partly crossed is a random effect; each level's own difference between the sides is
+    the error of the comparison. Levels beyond 40 are clusters. A nuisance that cannot be separated from the
+    sides makes the comparison not estimable.
 
     Parameters
     ----------
     values : (n,) response of the runs in audit order, on the audited scale.
     cells : (n,) label of each run's cell.
-    a, b : label or list of labels; lists of equal length are matched by place, each side's cells weigh equally.
+    a, b : label or list of labels; lists of equal length are matched by place, each side's cells weigh
+        equally.
     nuisance : name to (n,) labels.
-    blocks : (n,) labels of seed blocks (common random numbers), or None. Complete blocks are compared by their differences.
+    blocks : (n,) labels of seed blocks (common random numbers), or None. Complete blocks are compared by
+        their differences.
     confidence : of every interval.
 
     Returns
@@ -71,13 +83,15 @@ def contrast(
 
     Notes
     -----
-    Assumes: errors stationary about the cells' levels; with long memory or a drift confounded with the cells (all of A before B) intervals are too
-    short. Levels of a nuisance are taken as drawn from many; with fewer than about 4 the interval is wide. No warning is not proof of independence.
+    Assumes: errors stationary about the cells' levels; with long memory or a drift confounded with the
+    cells (all of A before B) intervals are too short. Levels of a nuisance are taken as drawn from many;
+    with fewer than about 4 the interval is wide. No warning is not proof of independence.
 
     References
     ----------
-    Harville (1977), JASA 72:320-338; Satterthwaite (1946), Biometrics Bulletin 2:110-114; Hartung & Knapp (2001), Statistics in Medicine
-    20:3875-3889; Robbins (1970), Annals of Mathematical Statistics 41:1397-1409.
+    Harville (1977), JASA 72:320-338; Satterthwaite (1946), Biometrics Bulletin 2:110-114; Hartung & Knapp
+    (2001), Statistics in Medicine 20:3875-3889; Robbins (1970), Annals of Mathematical Statistics
+    41:1397-1409.
     """
     level = as_confidence(confidence)
     y = as_values(values)
@@ -92,9 +106,24 @@ def contrast(
     crossings = tuple(cross(name, codes, coded, weights) for name, codes in nuisances.items())
     runs = Runs(y=(y - centre) / scale, cells=coded, weights=weights, crossings=crossings)
     plain = welch(runs.y, coded.codes, weights, level)
-    remarks = [f"{n_left_out} listed cells have no runs, or no partner with runs, and are left out"] if n_left_out else []
-    remarks += [f"{c.name}: one run a level, so its effect cannot be told from the runs' own spread" for c in crossings if c.kind == "unit"]
-    scene = Scene(naive=plain, scale=scale, n=int((weights[coded.codes] != 0).sum()), confidence=level, sides=_side_counts(coded, weights), remarks=tuple(remarks))
+    remarks = (
+        [f"{n_left_out} listed cells have no runs, or no partner with runs, and are left out"]
+        if n_left_out
+        else []
+    )
+    remarks += [
+        f"{c.name}: one run a level, so its effect cannot be told from the runs' own spread"
+        for c in crossings
+        if c.kind == "unit"
+    ]
+    scene = Scene(
+        naive=plain,
+        scale=scale,
+        n=int((weights[coded.codes] != 0).sum()),
+        confidence=level,
+        sides=_side_counts(coded, weights),
+        remarks=tuple(remarks),
+    )
     return _compare(runs, seeds, scene)
 
 
@@ -103,9 +132,10 @@ def _compare(runs: Runs, seeds: Codes | None, scene: Scene) -> Contrast:
     reasons = [c.reason for c in runs.crossings if c.kind == "aliased" and c.reason]
     if reasons:
         return aliased(scene, "; ".join(reasons))
-    pairs = pair(runs.y, runs.cells, seeds, runs.weights) if seeds is not None else None
-    if pairs is not None:
-        return solved(solve(build(_paired_problem(runs, pairs)), scene.confidence), scene, "differences within seed blocks", ())
+    problem = None if seeds is None else _paired_problem(runs, seeds)
+    if problem is not None:
+        method = f"differences within {len(problem.y)} seed blocks"
+        return solved(solve(build(problem), scene.confidence), scene, method, ())
     many = [c for c in runs.crossings if c.kind == "cluster"]
     if many:
         widest = max(many, key=lambda c: c.codes.n_levels)
@@ -114,8 +144,15 @@ def _compare(runs: Runs, seeds: Codes | None, scene: Scene) -> Contrast:
     problem = _problem(runs)
     model = build(problem)
     if model.moments.n - model.n_fixed < MIN_RESIDUAL_DF:
-        raise NotTestable(f"{MIN_RESIDUAL_DF} runs beyond the cells and blocks", model.moments.n - model.n_fixed)
-    return solved(solve(model, scene.confidence), scene, f"generalised least squares, AR(1) along {model.chains.along}", problem.crossings)
+        raise NotTestable(
+            f"{MIN_RESIDUAL_DF} runs beyond the cells and blocks", model.moments.n - model.n_fixed
+        )
+    return solved(
+        solve(model, scene.confidence),
+        scene,
+        f"generalised least squares along {model.chains.along}",
+        problem.crossings,
+    )
 
 
 def _require_runs(y: Floats, cells: Codes, weights: Floats) -> None:
@@ -146,23 +183,51 @@ def _problem(runs: Runs) -> Problem:
     if len(weights) > MAX_CELLS:
         count = np.bincount(code)
         mean = np.bincount(code, y) / count
-        levels = np.array([-(weights[weights < 0] @ mean[weights < 0]), 0.0, weights[weights > 0] @ mean[weights > 0]])
+        levels = np.array(
+            [-(weights[weights < 0] @ mean[weights < 0]), 0.0, weights[weights > 0] @ mean[weights > 0]]
+        )
         group = (np.sign(weights) + 1).astype(np.int64)[code]
         y = y - mean[code] + levels[group]
         present, code = np.unique(group, return_inverse=True)
         weights = np.array([-1.0, 0.0, 1.0])[present]
-    return Problem(y=y, cell=code, contrast=weights, side=side, crossings=crossings, n_cells_spent=runs.cells.n_levels)
+    return Problem(
+        y=y, cell=code, contrast=weights, side=side, crossings=crossings, n_cells_spent=runs.cells.n_levels
+    )
 
 
-def _paired_problem(runs: Runs, pairs: Pairs) -> Problem:
-    """Differences of blocks as one cell, about their common mean."""
+def _paired_problem(runs: Runs, blocks: Codes) -> Problem | None:
+    """Differences of blocks as one cell, about their common mean; None with too few complete blocks.
+
+    A nuisance that is one throughout each block may have a difference of its own at each level; the effects
+    of one that varies within blocks are taken off.
+    """
+    y, kept = runs.y, []
+    for crossing in runs.crossings:
+        if crossing.kind == "unit":
+            continue
+        if constant_within(crossing, blocks):
+            kept.append(crossing)
+        else:
+            y = adjusted(y, runs.cells, blocks, crossing)
+    pairs = pair(y, runs.cells, blocks, runs.weights)
+    if pairs is None:
+        return None
     n = len(pairs.difference)
     return Problem(
         y=pairs.difference,
         cell=np.zeros(n, dtype=np.int64),
         contrast=np.ones(1),
         side=np.full(n, 0.5),
-        crossings=(),
+        crossings=tuple(
+            _at_pairs(crossing, pairs) for crossing in kept if crossing.codes.n_levels <= MAX_LEVELS
+        ),
         n_cells_spent=1,
         at_zero=NO_MEMORY,
     )
+
+
+def _at_pairs(crossing: Crossing, pairs: Pairs) -> Crossing:
+    """The nuisance by block: no column for its levels, which cancel, but one for each level's own difference."""
+    present, code = np.unique(crossing.codes.codes[pairs.last], return_inverse=True)
+    codes = Codes(codes=code, levels=tuple(crossing.codes.levels[i] for i in present))
+    return replace(crossing, codes=codes, kind="cluster", both=np.arange(len(present)))

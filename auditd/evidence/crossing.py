@@ -16,8 +16,9 @@ MAX_LEVELS = 40  # levels that enter the design one column each; above, levels a
 class Crossing:
     """One nuisance against the cells.
 
-    kind : "block" (each compared cell meets each level), "random" (partly crossed), "cluster" (as random, many levels), "unit" (one run a
-    level), "aliased" (not separable; `reason` says why). both : levels that ran both sides.
+    kind : "block" (each compared cell meets each level), "random" (partly crossed), "cluster" (as random,
+        many levels), "unit" (one run a level), "aliased" (not separable; `reason` says why). both : levels
+        that ran both sides.
     """
 
     name: str
@@ -75,7 +76,7 @@ def _alias_reason(name: str, codes: Codes, left: np.ndarray, right: np.ndarray) 
             f"not separable from {name}: every run of a has {name} {sides[0]}, every run of b {sides[1]}; "
             f"no {name} ran both"
         )
-    return f"not separable from {name}: some compared cells share no {name}, directly or through other cells, with their counterpart"
+    return f"not separable from {name}: some compared cells share no {name} with their counterpart"
 
 
 def _listed(codes: Codes, index: Ints) -> str:

@@ -17,8 +17,9 @@ def originals(duplicates: object, n: int) -> Ints:
 
     Parameters
     ----------
-    duplicates : None; or (n,) booleans, True for a copy of some earlier run; or (n,) integers with −1 for a run that is no copy and otherwise the
-        index of the run copied; or (n,) labels without −1, the same label for copies of one run.
+    duplicates : None; or (n,) booleans, True for a copy of some earlier run; or (n,) integers with −1 for a
+        run that is no copy and otherwise the index of the run copied; or (n,) labels without −1, the same
+        label for copies of one run.
     """
     index = np.arange(n, dtype=np.int64)
     if duplicates is None:
@@ -45,7 +46,9 @@ def as_parents(parents: object, n: int, name: str = "parents") -> Ints:
         raise BadInput(f"{name}: expected integers, −1 for none, got {array.dtype}")
     index = array.astype(np.int64)
     if n and (int(index.min()) < -1 or int(index.max()) >= n):
-        raise BadInput(f"{name}: expected indices from −1 to {n - 1}, got {int(index.min())} to {int(index.max())}")
+        raise BadInput(
+            f"{name}: expected indices from −1 to {n - 1}, got {int(index.min())} to {int(index.max())}"
+        )
     own = np.arange(n, dtype=np.int64)
     if (index == own).any():
         raise BadInput(f"{name}: run {int(own[index == own][0])} is its own parent")

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from auditd.evidence.chains import Chains, along_order, within
+from auditd.evidence.chains import Stretches, along_order, within
 from auditd.evidence.crossing import Crossing
 from auditd.evidence.inputs import Floats, Ints
 from auditd.evidence.moments import Moments
@@ -25,13 +25,13 @@ class Model:
 
     problem: Problem
     columns: Columns
-    chains: Chains
+    chains: Stretches
     moments: Moments
     base: Ints
     n_fixed: int
 
     def ridge(self, share: Floats, lead: int | None, others: dict[int, float]) -> Floats:
-        """Penalty of each base column at each share; `lead` is the random effect that has the share, `others` have theirs."""
+        """Penalty of each base column at each share of the random effect `lead`; `others` have theirs."""
         result = np.zeros((len(share), len(self.problem.contrast)))
         parts = [result]
         for place, crossing in enumerate(self.problem.crossings):
@@ -72,13 +72,13 @@ def build(problem: Problem) -> Model:
     )
 
 
-def choose_chains(problem: Problem, columns: Columns) -> Chains:
-    """The order, or a nuisance's levels, whichever has the larger lag-1 correlation of residuals in standard errors."""
+def choose_chains(problem: Problem, columns: Columns) -> Stretches:
+    """The order or a nuisance's levels: the larger lag-1 correlation of residuals, in standard errors."""
     n = len(problem.y)
-    candidates = [along_order(n)]
+    candidates: list[Stretches] = [along_order(n)]
     for crossing in problem.crossings:
-        if crossing.kind != "unit" and n / crossing.codes.n_levels >= MIN_CHAIN_RUNS:
-            candidates.append(within(crossing.codes, crossing.name))
+        if n / crossing.codes.n_levels >= MIN_CHAIN_RUNS:
+            candidates.append(within(crossing.codes, crossing.name))  # noqa: PERF401  (a typed list)
     if len(candidates) == 1:
         return candidates[0]
     residual = plain_residuals(problem, columns)
@@ -102,15 +102,13 @@ def plain_residuals(problem: Problem, columns: Columns) -> Floats:
 
 
 def weigh(model: Model) -> tuple[Posterior, dict[int, float], int | None]:
-    """Posterior over φ and the strongest partly crossed effect; the shares of the other ones are set by likelihood."""
+    """Posterior over φ and the strongest partly crossed effect; other shares are set by likelihood."""
     random = [place for place, c in enumerate(model.problem.crossings) if c.kind == "random"]
     moments, c = model.moments.select(model.base), model.contrast()
     others: dict[int, float] = {}
     drops: dict[int, float] = {}
     for place in random:
-        fits = evaluate(
-            moments, c, np.zeros(N_SHARES), model.ridge(SHARES, place, others), model.n_fixed
-        )
+        fits = evaluate(moments, c, np.zeros(N_SHARES), model.ridge(SHARES, place, others), model.n_fixed)
         others[place] = float(SHARES[int(np.argmax(fits.loglik))])
         drops[place] = float(fits.loglik.max() - fits.loglik[-1])
     lead = max(random, key=drops.__getitem__) if random else None

@@ -38,7 +38,8 @@ class Codes:
 def as_values(values: object) -> Floats:
     """Check and convert one response.
 
-    Raises BadInput where the array is not one-dimensional, not numeric, not finite, or too large to be squared.
+    Raises BadInput where the array is not one-dimensional, not numeric, not finite, or too large to be
+    squared.
     """
     try:
         array = np.asarray(values)
@@ -51,7 +52,9 @@ def as_values(values: object) -> Floats:
     result = array.astype(np.float64)
     n_bad = int(result.size - np.isfinite(result).sum())
     if n_bad:
-        raise BadInput(f"values: {n_bad} of {result.size} are NaN or infinite; leave such runs out and count them apart")
+        raise BadInput(
+            f"values: {n_bad} of {result.size} are NaN or infinite; leave such runs out and count them apart"
+        )
     if result.size and float(np.abs(result).max()) > LARGEST:
         raise BadInput(f"values: larger than {LARGEST:g} in size; rescale them")
     return result
@@ -101,9 +104,11 @@ def as_nuisances(nuisance: object, n: int) -> dict[str, Codes]:
 
 def as_side(side: object, cells: Codes, name: str) -> list[int | None]:
     """Codes of a label or of a list of labels; None for a label that does not occur."""
-    if isinstance(side, list | np.ndarray):
-        labels = list(side)
-    elif isinstance(side, tuple) and cells.index(side) is None and all(cells.index(i) is not None for i in side):
+    if isinstance(side, list | np.ndarray) or (
+        isinstance(side, tuple)
+        and cells.index(side) is None
+        and all(cells.index(i) is not None for i in side)
+    ):
         labels = list(side)
     else:
         labels = [side]
@@ -120,8 +125,8 @@ def as_side(side: object, cells: Codes, name: str) -> list[int | None]:
 def matched_sides(a: object, b: object, cells: Codes) -> tuple[list[int], list[int], int]:
     """Codes of the two sides' cells, and how many cells were left out.
 
-    Lists of equal length are matched by place: where one of a pair has no runs, both stay out. Lists of different length
-    are not matched: cells without runs stay out by themselves.
+    Lists of equal length are matched by place: where one of a pair has no runs, both stay out. Lists of
+    different length are not matched: cells without runs stay out by themselves.
     """
     side_a, side_b = as_side(a, cells, "a"), as_side(b, cells, "b")
     if set(filter(lambda code: code is not None, side_a)) & set(side_b):
@@ -133,7 +138,10 @@ def matched_sides(a: object, b: object, cells: Codes) -> tuple[list[int], list[i
     else:
         kept_a, kept_b = [i for i in side_a if i is not None], [j for j in side_b if j is not None]
     if not kept_a or not kept_b:
-        raise NotTestable("runs in the cells of both sides", f"cells present: {cells.n_levels}, of the two sides' none matched")
+        raise NotTestable(
+            "runs in the cells of both sides",
+            f"cells present: {cells.n_levels}, of the two sides' none matched",
+        )
     return kept_a, kept_b, n_listed - len(kept_a) - len(kept_b)
 
 

@@ -1,8 +1,10 @@
 """Does each host, build or day have a difference of its own? The error for a claim about hosts in general.
 
-The levels' own differences are random effects. Their variance is estimated by restricted likelihood, and the variance of the contrast is rescaled by the
-observed mean square (Hartung & Knapp): in a balanced design this is exactly the nuisance × cell mean square with levels − 1 degrees of freedom. Half a
-degree of freedom's worth of "no interaction" is mixed in: it shortens intervals with 4 levels by 5 % and costs 0.02 of coverage at most.
+The levels' own differences are random effects. Their variance is estimated by restricted likelihood, and
+the variance of the contrast is rescaled by the observed mean square (Hartung & Knapp): in a balanced design
+this is exactly the nuisance × cell mean square with levels − 1 degrees of freedom. Half a degree of
+freedom's worth of "no interaction" is mixed in: it shortens intervals with 4 levels by 5 % and costs 0.02
+of coverage at most.
 
 References
 ----------
@@ -25,7 +27,8 @@ MIN_ERROR_DF = 3  # runs beyond one a level and side that are needed to tell int
 
 @dataclass(frozen=True, kw_only=True)
 class Interaction:
-    """Variance of the contrast with the levels' own differences as error, its degrees of freedom, and the estimate's move.
+    """Variance of the contrast with the levels' own differences as error, its degrees of freedom, and the
+    estimate's move.
 
     f : mean square of the levels' own differences ÷ error mean square.
     """
@@ -49,8 +52,12 @@ def judge(model: Model, place: int, phi: float, ridge: Floats, base_estimate: fl
     contrast = np.concatenate((model.contrast(), np.zeros(len(slopes))))
     mean_runs = model.moments.n / (4 * len(slopes))
     inside = np.clip(SHARES, 1e-8, 1 - 1e-6)
-    penalties = np.concatenate((mean_runs * inside / (1 - inside), [FIXED_RIDGE * mean_runs, 1e9 * mean_runs]))
-    grid = np.hstack((np.repeat(ridge[None, :], len(penalties), 0), np.repeat(penalties[:, None], len(slopes), 1)))
+    penalties = np.concatenate(
+        (mean_runs * inside / (1 - inside), [FIXED_RIDGE * mean_runs, 1e9 * mean_runs])
+    )
+    grid = np.hstack(
+        (np.repeat(ridge[None, :], len(penalties), 0), np.repeat(penalties[:, None], len(slopes), 1))
+    )
     fits = evaluate(moments, contrast, np.full(len(penalties), phi), grid, model.n_fixed)
     df_base = model.moments.n - model.n_fixed
     rss = fits.sigma2 * df_base

@@ -1,4 +1,4 @@
-"""Level effects of a nuisance within cells: their variance by the analysis of variance, and how surely it is there."""
+"""Level effects of a nuisance within cells: their variance, by the analysis of variance."""
 
 from __future__ import annotations
 
@@ -15,8 +15,10 @@ MIN_DF = 1
 class LevelEffects:
     """One nuisance within cells.
 
-    between, within : mean squares. typical : runs a level and cell, n₀. df : of `between`, not more than levels − 1. df_within.
-    concentration (n_cells,) : Σ over levels of (share of the cell's runs)². level_of : (n,) code of level within cell. means : of those codes.
+    between, within : mean squares. typical : runs a level and cell, n₀. df : of `between`, not more than
+        levels − 1. df_within.
+    concentration (n_cells,) : Σ over levels of (share of the cell's runs)². level_of : (n,) code of level
+        within cell. means : of those codes.
     """
 
     name: str
@@ -39,7 +41,7 @@ class LevelEffects:
 
         bound = fdtri(self.df, self.df_within, 1 - probability)
         expected = self.within * dependence
-        return np.maximum(self.between / bound - expected, 0.0) / self.typical
+        return np.asarray(np.maximum(self.between / bound - expected, 0.0) / self.typical)
 
     def pvalue(self, dependence: float) -> float:
         """Upper tail of the F test with the error inflated by `dependence`."""

@@ -27,9 +27,10 @@ def evidence_loss(
 ) -> EvidenceLoss:
     """Loss of evidence of a comparison (with a and b) or of the cells' means (without).
 
-    1 − (variance if the runs were independent) ÷ (mean squared error under the dependence found), not below 0, with a 95 % interval whose lower end grades
-    a warning. A comparison that cannot be estimated has lost everything. Copies and inherited restarts count against a comparison by their share of the
-    effective number of its cells.
+    1 − (variance if the runs were independent) ÷ (mean squared error under the dependence found), not below
+    0, with a 95 % interval whose lower end grades a warning. A comparison that cannot be estimated has lost
+    everything. Copies and inherited restarts count against a comparison by their share of the effective
+    number of its cells.
 
     Parameters
     ----------
@@ -42,7 +43,9 @@ def evidence_loss(
     if (a is None) != (b is None):
         raise BadInput("a and b: give both, or neither")
     if a is None:
-        found = effective_number(values, cells=cells, nuisance=nuisance, duplicates=duplicates, parents=parents)
+        found = effective_number(
+            values, cells=cells, nuisance=nuisance, duplicates=duplicates, parents=parents
+        )
         return _bounded(found.loss, found.loss_low, found.loss_high)
     y = as_values(values)
     n = len(y)

@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from auditd.evidence.chains import Stretches, along_order, within
+from auditd.evidence.higher import Autoregression, choose_order, looks_white
 from auditd.evidence.inputs import Codes, Floats, Ints
 from auditd.evidence.moments import Moments, gather
 from auditd.evidence.posterior import Posterior, explore, none_found
@@ -16,7 +17,10 @@ from auditd.evidence.steps import MIN_CHAIN_RUNS, segments
 
 MIN_MEAN_CHAIN = 4.0  # runs a chain, on average, for dependence within a nuisance's levels to be asked
 MAX_COLUMNS = 80  # columns of the restricted likelihood; beyond, residuals are taken as they are
-MIN_LEVEL_RUNS = 8.0  # runs a level, on average, for time to be asked where runs of one level follow each other
+MIN_LEVEL_RUNS = (
+    8.0  # runs a level, on average, for time to be asked where runs of one level follow each other
+)
+MIN_HIGHER_RUNS = 50.0  # runs a level, on average, for more than an AR(1): removed means bias further lags
 MAX_STEP_CHAINS = 200  # chains that are searched for steps, the longest first
 
 
@@ -24,8 +28,8 @@ MAX_STEP_CHAINS = 200  # chains that are searched for steps, the longest first
 class Steps:
     """Segments of constant level.
 
-    segment : (n,) code, −1 in chains without a step. owner (S,) : chain of each segment. variance : between the segments of a chain; df : segments beyond
-    one a chain.
+    segment : (n,) code, −1 in chains without a step. owner (S,) : chain of each segment. variance : between
+        the segments of a chain; df : segments beyond one a chain.
     """
 
     segment: Ints
@@ -41,33 +45,57 @@ class Steps:
 
 @dataclass(frozen=True, kw_only=True)
 class Memory:
-    """What was found along time: steps, and the posterior of the AR(1) coefficient along `chains`; variance of one run about its segment."""
+    """What was found along time.
+
+    steps : of the level. posterior : of the AR(1) coefficient along `chains`. higher : an AR(p) where the
+        AR(1) leaves innovations that are not white.
+    variance : of one run about its segment.
+    """
 
     chains: Stretches
     steps: Steps
     posterior: Posterior
+    higher: Autoregression | None
     variance: float
 
 
 def remember(residual: Floats, level: Ints, nuisances: Mapping[str, Codes]) -> Memory:
-    """Find steps and fit the autocorrelation of residuals whose level means (codes `level`) have been taken off."""
+    """Find steps and fit the autocorrelation of residuals about the means of `level` (codes)."""
     candidates: list[Stretches] = [along_order(len(residual))]
     candidates += [
-        within(codes, name) for name, codes in nuisances.items() if len(residual) / codes.n_levels >= MIN_MEAN_CHAIN
+        within(codes, name)
+        for name, codes in nuisances.items()
+        if len(residual) / codes.n_levels >= MIN_MEAN_CHAIN
     ]
     steps, rest = find_steps(residual, choose(residual, candidates))
     chains = choose(rest, candidates)
     posterior, n_fixed = _fit(residual, level, steps, chains)
     return Memory(
-        chains=chains, steps=steps, posterior=posterior, variance=float(rest @ rest) / max(len(rest) - n_fixed, 1)
+        chains=chains,
+        steps=steps,
+        posterior=posterior,
+        higher=_higher(rest, chains, posterior)
+        if len(rest) >= MIN_HIGHER_RUNS * (int(level.max()) + 1)
+        else None,
+        variance=float(rest @ rest) / max(len(rest) - n_fixed, 1),
     )
+
+
+def _higher(rest: Floats, chains: Stretches, posterior: Posterior) -> Autoregression | None:
+    """An AR(p) if the AR(1) was fitted and does not whiten the residuals."""
+    if len(posterior.phi) == 1:
+        return None
+    error = chains.innovations(rest, posterior.quantile(posterior.phi, 0.5))
+    return None if looks_white(error, chains) else choose_order(rest, chains)
 
 
 def choose(residual: Floats, candidates: Sequence[Stretches]) -> Stretches:
     """The chains with the largest lag-1 correlation in standard errors."""
     if len(candidates) == 1:
         return candidates[0]
-    scores = [abs(float(residual[c.child] @ residual[c.parent])) / max(len(c.child), 1) ** 0.5 for c in candidates]
+    scores = [
+        abs(float(residual[c.child] @ residual[c.parent])) / max(len(c.child), 1) ** 0.5 for c in candidates
+    ]
     return candidates[int(np.argmax(scores))]
 
 
@@ -101,7 +129,7 @@ def _measure(residual: Floats, segment: Ints, owner: Ints) -> tuple[Steps, Float
 
 
 def _fit(residual: Floats, level: Ints, steps: Steps, chains: Stretches) -> tuple[Posterior, int]:
-    """Restricted likelihood of φ with the level and segment means as fixed effects; with too many, the moments are corrected for them instead."""
+    """Restricted likelihood of φ about the means; with too many of these, moments are corrected instead."""
     segment, n_segments, n_levels = steps.segment, steps.n_segments, int(level.max()) + 1
     n_fixed = n_levels + steps.df
     same = level[chains.child] == level[chains.parent]
@@ -111,14 +139,18 @@ def _fit(residual: Floats, level: Ints, steps: Steps, chains: Stretches) -> tupl
     columns = 1 if many else n_levels
     group = np.zeros_like(level) if many else level
     _, first, code = np.unique(group * (n_segments + 1) + segment + 1, return_index=True, return_inverse=True)
-    table = np.hstack((
-        (group[first][:, None] == np.arange(columns)).astype(float),
-        (segment[first][:, None] == np.arange(n_segments)).astype(float),
-    ))
+    table = np.hstack(
+        (
+            (group[first][:, None] == np.arange(columns)).astype(float),
+            (segment[first][:, None] == np.arange(n_segments)).astype(float),
+        )
+    )
     moments = gather(residual, code, table, chains)
     if many:
         moments = _corrected(moments, level, chains)
-    ridge = np.concatenate((np.zeros(columns), np.full(n_segments, FIXED_RIDGE * len(residual) / (n_segments + 1))))
+    ridge = np.concatenate(
+        (np.zeros(columns), np.full(n_segments, FIXED_RIDGE * len(residual) / (n_segments + 1)))
+    )
     c = np.zeros(len(ridge))
     c[0] = 1.0
 
@@ -129,7 +161,7 @@ def _fit(residual: Floats, level: Ints, steps: Steps, chains: Stretches) -> tupl
 
 
 def _corrected(moments: Moments, level: Ints, chains: Stretches) -> Moments:
-    """Take out what removing many means did to sums of squares and of lagged products: −σ²/n_level for each pair within a level."""
+    """Undo what removing many means did to the sums: −σ²/n_level for each pair within a level."""
     n, n_levels = moments.n, int(level.max()) + 1
     runs = np.bincount(level)
     raised = n / max(n - n_levels, 1)

@@ -1,7 +1,9 @@
-"""Sums from which generalised least squares with AR(1) errors is computed for any coefficient, in one pass over the runs.
+"""Sums from which generalised least squares with AR(1) errors is computed for any coefficient, in one pass
+over the runs.
 
-With e_t = y_t − φ·y_parent(t), every product sum of the whitened data is a quadratic in φ: S(φ) = S0 − φ·S1 + φ²·S2. Runs are first
-gathered by `code` (their combination of cell and nuisance levels), so that the sums over n runs cost O(n) whatever the number of columns.
+With e_t = y_t − φ·y_parent(t), every product sum of the whitened data is a quadratic in φ: S(φ) = S0 − φ·S1
++ φ²·S2. Runs are first gathered by `code` (their combination of cell and nuisance levels), so that the sums
+over n runs cost O(n) whatever the number of columns.
 """
 
 from __future__ import annotations
@@ -16,7 +18,7 @@ from auditd.evidence.inputs import Floats, Ints
 
 @dataclass(frozen=True, kw_only=True)
 class Moments:
-    """Quadratics in φ: matrices (k, k), right-hand sides (k,) and the squares of y; n runs in n_starts chains."""
+    """Quadratics in φ: matrices (k, k), right-hand sides (k,), squares of y; n runs in n_starts chains."""
 
     matrix: tuple[Floats, Floats, Floats]
     right: tuple[Floats, Floats, Floats]
@@ -48,7 +50,11 @@ def gather(y: Floats, code: Ints, table: Floats, chains: Chains) -> Moments:
     n_codes = table.shape[0]
     child, parent, starts = code[chains.child], code[chains.parent], code[chains.starts]
     y_child, y_parent, y_starts = y[chains.child], y[chains.parent], y[chains.starts]
-    linked = np.bincount(child * n_codes + parent, minlength=n_codes * n_codes).reshape(n_codes, n_codes).astype(float)
+    linked = (
+        np.bincount(child * n_codes + parent, minlength=n_codes * n_codes)
+        .reshape(n_codes, n_codes)
+        .astype(float)
+    )
     lagged = table.T @ linked @ table
     inner = np.bincount(parent, minlength=n_codes) - np.bincount(starts, minlength=n_codes)
     crossed = np.bincount(child, y_parent, n_codes) + np.bincount(parent, y_child, n_codes)
@@ -57,7 +63,11 @@ def gather(y: Floats, code: Ints, table: Floats, chains: Chains) -> Moments:
     return Moments(
         matrix=((table.T * count) @ table, lagged + lagged.T, (table.T * inner) @ table),
         right=(table.T @ np.bincount(code, y, n_codes), table.T @ crossed, table.T @ inner_y),
-        square=(float(y @ y), 2 * float(y_child @ y_parent), float(y_parent @ y_parent - y_starts @ y_starts)),
+        square=(
+            float(y @ y),
+            2 * float(y_child @ y_parent),
+            float(y_parent @ y_parent - y_starts @ y_starts),
+        ),
         n=len(y),
         n_starts=len(starts),
     )

@@ -13,7 +13,8 @@ from auditd.evidence.inputs import Floats, Ints
 class Naive:
     """Welch's comparison of two sides, each the equally weighted mean of its cells.
 
-    variance : of the difference if runs were independent; sd : pooled within the compared cells, with sd_df degrees of freedom.
+    variance : of the difference if runs were independent; sd : pooled within the compared cells, with sd_df
+        degrees of freedom.
     """
 
     estimate: float
@@ -25,7 +26,8 @@ class Naive:
 
 
 def welch(y: Floats, code: Ints, weights: Floats, confidence: float) -> Naive | None:
-    """Compare sides by the cells' weights (negative for a, positive for b); None where no run repeats its cell.
+    """Compare sides by the cells' weights (negative for a, positive for b); None where no run repeats its
+    cell.
 
     References
     ----------
@@ -53,5 +55,10 @@ def welch(y: Floats, code: Ints, weights: Floats, confidence: float) -> Naive | 
     estimate = float(weights @ mean)
     half = float(stdtrit(df_welch, 0.5 + confidence / 2)) * variance**0.5
     return Naive(
-        estimate=estimate, low=estimate - half, high=estimate + half, variance=variance, sd=pooled**0.5, sd_df=sd_df
+        estimate=estimate,
+        low=estimate - half,
+        high=estimate + half,
+        variance=variance,
+        sd=pooled**0.5,
+        sd_df=sd_df,
     )

@@ -18,17 +18,29 @@ from auditd.evidence.persistence import lags_needed, same_cell_pairs
 from auditd.evidence.posterior import Posterior, explore
 from auditd.evidence.restricted import Fits, evaluate
 from auditd.evidence.result import EffectiveNumber
-from auditd.evidence.tally import TAIL, Effect, Ledger, Lineage, concentration, dependence_of, draws, total, units
+from auditd.evidence.tally import (
+    TAIL,
+    Effect,
+    Ledger,
+    Lineage,
+    concentration,
+    dependence_of,
+    draws,
+    total,
+    units,
+)
 
 MIN_RESIDUAL_DF = 3
 MAX_CELLS = 60  # cells whose means are columns of the lineage's likelihood
-AFTER_LINEAGE = 0.0005  # tail in place of 0.025 once lineage explains the order: its innovations are estimated
+AFTER_LINEAGE = (
+    0.0005  # tail in place of 0.025 once lineage explains the order: its innovations are estimated
+)
 SUSPECT = 0.05  # p below which level means are taken off before time is asked
 
 
 @dataclass(frozen=True, kw_only=True)
 class Runs:
-    """Distinct runs: residuals about the cells' means on a scale of 1, codes, and lineage links among them."""
+    """Distinct runs: residuals about the cells' means on a scale of 1, codes, and lineage links."""
 
     residual: Floats
     cell: Ints
@@ -47,19 +59,22 @@ def effective_number(
 ) -> EffectiveNumber:
     """Count the independent runs that would give the cells' means as exactly as these runs do.
 
-    Causes are taken in the order duplicates, lineage, batch, serial, each on what the earlier left. Duplicates count as distinct runs. A restart chain is an
-    AR(1) from parent to child. A batch effect is a variance between the levels of a nuisance within cells. Along time, steps of a level are taken out first
-    and count as levels that could have been others; the rest is an AR(1) along the order or within a nuisance's levels.
+    Causes are taken in the order duplicates, lineage, batch, serial, each on what the earlier left.
+    Duplicates count as distinct runs. A restart chain is an AR(1) from parent to child. A batch effect is a
+    variance between the levels of a nuisance within cells. Along time, steps of a level are taken out first
+    and count as levels that could have been others; the rest is an AR(1) along the order or within a
+    nuisance's levels.
 
-    A cause whose 95 % interval includes "no loss" has the factor 1, so that independent runs lose nothing by chance in 19 of 20 campaigns a cause; what it may
-    cost all the same is in `loss_high`.
+    A cause whose 95 % interval includes "no loss" has the factor 1, so that independent runs lose nothing
+    by chance in 19 of 20 campaigns a cause; what it may cost all the same is in `loss_high`.
 
     Parameters
     ----------
     values : (n,) response of the runs in audit order.
     cells : (n,) label of each run's cell.
     nuisance : name to (n,) labels.
-    duplicates : (n,) booleans (a copy of an earlier run), indices of the run copied or −1, or labels shared by copies; or None.
+    duplicates : (n,) booleans (a copy of an earlier run), indices of the run copied or −1, or labels shared
+        by copies; or None.
     parents : (n,) index of the run each was restarted from, −1 for none; or None.
 
     Returns
@@ -73,13 +88,14 @@ def effective_number(
 
     Notes
     -----
-    Assumes: level effects drawn from one distribution, errors stationary between steps. A slow wander is partly taken for steps; long memory beyond an AR(1)
-    makes the number too large. A dependence that is the same in every run cannot be seen.
+    Assumes: level effects drawn from one distribution, errors stationary between steps. A slow wander is
+    partly taken for steps; long memory beyond an AR(1) makes the number too large. A dependence that is the
+    same in every run cannot be seen.
 
     References
     ----------
-    Kish (1965), Survey Sampling, section 8.2 (design effect); Searle (1971), Linear Models, chapters 9-10; Bayley & Hammersley (1946), Supplement to
-    JRSS 8:184-197 (effective number under autocorrelation).
+    Kish (1965), Survey Sampling, section 8.2 (design effect); Searle (1971), Linear Models, chapters 9-10;
+    Bayley & Hammersley (1946), Supplement to JRSS 8:184-197 (effective number under autocorrelation).
     """
     y = as_values(values)
     n = len(y)
@@ -89,7 +105,9 @@ def effective_number(
     links = None if parents is None else as_parents(parents, n)
     kept = np.flatnonzero(original == np.arange(n))
     chains = None if links is None else lineage(links, original, kept)
-    runs, remarks = _prepare(y[kept], coded.codes[kept], {k: _some(v, kept) for k, v in nuisances.items()}, chains)
+    runs, remarks = _prepare(
+        y[kept], coded.codes[kept], {k: _some(v, kept) for k, v in nuisances.items()}, chains
+    )
     return _count(runs, n, remarks)
 
 
@@ -98,7 +116,9 @@ def _some(codes: Codes, kept: Ints) -> Codes:
     return Codes(codes=code, levels=tuple(codes.levels[i] for i in present))
 
 
-def _prepare(y: Floats, cell: Ints, nuisances: dict[str, Codes], links: Chains | None) -> tuple[Runs, list[str]]:
+def _prepare(
+    y: Floats, cell: Ints, nuisances: dict[str, Codes], links: Chains | None
+) -> tuple[Runs, list[str]]:
     """Residuals about the cells' means, and the nuisances that can be asked."""
     _, cell = np.unique(cell, return_inverse=True)
     count = np.bincount(cell).astype(float)
@@ -137,18 +157,22 @@ def _lineage(runs: Runs) -> Lineage | None:
 
     same = runs.cell[links.child] == runs.cell[links.parent]
     continued = np.bincount(runs.cell[links.child[same]], minlength=n_cells).astype(float)
-    return Lineage(begun=runs.count - continued, continued=continued, posterior=explore(fit, with_share=False))
+    return Lineage(
+        begun=runs.count - continued, continued=continued, posterior=explore(fit, with_share=False)
+    )
 
 
 def _suspects(residual: Floats, runs: Runs) -> tuple[list[LevelEffects], Ints, Floats, list[str]]:
-    """Level effects of every nuisance, strongest first; the codes and residuals with the suspicious ones' means taken off."""
+    """Level effects, strongest first; codes and residuals with the suspicious ones' means taken off."""
     found: list[LevelEffects] = []
     remarks: list[str] = []
     level, rest, waiting = runs.cell, residual, dict(runs.nuisances)
     while waiting:
         asked = {k: effects(k, rest, v, runs.cell, len(runs.count)) for k, v in waiting.items()}
         for name in [k for k, v in asked.items() if v is None]:
-            remarks.append(f"{name}: each cell ran on one level, or each level once; what its levels cost cannot be estimated")
+            remarks.append(
+                f"{name}: each cell ran on one level, or each level once; what levels cost cannot be told"
+            )
             del waiting[name], asked[name]
         known = [v for v in asked.values() if v is not None]
         if not known:
@@ -169,22 +193,39 @@ def _count(runs: Runs, n: int, remarks: list[str]) -> EffectiveNumber:
     family = _lineage(runs)
     inherited = _sign(family.posterior) > 0 if family else False
     rho = family.posterior.quantile(family.posterior.phi, 0.5) if family and inherited else 0.0
-    residual = runs.links.innovations(runs.residual, rho) if runs.links is not None and inherited else runs.residual
+    residual = (
+        runs.links.innovations(runs.residual, rho) if runs.links is not None and inherited else runs.residual
+    )
     level_effects, level, rest, more = _suspects(residual, runs)
     memory = remember(rest, level, runs.nuisances)
     n_cells, chains = len(runs.count), memory.chains
     phi = memory.posterior.quantile(memory.posterior.phi, 0.5)
-    pairs = same_cell_pairs(runs.cell, n_cells, chains, lags_needed(phi, len(chains.runs) // len(chains.offsets) + 1))
+    reach = phi if memory.higher is None else 1.0
+    pairs = same_cell_pairs(runs.cell, n_cells, chains, lags_needed(reach, int(chains.mean_runs) + 1))
     stepped, weight = concentration(runs.cell, n_cells, memory.steps.segment)
     bare = Ledger(
-        count=runs.count, lineage=family, effects=(), memory=memory, pairs=pairs, stepped=stepped, segment_weight=weight
+        count=runs.count,
+        lineage=family,
+        effects=(),
+        memory=memory,
+        pairs=pairs,
+        stepped=stepped,
+        segment_weight=weight,
     )
     tail = AFTER_LINEAGE if inherited else TAIL
     sure = phi if _sign(memory.posterior, tail) else 0.0
     cell_inflation = bare.persistence(np.array([sure]))[0]
-    judged = tuple(_judged(e, dependence_of(e, memory, cell_inflation, sure, runs.cell)) for e in level_effects)
+    judged = tuple(
+        _judged(e, dependence_of(e, memory, cell_inflation, sure, runs.cell)) for e in level_effects
+    )
     ledger = Ledger(
-        count=runs.count, lineage=family, effects=judged, memory=memory, pairs=pairs, stepped=stepped, segment_weight=weight
+        count=runs.count,
+        lineage=family,
+        effects=judged,
+        memory=memory,
+        pairs=pairs,
+        stepped=stepped,
+        segment_weight=weight,
     )
     return _result(ledger, n, rho, tail, tuple(remarks + more))
 
@@ -204,7 +245,7 @@ def _result(ledger: Ledger, n: int, rho: float, tail: float, remarks: tuple[str,
     """Factors of the causes one after the other, and the interval of all together."""
     memory, one = ledger.memory, np.ones(1)
     posterior = memory.posterior
-    dependent = _sign(posterior, tail) != 0
+    dependent = _sign(posterior, tail) != 0 or memory.higher is not None
     phi = posterior.phi if dependent else np.zeros(1)
     mass = posterior.weight if dependent else one
     left = units(ledger, np.array([rho]))
@@ -217,12 +258,18 @@ def _result(ledger: Ledger, n: int, rho: float, tail: float, remarks: tuple[str,
     n_serial = float(mass @ total(ledger, left, batch, step, ledger.persistence(phi), serial=True))
     spread = np.quantile(1 - draws(ledger) / n, (TAIL, 1 - TAIL))
     loss = 1 - n_serial / n
-    detail = {"phi": posterior.quantile(posterior.phi, 0.5), "steps": float(memory.steps.n_segments and memory.steps.df)}
+    detail = {
+        "phi": posterior.quantile(posterior.phi, 0.5),
+        "order": float(1 if memory.higher is None else len(memory.higher.coefficients)),
+        "steps": float(memory.steps.df),
+    }
     if ledger.lineage is not None:
         detail["rho"] = ledger.lineage.posterior.quantile(ledger.lineage.posterior.phi, 0.5)
     for effect in ledger.effects:
         size = effect.effects.variance(effect.dependence)
-        detail[f"icc {effect.effects.name}"] = size / (size + memory.variance + memory.steps.variance * float(ledger.stepped.mean()))
+        detail[f"icc {effect.effects.name}"] = size / (
+            size + memory.variance + memory.steps.variance * float(ledger.stepped.mean())
+        )
     return EffectiveNumber(
         n=n,
         n_effective=n_serial,

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from auditd.evidence.crossing import MAX_LEVELS, Crossing
 from auditd.evidence.inputs import Codes, Floats, Ints
 
 MIN_BLOCKS = 4  # complete blocks that a paired comparison needs
@@ -24,7 +25,7 @@ class Pairs:
 
 
 def pair(y: Floats, cells: Codes, blocks: Codes, weights: Floats) -> Pairs | None:
-    """Difference of the sides within every block that holds all compared cells; None with too few of those."""
+    """Difference of the sides within every block with all compared cells; None with too few of those."""
     compared = np.flatnonzero(weights)
     place = np.full(cells.n_levels, -1, dtype=np.int64)
     place[compared] = np.arange(len(compared))
@@ -40,6 +41,38 @@ def pair(y: Floats, cells: Codes, blocks: Codes, weights: Floats) -> Pairs | Non
     last = np.zeros(blocks.n_levels, dtype=np.int64)
     last[blocks.codes[used]] = used  # the last assignment stands
     order = np.argsort(last[complete], kind="stable")
-    return Pairs(
-        difference=difference[order], last=last[complete][order], n_runs=int(count[complete].sum())
+    return Pairs(difference=difference[order], last=last[complete][order], n_runs=int(count[complete].sum()))
+
+
+def constant_within(crossing: Crossing, blocks: Codes) -> bool:
+    """Whether every block ran on one level of the nuisance."""
+    low = np.full(blocks.n_levels, crossing.codes.n_levels, dtype=np.int64)
+    high = np.full(blocks.n_levels, -1, dtype=np.int64)
+    np.minimum.at(low, blocks.codes, crossing.codes.codes)
+    np.maximum.at(high, blocks.codes, crossing.codes.codes)
+    return bool((low == high).all())
+
+
+def adjusted(y: Floats, cells: Codes, blocks: Codes, crossing: Crossing) -> Floats:
+    """Take off level effects of a nuisance that differs within blocks, estimated within blocks and cells."""
+    n_levels = crossing.codes.n_levels
+    if n_levels > MAX_LEVELS:
+        return y
+    width = cells.n_levels + n_levels
+    size = np.bincount(blocks.codes).astype(float)
+    counts = np.hstack(
+        [
+            np.bincount(
+                blocks.codes * codes.n_levels + codes.codes, minlength=blocks.n_levels * codes.n_levels
+            ).reshape(blocks.n_levels, codes.n_levels)
+            for codes in (cells, crossing.codes)
+        ]
     )
+    met = np.bincount(cells.codes * n_levels + crossing.codes.codes, minlength=cells.n_levels * n_levels)
+    joint = met.reshape(cells.n_levels, n_levels)
+    gram = np.block([[np.diag(joint.sum(1)), joint], [joint.T, np.diag(joint.sum(0))]]).astype(float)
+    gram -= (counts.T / size) @ counts
+    centred = y - (np.bincount(blocks.codes, y) / size)[blocks.codes]
+    right = np.concatenate([np.bincount(c.codes, centred, c.n_levels) for c in (cells, crossing.codes)])
+    effect = np.linalg.lstsq(gram, right, rcond=1e-10)[0][width - n_levels :]
+    return np.asarray(y - effect[crossing.codes.codes])

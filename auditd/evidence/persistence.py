@@ -43,8 +43,8 @@ def lags_needed(correlation: float, longest: int) -> int:
 def inflation(phi: Floats, pairs: Floats, count: Floats, chain_runs: float) -> Floats:
     """Variance of each cell's mean ÷ its variance if runs were independent, for each φ: (G, n_cells).
 
-    1 + (2 / n_c)·Σ_k φ^k·(pairs of the cell at lag k); beyond the counted lags the share of pairs is the mean of the last ones, less what the chains'
-    ends cut off.
+    1 + (2 / n_c)·Σ_k φ^k·(pairs of the cell at lag k); beyond the counted lags the share of pairs is the
+    mean of the last ones, less what the chains' ends cut off.
     """
     n_lags = len(pairs)
     exact = autocorrelations(phi, n_lags) @ pairs
@@ -55,4 +55,15 @@ def inflation(phi: Floats, pairs: Floats, count: Floats, chain_runs: float) -> F
     cut = decay * phi * (1 - phi**left) / np.maximum(left * (1 - phi) ** 2, 1e-300) if left > 0 else whole
     tail = np.maximum(whole - cut, 0.0) if left > 0 else np.zeros_like(phi)
     result = 1 + 2 * (exact + tail[:, None] * tail_share) / count
-    return np.maximum(result, 1e-3)
+    return np.asarray(np.maximum(result, 1e-3))
+
+
+def inflation_by(correlation: Floats, pairs: Floats, count: Floats, chain_runs: float) -> Floats:
+    """As `inflation`, for autocorrelations at lags 1, 2, … to where they are negligible: (n_cells,)."""
+    n_lags = min(len(pairs), len(correlation))
+    exact = correlation[:n_lags] @ pairs[:n_lags]
+    lags = np.arange(n_lags + 1, len(correlation) + 1)
+    fading = np.maximum(1 - (lags - n_lags) / max(chain_runs - n_lags, 1.0), 0.0)
+    tail = float(correlation[n_lags:] @ fading)
+    result = 1 + 2 * (exact + tail * pairs[-max(n_lags // 4, 1) :].mean(0)) / count
+    return np.asarray(np.maximum(result, 1e-3))

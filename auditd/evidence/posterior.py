@@ -1,9 +1,11 @@
 """Weights over the nuisance parameters, so that an interval pays for not knowing them.
 
-A plug-in coefficient makes intervals too short where few effective runs are left. Here the contrast is averaged over the restricted likelihood
-of φ (and of a random effect's share) times a prior. The priors were chosen for coverage and width, not for belief: φ has density ∝ (1 − φ)^(−1/5), uniform in
-t = ((1 − φ)/2)^(4/5); the share B = σ² / (σ² + m·σ²_level) of a random effect has density ∝ B^(−1/2), uniform in √B. For block differences, half the prior
-mass is on φ = 0: a mean of few differences would else pay for correlations that nothing speaks for.
+A plug-in coefficient makes intervals too short where few effective runs are left. Here the contrast is
+averaged over the restricted likelihood of φ (and of a random effect's share) times a prior. The priors were
+chosen for coverage and width, not for belief: φ has density ∝ (1 − φ)^(−1/5), uniform in t = ((1 −
+φ)/2)^(4/5); the share B = σ² / (σ² + m·σ²_level) of a random effect has density ∝ B^(−1/2), uniform in √B.
+For block differences, half the prior mass is on φ = 0: a mean of few differences would else pay for
+correlations that nothing speaks for.
 """
 
 from __future__ import annotations
@@ -16,7 +18,9 @@ import numpy as np
 from auditd.evidence.inputs import Floats
 from auditd.evidence.restricted import Fits
 
-PHI_POWER = 1.25  # see above: larger is wider at 60 runs and φ = 0.3, smaller covers less at 60 runs and φ = 0.9
+PHI_POWER = (
+    1.25  # see above: larger is wider at 60 runs and φ = 0.3, smaller covers less at 60 runs and φ = 0.9
+)
 PHI_RANGE = (-0.98, 0.999)  # beyond, a stationary fit has no meaning
 N_NODES = 25  # grid points for φ alone
 N_NODES_PLANE = 13  # grid points an axis when a random effect is estimated too
@@ -64,7 +68,9 @@ class Posterior:
 def none_found() -> Posterior:
     """All weight on φ = 0: dependence in time was not asked."""
     zero, one = np.zeros(1), np.ones(1)
-    fits = Fits(loglik=zero, estimate=zero, unit=one, sigma2=one, coefficients=zero[None], leverage=zero[None])
+    fits = Fits(
+        loglik=zero, estimate=zero, unit=one, sigma2=one, coefficients=zero[None], leverage=zero[None]
+    )
     return Posterior(phi=zero, share=one, weight=one, fits=fits, best=0)
 
 
@@ -103,7 +109,9 @@ def explore(fit: Callable[[Floats, Floats], Fits], *, with_share: bool, at_zero:
 
 def joined(first: Fits, second: Fits) -> Fits:
     """Fits of two grids, one after the other."""
-    return Fits(**{f.name: np.concatenate((getattr(first, f.name), getattr(second, f.name))) for f in fields(Fits)})
+    return Fits(
+        **{f.name: np.concatenate((getattr(first, f.name), getattr(second, f.name))) for f in fields(Fits)}
+    )
 
 
 def _narrow(nodes: Floats, kept: np.ndarray, limits: tuple[float, float]) -> tuple[bool, tuple[float, float]]:

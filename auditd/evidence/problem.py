@@ -1,4 +1,4 @@
-"""A comparison as a linear model: columns for cells, for nuisance levels, and for each level's own difference between the sides."""
+"""A comparison as a linear model: cells, nuisance levels, and each level's own difference of the sides."""
 
 from __future__ import annotations
 
@@ -18,8 +18,10 @@ MAX_CELLS = 60  # cells that get a column each; with more, runs are centred with
 class Problem:
     """Runs and columns of one comparison.
 
-    y : (n,) centred and scaled. cell : (n,) code. contrast : (n_cells,) weights. side : (n,) −½ for a, +½ for b, 0 for other cells.
-    crossings : nuisances with columns. n_cells_spent : degrees of freedom that cells cost (more than n_cells after centring).
+    y : (n,) centred and scaled. cell : (n,) code. contrast : (n_cells,) weights. side : (n,) −½ for a, +½
+        for b, 0 for other cells.
+    crossings : nuisances with columns. n_cells_spent : degrees of freedom that cells cost (more than
+        n_cells after centring).
     at_zero : prior probability of no autocorrelation.
     """
 
@@ -34,7 +36,7 @@ class Problem:
 
 @dataclass(frozen=True, kw_only=True)
 class Columns:
-    """The design by code: table (K, k), each run's code, and which columns are what (crossing index → columns)."""
+    """The design by code: table (K, k), each run's code, and what the columns are, by crossing index."""
 
     code: Ints
     table: Floats

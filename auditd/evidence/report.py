@@ -91,7 +91,7 @@ def solved(solution: Solution, scene: Scene, method: str, crossings: tuple[Cross
         inflation_low=solution.quantile(inflation, tail) * low,
         inflation_high=solution.quantile(inflation, 1 - tail) * high,
     )
-    words = [f"{method} ({solution.phi:.2f})"]
+    words = [f"{method}, AR({solution.order}), first coefficient {solution.phi:.2f}"]
     words += [f"{c.name} as {'block' if c.kind == 'block' else 'random effect'}" for c in crossings]
     if solution.interaction is not None:
         words.append(f"{solution.interaction.name} × cell as error")
@@ -114,7 +114,11 @@ def clustered(found: Clustered, scene: Scene, name: str) -> Contrast:
         inflation_low=inflation * found.df / float(chdtri(found.df, tail)),
         inflation_high=inflation * found.df / float(chdtri(found.df, 1 - tail)),
     )
-    return _filled(measured, scene, f"{name} as clusters, exchangeable within ({found.icc:.2f}), variance from their sums")
+    return _filled(
+        measured,
+        scene,
+        f"{name} as clusters, exchangeable within ({found.icc:.2f}), variance from their sums",
+    )
 
 
 def _independent(scene: Scene) -> tuple[float | None, float]:
@@ -171,7 +175,8 @@ def _effect(measured: Measured, naive: Naive | None, confidence: float) -> tuple
 
     References
     ----------
-    Hedges (1981), Journal of Educational Statistics 6:107-128; Hedges & Olkin (1985), Statistical Methods for Meta-Analysis, section 5.
+    Hedges (1981), Journal of Educational Statistics 6:107-128; Hedges & Olkin (1985), Statistical Methods
+    for Meta-Analysis, section 5.
     """
     from scipy.special import gammaln, stdtrit
 

@@ -1,4 +1,4 @@
-"""The restricted likelihood of AR(1) errors with random effects, and what it says of one contrast, over a grid of parameters."""
+"""The restricted likelihood of AR(1) errors with random effects, over a grid, and one contrast under it."""
 
 from __future__ import annotations
 
@@ -16,8 +16,8 @@ FIXED_RIDGE = 1e-7  # of the mean diagonal: settles aliased block columns withou
 class Fits:
     """Fits on a grid of G parameter values.
 
-    loglik (G,) restricted log-likelihood; estimate (G,) of the contrast; unit (G,) its variance ÷ innovation variance;
-    sigma2 (G,) innovation variance; coefficients (G, k); leverage (G, k) = A⁻¹c.
+    loglik (G,) restricted log-likelihood; estimate (G,) of the contrast; unit (G,) its variance ÷
+    innovation variance; sigma2 (G,) innovation variance; coefficients (G, k); leverage (G, k) = A⁻¹c.
     """
 
     loglik: Floats
@@ -65,6 +65,6 @@ def evaluate(moments: Moments, c: Floats, phi: Floats, ridge: Floats, n_fixed: i
         estimate=solved[:, :, 0] @ c,
         unit=solved[:, :, 1] @ c,
         sigma2=rest / df,
-        coefficients=solved[:, :, 0],
-        leverage=solved[:, :, 1],
+        coefficients=np.asarray(solved[:, :, 0], dtype=np.float64),
+        leverage=np.asarray(solved[:, :, 1], dtype=np.float64),
     )

@@ -18,7 +18,8 @@ class Contrast:
     method : what was fitted, in words.
     estimable, reason : whether the comparison can be estimated, and why not.
     n : runs in the compared cells.
-    n_effective : n × variance if the runs were independent ÷ variance under the dependence found; above n where order or blocks help.
+    n_effective : n × variance if the runs were independent ÷ variance under the dependence found; above n
+        where order or blocks help.
     loss, loss_low, loss_high : evidence loss, 1 − n_effective / n, with an interval at the same confidence.
     naive_low, naive_high : Welch's interval, which takes the runs as independent.
     hedges_g, g_low, g_high : difference in standard deviations within cells, with an honest interval.
@@ -59,8 +60,9 @@ class EffectiveNumber:
     ----------
     n, n_effective : runs, and independent runs that would give the cells' means as exactly.
     loss, loss_low, loss_high : 1 − n_effective / n with a 95 % interval.
-    parts : factor of each cause, in the order duplicates, lineage, batch, serial; their product is n_effective / n. A cause whose interval
-        does not exclude "no loss" has the factor 1: what it may cost is in loss_high.
+    parts : factor of each cause, in the order duplicates, lineage, batch, serial; their product is
+        n_effective / n. A cause whose interval does not exclude "no loss" has the factor 1: what it may
+        cost is in loss_high.
     detail : the estimates behind the parts, by name.
     remarks : what else a reader has to know, one sentence each.
     """

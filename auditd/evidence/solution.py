@@ -7,6 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from auditd.evidence.fit import Model, errors_of, weigh
+from auditd.evidence.higher import choose_order, looks_white, whitened_fit
 from auditd.evidence.inputs import Floats
 from auditd.evidence.interaction import Interaction, judge
 from auditd.evidence.mixture import half_width
@@ -20,8 +21,10 @@ ROBUST_T = 0.975  # where interactions of several nuisances are ranked by the wi
 class Solution:
     """Result on the scale of the fit.
 
-    variances, marginals : (G,) variance of the estimate, and variance of one run, at each grid point; weights (G,) of the points.
-    scatter_df : degrees of freedom of the interaction's mean square, infinite where none enters.
+    variances, marginals : (G,) variance of the estimate, and variance of one run, at each grid point;
+        weights (G,) of the points.
+    scatter_df : degrees of freedom of the interaction's mean square, infinite where none enters. order : of
+        the autoregression.
     """
 
     estimate: float
@@ -33,6 +36,7 @@ class Solution:
     phi: float
     scatter_df: float
     interaction: Interaction | None
+    order: int
 
     def quantile(self, x: Floats, p: float) -> float:
         """Quantile of a quantity known at the grid points."""
@@ -42,7 +46,7 @@ class Solution:
 
 
 def solve(model: Model, confidence: float) -> Solution:
-    """Weigh the parameters, correct for unequal spread and for the levels' own differences, and take the interval."""
+    """Weigh the parameters, correct for unequal spread and the levels' own differences, take the interval."""
     from scipy.special import stdtrit
 
     posterior, others, lead = weigh(model)
@@ -51,7 +55,13 @@ def solve(model: Model, confidence: float) -> Solution:
     nu = float(model.moments.n - model.n_fixed)
     error, weight = errors_of(model, fits.coefficients[best], fits.leverage[best], phi)
     spread = by_side(
-        error, weight, model.problem.side, model.problem.cell, float(fits.unit[best]), float(fits.sigma2[best]), nu
+        error,
+        weight,
+        model.problem.side,
+        model.problem.cell,
+        float(fits.unit[best]),
+        float(fits.sigma2[best]),
+        nu,
     )
     centre = posterior.mean(fits.estimate)
     variances = fits.unit * fits.sigma2 * spread.ratio
@@ -59,6 +69,11 @@ def solve(model: Model, confidence: float) -> Solution:
     uncertainty = _relative_variance(posterior, np.log(variances))
     df = 1 / (1 / spread.df + 0.5 * uncertainty)
     ridge = model.ridge(posterior.share[best : best + 1], lead, others)[0]
+    longer = _longer_memory(model, posterior, error, ridge)
+    if longer is not None:
+        centre += longer.shift
+        half *= longer.factor**0.5
+        variances = variances * longer.factor
     scatter = _widest(
         [judge(model, place, phi, ridge, float(fits.estimate[best])) for place in model.columns.slopes]
     )
@@ -67,7 +82,9 @@ def solve(model: Model, confidence: float) -> Solution:
         factor = scatter.variance / float(fits.unit[best] * fits.sigma2[best])
         scatter_df = scatter.df
         df_scatter = 1 / (1 / scatter.df + 0.5 * uncertainty)
-        half *= factor**0.5 * float(stdtrit(df_scatter, 0.5 + confidence / 2) / stdtrit(df, 0.5 + confidence / 2))
+        half *= factor**0.5 * float(
+            stdtrit(df_scatter, 0.5 + confidence / 2) / stdtrit(df, 0.5 + confidence / 2)
+        )
         df, centre = df_scatter, centre + scatter.shift
     return Solution(
         estimate=centre,
@@ -79,6 +96,39 @@ def solve(model: Model, confidence: float) -> Solution:
         phi=posterior.mean(posterior.phi),
         scatter_df=scatter_df,
         interaction=scatter,
+        order=1 if longer is None else longer.order,
+    )
+
+
+@dataclass(frozen=True, kw_only=True)
+class Longer:
+    """What an AR(p) makes of the AR(1)'s estimate and variance."""
+
+    order: int
+    shift: float
+    factor: float
+
+
+def _longer_memory(model: Model, posterior: Posterior, error: Floats, ridge: Floats) -> Longer | None:
+    """Refit with an AR(p) where innovations are not white; uncertainty carries over in proportion."""
+    if looks_white(error, model.chains):
+        return None
+    fits, best = posterior.fits, posterior.best
+    table = model.columns.table[:, model.base]
+    code = model.columns.code
+    residual = model.problem.y - (table @ fits.coefficients[best])[code]
+    chosen = choose_order(residual, model.chains)
+    if chosen is None:
+        return None
+    refit = whitened_fit(
+        model.problem.y, code, table, model.contrast(), ridge, model.chains, chosen, model.n_fixed
+    )
+    if refit is None:
+        return None
+    estimate, variance = refit
+    before = float(fits.unit[best] * fits.sigma2[best])
+    return Longer(
+        order=len(chosen.coefficients), shift=estimate - float(fits.estimate[best]), factor=variance / before
     )
 
 

@@ -13,13 +13,15 @@ MIN_SIDE_DF = 3  # innovations beyond the cells' means that a side needs for a v
 
 @dataclass(frozen=True, kw_only=True)
 class Spread:
-    """Variance of the estimate with each side's own innovation variance ÷ with a common one, and its degrees of freedom."""
+    """Variance with each side's own innovation variance ÷ with a common one, and degrees of freedom."""
 
     ratio: float
     df: float
 
 
-def by_side(error: Floats, weight: Floats, side: Floats, cell: Ints, unit: float, sigma2: float, df: float) -> Spread:
+def by_side(
+    error: Floats, weight: Floats, side: Floats, cell: Ints, unit: float, sigma2: float, df: float
+) -> Spread:
     """Let a, b and the other cells have a variance each.
 
     With φ = 0 and no nuisance this is Welch's variance and Satterthwaite's degrees of freedom exactly.
@@ -27,7 +29,8 @@ def by_side(error: Floats, weight: Floats, side: Floats, cell: Ints, unit: float
     Parameters
     ----------
     error, weight : (n,) innovations, and their weights in the estimate.
-    unit, sigma2, df : variance of the estimate ÷ innovation variance, the common innovation variance, its degrees of freedom.
+    unit, sigma2, df : variance of the estimate ÷ innovation variance, the common innovation variance, its
+        degrees of freedom.
     """
     total, spent, own = 0.0, 0.0, 0.0
     for value in (-0.5, 0.0, 0.5):

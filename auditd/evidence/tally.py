@@ -9,17 +9,18 @@ import numpy as np
 from auditd.evidence.inputs import Floats, Ints
 from auditd.evidence.levels import LevelEffects
 from auditd.evidence.memory import Memory
-from auditd.evidence.persistence import inflation, lags_needed, same_cell_pairs
+from auditd.evidence.persistence import inflation, inflation_by, lags_needed, same_cell_pairs
 from auditd.evidence.posterior import Posterior
 
 CONFIDENCE = 0.95
 TAIL = (1 - CONFIDENCE) / 2
+MAX_LAGS = 3000  # lags to which an AR(p) is summed
 N_DRAWS = 400  # points of a low-discrepancy sequence over the estimates' uncertainty
 
 
 @dataclass(frozen=True, kw_only=True)
 class Lineage:
-    """Restart chains: by cell, chains that begin and runs that continue one; the posterior of the parent's coefficient."""
+    """Restart chains: by cell, chains begun and runs that continue one; the coefficient's posterior."""
 
     begun: Floats
     continued: Floats
@@ -28,7 +29,7 @@ class Lineage:
 
 @dataclass(frozen=True, kw_only=True)
 class Effect:
-    """A nuisance's level effects and the inflation of its level means by what happens within levels; `found`: its interval excludes 0."""
+    """Level effects; inflation of their means by what happens within; found: the interval excludes 0."""
 
     effects: LevelEffects
     dependence: float
@@ -39,8 +40,8 @@ class Effect:
 class Ledger:
     """All that enters the variance of the cells' means.
 
-    count (C,) distinct runs; pairs (lags, C) of one cell along the chains; stepped (C,) share of runs in chains with steps; segment_weight (C,) Σ (share
-    of the cell's runs in a segment)².
+    count (C,) distinct runs; pairs (lags, C) of one cell along the chains; stepped (C,) share of runs in
+    chains with steps; segment_weight (C,) Σ (share of the cell's runs in a segment)².
     """
 
     count: Floats
@@ -53,8 +54,16 @@ class Ledger:
 
     def persistence(self, phi: Floats) -> Floats:
         """Inflation of the cells' means by an AR(1), for each φ: (G, C)."""
-        chains = self.memory.chains
-        return inflation(phi, self.pairs, self.count, len(chains.runs) / len(chains.offsets))
+        chain_runs = self.memory.chains.mean_runs
+        result = inflation(phi, self.pairs, self.count, chain_runs)
+        higher, posterior = self.memory.higher, self.memory.posterior
+        if higher is None:
+            return result
+        centre = inflation(
+            np.array([posterior.quantile(posterior.phi, 0.5)]), self.pairs, self.count, chain_runs
+        )[0]
+        longer = inflation_by(higher.autocorrelations(MAX_LAGS), self.pairs, self.count, chain_runs)
+        return np.asarray(result * (longer / centre))
 
 
 def concentration(group: Ints, n_groups: int, segment: Ints) -> tuple[Floats, Floats]:
@@ -69,13 +78,15 @@ def concentration(group: Ints, n_groups: int, segment: Ints) -> tuple[Floats, Fl
     return share, np.bincount(slots // n_segments, sizes.astype(float) ** 2, n_groups) / count**2
 
 
-def dependence_of(effects: LevelEffects, memory: Memory, cell_inflation: Floats, phi: float, cell: Ints) -> float:
-    """Expected mean square between levels ÷ within, if levels had no effects of their own but runs within them depended."""
+def dependence_of(
+    effects: LevelEffects, memory: Memory, cell_inflation: Floats, phi: float, cell: Ints
+) -> float:
+    """Expected mean square between levels ÷ within, had levels no effects but dependence within them."""
     n_slots, n_cells = len(effects.means), len(cell_inflation)
     slot = effects.level_of
     size = np.bincount(slot, minlength=n_slots).astype(float)
     chains = memory.chains
-    mean_chain = len(chains.runs) / len(chains.offsets)
+    mean_chain = chains.mean_runs
     pairs = same_cell_pairs(slot, n_slots, chains, lags_needed(phi, int(mean_chain) + 1))
     slots = inflation(np.array([phi]), pairs, size, mean_chain)[0]
     df = max(n_slots - n_cells, 1)
@@ -88,20 +99,24 @@ def dependence_of(effects: LevelEffects, memory: Memory, cell_inflation: Floats,
 
 
 def units(ledger: Ledger, rho: Floats) -> Floats:
-    """Runs that lineage leaves, by cell, for each ρ: (G, C). Chains count 1, each further run (1 − ρ)/(1 + ρ)."""
+    """Runs that lineage leaves, by cell: (G, C). A chain counts 1, each further run (1 − ρ)/(1 + ρ)."""
     if ledger.lineage is None:
         return np.broadcast_to(ledger.count, (len(rho), len(ledger.count)))
     kept = np.clip(rho, 0, 1)
     return np.asarray(ledger.lineage.begun + ((1 - kept) / (1 + kept))[:, None] * ledger.lineage.continued)
 
 
-def total(ledger: Ledger, left: Floats, batch: list[Floats], step: Floats, persistence: Floats, *, serial: bool) -> Floats:
+def total(
+    ledger: Ledger, left: Floats, batch: list[Floats], step: Floats, persistence: Floats, *, serial: bool
+) -> Floats:
     """Effective number over all cells, for G points.
 
     Parameters
     ----------
-    left : (G, C) runs that lineage leaves. batch : level variances (G,), one array a nuisance. step : (G,) variance between segments.
-    persistence : (G, C) inflation by autocorrelation. serial : whether steps and autocorrelation count, or are spread evenly over runs.
+    left : (G, C) runs that lineage leaves. batch : level variances (G,), one array a nuisance. step : (G,)
+        variance between segments.
+    persistence : (G, C) inflation by autocorrelation. serial : whether steps and autocorrelation count, or
+        are spread evenly over runs.
     """
     own = ledger.memory.variance
     spread = step[:, None] * ledger.stepped
@@ -116,7 +131,7 @@ def total(ledger: Ledger, left: Floats, batch: list[Floats], step: Floats, persi
 
 
 def draws(ledger: Ledger) -> Floats:
-    """Effective numbers over the uncertainty of every part, whether its interval excludes "no loss" or not."""
+    """Effective numbers over the uncertainty of every part, found or not."""
     from scipy.special import chdtri
 
     u = lattice(3 + len(ledger.effects), N_DRAWS)
@@ -141,8 +156,8 @@ def lattice(n_axes: int, n_points: int) -> Floats:
 
     References
     ----------
-    Niederreiter (1992), Random Number Generation and Quasi-Monte Carlo Methods, section 4.1 (Kronecker sequences); the powers of the root of
-    x^(d+1) = x + 1 are common practice.
+    Niederreiter (1992), Random Number Generation and Quasi-Monte Carlo Methods, section 4.1 (Kronecker
+    sequences); the powers of the root of x^(d+1) = x + 1 are common practice.
     """
     root = 2.0
     for _ in range(60):

@@ -14,8 +14,8 @@ Verdict = Literal["beyond the margin", "within the margin", "undecided"]
 def verdict(contrast: Contrast, margin: float) -> Verdict:
     """Judge a comparison by two one-sided tests.
 
-    `within the margin`: the (1 − 2α) interval lies inside ±margin, α = 1 − confidence. `beyond the margin`: the interval lies wholly outside. A comparison
-    that cannot be estimated is undecided.
+    `within the margin`: the (1 − 2α) interval lies inside ±margin, α = 1 − confidence. `beyond the margin`:
+    the interval lies wholly outside. A comparison that cannot be estimated is undecided.
 
     Raises
     ------
@@ -37,10 +37,12 @@ def verdict(contrast: Contrast, margin: float) -> Verdict:
 
 
 def runs_needed(contrast: Contrast, margin: float) -> int | None:
-    """Further runs in the compared cells until the comparison decides, if the estimate stays and runs are added in the same proportions.
+    """Further runs in the compared cells until the comparison decides, if the estimate stays and runs are
+    added in the same proportions.
 
-    0 where it is decided; None where no number of such runs decides it: it cannot be estimated, or the estimate lies on the margin. Where hosts × cell is the
-    error, "the same proportions" means further hosts, not further runs on the same ones.
+    0 where it is decided; None where no number of such runs decides it: it cannot be estimated, or the
+    estimate lies on the margin. Where hosts × cell is the error, "the same proportions" means further
+    hosts, not further runs on the same ones.
     """
     limit = _margin(margin)
     if contrast.low is None or contrast.high is None or contrast.estimate is None:
@@ -67,4 +69,9 @@ def _narrow_half(contrast: Contrast) -> float:
 
     df = contrast.df or math.inf
     wide = float(stdtrit(df, 0.5 + contrast.confidence / 2))
-    return float((contrast.high or 0.0) - (contrast.low or 0.0)) / 2 * float(stdtrit(df, contrast.confidence)) / wide
+    return (
+        float((contrast.high or 0.0) - (contrast.low or 0.0))
+        / 2
+        * float(stdtrit(df, contrast.confidence))
+        / wide
+    )
