@@ -21,6 +21,7 @@ Interval = tuple[float, float, float]
 # At a correlation of −1/(k − 1) between k values that of their mean falls without limit: form 2 stays this
 # share of it away.
 NEAREST_TO_FLOOR = 1.0 - 1e-9
+DF_LEAST = 0.1
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -73,18 +74,17 @@ def intraclass(table: ArrayLike, *, confidence: float = 0.95) -> dict[str, Inter
         raise NotTestable("at least two rows and two columns", f"a table of {values.shape}")
     check_varying(values.ravel(), "table")
     squares = mean_squares(values)
-    single = {
-        "1,1": _one_way(squares, level),
-        "2,1": _agreement(squares, level),
-        "3,1": _consistency(squares, level),
+    of_one = (squares.n - 1, squares.n * (squares.k - 1))
+    of_shared = (squares.n - 1, (squares.n - 1) * (squares.k - 1))
+    agreement = _agreement(squares, level)
+    return {
+        "1,1": _single_form(squares.rows / squares.within, of_one, squares.k, level),
+        "2,1": agreement,
+        "3,1": _single_form(squares.rows / squares.error, of_shared, squares.k, level),
+        "1,k": _mean_form(squares.rows / squares.within, of_one, level),
+        "2,k": _of_means(agreement, squares.k),
+        "3,k": _mean_form(squares.rows / squares.error, of_shared, level),
     }
-    means = {f"{form[0]},k": _of_means(single[form], squares.k) for form in single}
-    means["1,k"] = _mean_form(
-        squares.rows / squares.within, (squares.n - 1, squares.n * (squares.k - 1)), level
-    )
-    df = (squares.n - 1, (squares.n - 1) * (squares.k - 1))
-    means["3,k"] = _mean_form(squares.rows / squares.error, df, level)
-    return single | means
 
 
 def mean_squares(values: Floats) -> MeanSquares:
@@ -113,14 +113,6 @@ def mean_squares(values: Floats) -> MeanSquares:
     )  # fmt: skip
 
 
-def _one_way(s: MeanSquares, level: float) -> Interval:
-    return _single_form(s.rows / s.within, (s.n - 1, s.n * (s.k - 1)), s.k, level)
-
-
-def _consistency(s: MeanSquares, level: float) -> Interval:
-    return _single_form(s.rows / s.error, (s.n - 1, (s.n - 1) * (s.k - 1)), s.k, level)
-
-
 def _bounds(f: float, df: tuple[int, int], level: float) -> tuple[float, float, float]:
     from scipy.special import fdtri
 
@@ -144,14 +136,14 @@ def _agreement(s: MeanSquares, level: float) -> Interval:
     n, k = s.n, s.k
     floor = NEAREST_TO_FLOOR / (1 - k)
     total = s.rows + (k - 1) * s.error + k * (s.columns - s.error) / n
-    icc = (s.rows - s.error) / total if total > 0.0 else floor
+    icc = (s.rows - s.error) / total
     if icc <= floor:
-        # The judges' variance is estimated so far below zero that nothing is left in total: take it as 0.
+        # The judges' variance is estimated below zero, and leaves too little in total: take it as 0.
         icc = max(floor, (s.rows - s.error) / (s.rows + (k - 1) * s.error))
     f_columns = s.columns / s.error
     a, b = k * icc * f_columns, n * (1 + (k - 1) * icc) - k * icc
-    # With weights of one sign the approximation has at least the judges' degrees of freedom.
-    df = max(k - 1.0, (k - 1) * (n - 1) * (a + b) ** 2 / ((n - 1) * a * a + b * b))
+    # Where rows hardly differ df falls to 0; below this F's point is past 1e30, and the limit moves no more.
+    df = max(DF_LEAST, (k - 1) * (n - 1) * (a + b) ** 2 / ((n - 1) * a * a + b * b))
     f_low, f_high = float(fdtri(n - 1, df, 1.0 - level / 2)), float(fdtri(df, n - 1, 1.0 - level / 2))
     rest = k * s.columns + (k * n - k - n) * s.error
     low = n * (s.rows - f_low * s.error) / (f_low * rest + n * s.rows)

@@ -4,6 +4,8 @@ Source: NIST Statistical Reference Datasets, Univariate Summary Statistics, cert
 what float64 can reach from the printed decimals.
 """
 
+import math
+
 import numpy as np
 import pytest
 
@@ -41,6 +43,15 @@ def test_numacc4_keeps_eight_digits():
     means, sds = _moments(x)
     assert means[0] == pytest.approx(10000000.2, rel=1e-12)
     assert sds[0] == pytest.approx(0.1, rel=1e-8)
+
+
+def test_long_sums_keep_their_digits():
+    """Means of 200,000 values a million from the first equal exactly rounded sums (math.fsum) to 1e-15."""
+    x = 1e6 + np.random.default_rng(2).normal(size=400_001)
+    x[0] = 0.0
+    group = np.repeat([0, 1], [1, 400_000])
+    exact = math.fsum(x[1:].tolist()) / 400_000
+    assert group_values(x, group).means[1] == pytest.approx(exact, rel=3e-16)
 
 
 def test_standard_resistor_moments(columns):

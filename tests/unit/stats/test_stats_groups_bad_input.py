@@ -252,6 +252,17 @@ def test_intraclass_too_little():
             stats.intraclass(table)
 
 
+def test_intraclass_of_rows_that_hardly_differ():
+    """With the rows' mean square Satterthwaite's df fall to 0: limits stay finite and in order."""
+    for k in (2, 3, 5):
+        table = np.vstack([np.arange(k), np.arange(k)[::-1], np.full(k, (k - 1) / 2)]).astype(float)
+        table[0, 0] += 1e-7
+        for form, (icc, low, high) in stats.intraclass(table).items():
+            assert -np.inf < low <= icc <= high <= 1.0
+            if form.endswith("1"):
+                assert low >= -1 / (k - 1)
+
+
 def test_labels_too_little():
     """Association needs two levels of each; their order needs a level that comes twice, and no ties."""
     with pytest.raises(NotTestable, match="two levels"):
