@@ -5,6 +5,8 @@ import pathlib
 
 import pytest
 
+pytest_plugins = ["fixtures_postgres"]
+
 
 @pytest.fixture(scope="session")
 def shared_folder():

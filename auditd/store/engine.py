@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import os
-import sqlite3
+import socket
+from importlib.util import find_spec
 from pathlib import Path
 from typing import Any
 
@@ -12,31 +13,36 @@ from sqlalchemy.engine import URL
 from sqlalchemy.exc import DBAPIError, OperationalError
 from sqlalchemy.pool import NullPool
 
-from auditd.errors import StoreDamaged, StoreError, StoreNewer, Unavailable
+from auditd.errors import StoreError, StoreNewer, Unavailable
+from auditd.store.sqlite_file import connect_file, file_revision
 from auditd.store.tables import REVISION
 
-BUSY_TIMEOUT_MS = 10_000
-"""How long a writer waits for another short transaction before it gives up."""
-WAL_LIMIT_BYTES = 64 * 1024 * 1024
-"""Size to which the write-ahead log is cut back after a checkpoint."""
+_UNDEFINED_TABLE = "42P01"
+"""PostgreSQL's code for a table that is not there (PostgreSQL manual, appendix A)."""
 
 
 def open_engine(url: URL, *, read_only: bool = False, durable: bool = True) -> Engine:
     """Return an engine on an existing store.
 
-    `durable` keeps every commit through a power cut (synchronous=FULL).
+    `durable` keeps every commit through a power cut (synchronous=FULL). A store of another revision is
+    refused without being touched.
 
     Raises
     ------
     StoreError
-        There is no store yet, or it is of another revision (`StoreNewer`) or damaged (`StoreDamaged`).
+        There is no store yet, or it is of another revision (`StoreNewer`) or damaged (`StoreDamaged`), or
+        may not be written to where it has to be.
     Unavailable
         A store server does not answer.
     """
-    if url.get_backend_name() == "sqlite" and not Path(url.database or "").is_file():
-        raise StoreError(f"no store at {url.database}; run `runaudit gather` or `runaudit watch` first")
+    if url.get_backend_name() == "sqlite":
+        _check_file(Path(url.database or ""), read_only=read_only)
     engine = connect_engine(url, read_only=read_only, durable=durable)
-    _check_revision(engine, url)
+    try:
+        _check_revision(stored_revision(engine, url), url)
+    except BaseException:
+        engine.dispose()
+        raise
     return engine
 
 
@@ -46,11 +52,15 @@ def shown_url(url: URL) -> str:
 
 
 def connect_engine(url: URL, *, read_only: bool, durable: bool) -> Engine:
-    """Return an engine without asking what the database holds."""
+    """Return an engine without asking what the database holds; a SQLite file must exist."""
     if url.get_backend_name() != "sqlite":
-        return create_engine(url, pool_pre_ping=True, connect_args=_KEEPALIVES)
-    engine = create_engine(url, poolclass=NullPool, connect_args={"timeout": BUSY_TIMEOUT_MS / 1000})
-    event.listen(engine, "connect", lambda raw, _record: _set_up(raw, read_only=read_only, durable=durable))
+        return _connect_server(url)
+    file = Path(url.database or "")
+    engine = create_engine(
+        url,
+        poolclass=NullPool,
+        creator=lambda: connect_file(file, read_only=read_only, durable=durable),
+    )
     event.listen(engine, "begin", lambda connection: _begin(connection, read_only=read_only))
     return engine
 
@@ -65,19 +75,11 @@ _KEEPALIVES: dict[str, Any] = {
 """A dead machine's connection is noticed within 25 s, so that its lock passes on."""
 
 
-def _set_up(raw: sqlite3.Connection, *, read_only: bool, durable: bool) -> None:
-    raw.isolation_level = None
-    cursor = raw.cursor()
-    cursor.execute(f"PRAGMA busy_timeout={BUSY_TIMEOUT_MS}")
-    if read_only:
-        cursor.execute("PRAGMA query_only=ON")
-    else:
-        cursor.execute("PRAGMA journal_mode=WAL")
-        cursor.execute(f"PRAGMA synchronous={'FULL' if durable else 'NORMAL'}")
-        cursor.execute(f"PRAGMA journal_size_limit={WAL_LIMIT_BYTES}")
-        cursor.execute("PRAGMA foreign_keys=ON")
-    cursor.execute("PRAGMA cache_size=-32000")
-    cursor.close()
+def _connect_server(url: URL) -> Engine:
+    if find_spec("psycopg") is None:
+        raise StoreError(f"{shown_url(url)} needs PostgreSQL's driver; install auditd[postgres]")
+    name = f"runaudit {os.getpid()} on {socket.gethostname()}"[:63]
+    return create_engine(url, pool_pre_ping=True, connect_args=_KEEPALIVES | {"application_name": name})
 
 
 def _begin(connection: Any, *, read_only: bool) -> None:
@@ -85,57 +87,51 @@ def _begin(connection: Any, *, read_only: bool) -> None:
     connection.exec_driver_sql("BEGIN" if read_only else "BEGIN IMMEDIATE")
 
 
-def _check_revision(engine: Engine, url: URL) -> None:
-    found = stored_revision(engine, url)
+def _check_file(file: Path, *, read_only: bool) -> None:
+    if not file.is_file():
+        raise StoreError(f"no store at {file}; run `runaudit gather` or `runaudit watch` first")
+    if not read_only and not (os.access(file, os.W_OK) and os.access(file.parent, os.W_OK)):
+        raise StoreError(
+            f"the store {file} is read-only here; make the file and its folder writable for this user, "
+            "or name another file in store.url"
+        )
+
+
+def _check_revision(found: str | None, url: URL) -> None:
     if found is None:
         raise StoreError(f"{shown_url(url)} is not a store of this program; name another file in store.url")
-    if found > REVISION:
+    refuse_newer(found, url)
+    if found != REVISION:
+        raise StoreError(f"{shown_url(url)} has the older schema {found}; run `runaudit store upgrade`")
+
+
+def refuse_newer(found: str | None, url: URL) -> None:
+    """Raise `StoreNewer` where a store's revision is beyond this release."""
+    if found is not None and int(found) > int(REVISION):
         raise StoreNewer(
             f"{shown_url(url)} was written by a newer release (schema {found}, this one reads {REVISION}); "
             "it is left untouched: use the newer release"
         )
-    if found < REVISION:
-        raise StoreError(f"{shown_url(url)} has the older schema {found}; run `runaudit store upgrade`")
 
 
 def stored_revision(engine: Engine, url: URL) -> str | None:
-    """Return the schema's revision, or None where the database holds no store."""
+    """Return the schema's revision, or None where the database is empty; nothing is touched."""
+    if url.get_backend_name() == "sqlite":
+        return file_revision(Path(url.database or ""))
     try:
         with engine.connect() as connection:
-            return connection.execute(text("SELECT version_num FROM alembic_version")).scalar()
+            found = connection.execute(text("SELECT version_num FROM alembic_version")).scalar()
     except OperationalError as error:
-        if url.get_backend_name() == "sqlite":
-            _refuse_sqlite(error, url)
-            return None
         raise Unavailable(
             f"the store server at {shown_url(url)} does not answer: {_first_line(error)}"
         ) from error
     except DBAPIError as error:
-        if "alembic_version" in str(error):
+        if getattr(error.orig, "sqlstate", None) == _UNDEFINED_TABLE:
             return None
-        raise StoreDamaged(_damaged(url, error)) from error
-
-
-def _refuse_sqlite(error: OperationalError, url: URL) -> None:
-    reason = _first_line(error)
-    if "no such table" in reason:
-        return
-    if "malformed" in reason or "not a database" in reason:
-        raise StoreDamaged(_damaged(url, error)) from error
-    file = url.database or ""
-    hint = (
-        "it is read-only here"
-        if os.path.exists(file) and not os.access(file, os.W_OK)
-        else "check its folder"
-    )
-    raise StoreError(f"{file} cannot be opened ({reason}); {hint}") from error
-
-
-def _damaged(url: URL, error: Exception) -> str:
-    return (
-        f"{shown_url(url)} is damaged ({_first_line(error)}) and left as found: run `runaudit store verify`, "
-        "then name a new file in store.url and gather the landed files again"
-    )
+        raise StoreError(f"the store at {shown_url(url)} cannot be read: {_first_line(error)}") from error
+    if found is not None and not str(found).isdigit():
+        raise StoreError(f"{shown_url(url)} holds the tables of another program; name another database")
+    return found
 
 
 def _first_line(error: Exception) -> str:

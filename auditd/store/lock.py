@@ -6,23 +6,32 @@ import errno
 import fcntl
 import os
 import socket
+from contextlib import suppress
 from pathlib import Path
 from types import TracebackType
 from typing import Self
 
 from sqlalchemy import Connection, Engine
 from sqlalchemy.engine import URL
+from sqlalchemy.exc import DBAPIError, OperationalError
 
-from auditd.errors import CannotCreate, StoreHeld
+from auditd.errors import CannotCreate, StoreHeld, Unavailable
+from auditd.store.engine import shown_url
 
 AUDITOR_LOCK = 0x72756E61
 """Key of the advisory lock that the one auditor of a PostgreSQL store holds."""
+
+_HOLDER = (
+    "SELECT application_name FROM pg_stat_activity JOIN pg_locks USING (pid) WHERE locktype = 'advisory' "
+    "AND granted AND classid = 0 AND objid = %(key)s "
+    "AND pg_locks.database = (SELECT oid FROM pg_database WHERE datname = current_database())"
+)
 
 
 class Holder:
     """The right to take runs, held until it is closed or the process ends, however it ends.
 
-    Raises `StoreHeld` on entering when another process has it.
+    Raises `StoreHeld` on entering when another process has it, `Unavailable` when a server does not answer.
     """
 
     def __init__(self, url: URL, engine: Engine | None = None) -> None:
@@ -33,7 +42,7 @@ class Holder:
 
     def __enter__(self) -> Self:
         if self._url.get_backend_name() == "sqlite":
-            self._lock_file(Path(f"{self._url.database}.lock"))
+            self._lock_file(Path(f"{os.path.realpath(self._url.database or '')}.lock"))
         else:
             self._lock_server()
         return self
@@ -49,16 +58,26 @@ class Holder:
             os.close(self._handle)
             self._handle = None
         if self._connection is not None:
-            self._connection.close()
+            with suppress(DBAPIError):
+                self._connection.close()
             self._connection = None
 
     def holds(self) -> bool:
         """Whether the right is still ours; a server's lock goes with its connection."""
         if self._connection is None:
             return self._handle is not None
-        self._connection.exec_driver_sql("SELECT 1")
-        self._connection.commit()
+        try:
+            self._connection.exec_driver_sql("SELECT 1")
+            self._connection.commit()
+        except DBAPIError:
+            self.release()
+            return False
         return True
+
+    def take_again(self) -> None:
+        """Take the right anew after it was lost with a server's connection; raises as on entering."""
+        if not self.holds():
+            self.__enter__()
 
     def _lock_file(self, file: Path) -> None:
         try:
@@ -82,10 +101,18 @@ class Holder:
     def _lock_server(self) -> None:
         if self._engine is None:
             raise StoreHeld("a server's lock needs an engine; this is a mistake in the program")
-        connection = self._engine.connect()
+        try:
+            connection = self._engine.connect()
+        except OperationalError as error:
+            raise Unavailable(f"the store server at {shown_url(self._url)} does not answer") from error
+        # the lock lives as long as the connection, which must not go back to the pool with it
+        connection.detach()
         taken = connection.exec_driver_sql(f"SELECT pg_try_advisory_lock({AUDITOR_LOCK})").scalar()
         connection.commit()
         if not taken:
+            holder = connection.exec_driver_sql(_HOLDER, {"key": AUDITOR_LOCK}).scalar() or "another auditor"
             connection.close()
-            raise StoreHeld("another auditor holds this store; it takes over by itself when that one ends")
+            raise StoreHeld(
+                f"{shown_url(self._url)} is held by {holder}; stop it first, or ask `runaudit status`"
+            )
         self._connection = connection

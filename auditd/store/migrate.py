@@ -1,25 +1,30 @@
 """Making a store, and bringing an older one to this release's schema.
 
 Alembic's DDL is not transactional on SQLite, so an existing file is copied, the copy is migrated and
-checked, and then put in place; the old file stays beside it as a backup.
+checked, and then put in place; the old file stays beside it as a backup. On PostgreSQL the whole migration is
+one transaction.
 """
 
 from __future__ import annotations
 
 import fcntl
 import os
+import shutil
 import sqlite3
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import closing, contextmanager, suppress
 from pathlib import Path
 
 from sqlalchemy import Engine
 from sqlalchemy.engine import URL
-from sqlalchemy.exc import OperationalError
+from sqlalchemy.exc import DBAPIError, OperationalError
 
 from auditd.bundled import bundled_folder
-from auditd.errors import CannotCreate, StoreDamaged, StoreNewer, Unavailable
-from auditd.store.engine import connect_engine, open_engine, shown_url, stored_revision
+from auditd.errors import CannotCreate, StoreDamaged, StoreError, StoreHeld, Unavailable
+from auditd.store.copying import copy_database, integrity_complaints, page_complaint, sync_folder
+from auditd.store.engine import connect_engine, open_engine, refuse_newer, shown_url, stored_revision
+from auditd.store.lock import Holder
+from auditd.store.sqlite_file import BUSY_TIMEOUT_MS, file_revision
 from auditd.store.tables import REVISION
 
 MIGRATION_LOCK = 0x61756469
@@ -31,16 +36,21 @@ def open_or_make(url: URL) -> Engine:
 
     Raises
     ------
-    StoreNewer, StoreDamaged, CannotCreate, Unavailable
+    StoreError
+        The store is newer, damaged, read-only, or older and held by a running daemon.
+    CannotCreate, Unavailable
     """
     upgrade_store(url)
-    return open_engine(url)
+    engine = open_engine(url)
+    if url.get_backend_name() == "sqlite":
+        refuse_damaged(Path(url.database or ""))
+    return engine
 
 
 def upgrade_store(url: URL) -> str | None:
     """Make the store or bring it to this release's schema; return the backup's path if one was made."""
     if url.get_backend_name() == "sqlite":
-        return _upgrade_file(Path(url.database or ""))
+        return _upgrade_file(Path(os.path.realpath(url.database or "")))
     _upgrade_server(url)
     return None
 
@@ -49,72 +59,125 @@ def _upgrade_file(file: Path) -> str | None:
     try:
         file.parent.mkdir(parents=True, exist_ok=True)
     except OSError as error:
-        raise CannotCreate(f"the store's folder {file.parent} cannot be made: {error}") from error
-    if _current(file):
+        raise CannotCreate(f"the store's folder {file.parent} cannot be made: {error.strerror}") from error
+    if _is_current(file):
         return None
-    with _file_lock(file):
-        if _current(file):
+    with _making_lock(file):
+        if _is_current(file):
             return None
-        return _migrate_copy(file)
+        try:
+            if file.exists() and file.stat().st_size > 0:
+                return _migrate_copy(file)
+            _make_new(file)
+        except (sqlite3.Error, DBAPIError, OSError) as error:
+            reason = str(getattr(error, "orig", error)).splitlines()[0]
+            raise CannotCreate(f"the store {file} cannot be made ready: {reason}; it is as it was") from error
+    return None
 
 
-def _current(file: Path) -> bool:
+def _is_current(file: Path) -> bool:
+    """Whether a file needs nothing; one that is newer, damaged or foreign is refused untouched."""
     if not file.exists() or file.stat().st_size == 0:
         return False
-    url = URL.create("sqlite", database=str(file))
-    found = stored_revision(connect_engine(url, read_only=True, durable=True), url)
-    if found is not None and found > REVISION:
-        open_engine(url)
+    found = file_revision(file)
+    refuse_newer(found, URL.create("sqlite", database=str(file)))
     return found == REVISION
 
 
-def _migrate_copy(file: Path) -> str | None:
-    draft = file.with_name(f".{file.name}.migrating")
-    for leftover in (draft, *(Path(f"{draft}{end}") for end in ("-wal", "-shm", "-journal"))):
-        leftover.unlink(missing_ok=True)
-    backup = None
-    had_content = file.exists() and file.stat().st_size > 0
-    if had_content:
-        backup = f"{file}.before-{REVISION}"
-        copy_database(file, Path(backup))
-        copy_database(file, draft)
-    url = URL.create("sqlite", database=str(draft))
-    engine = connect_engine(url, read_only=False, durable=True)
-    _run_alembic(engine)
-    _settle_draft(draft)
+def _make_new(file: Path) -> None:
+    draft = _fresh_draft(file)
+    draft.touch()
+    _migrate_draft(draft)
     os.replace(draft, file)
-    _sync_folder(file.parent)
-    return backup
+    sync_folder(file.parent)
 
 
-def _settle_draft(draft: Path) -> None:
-    """Check the draft and fold its log into the file, so that one rename puts the whole in place."""
-    connection = sqlite3.connect(draft)
-    try:
-        answer = connection.execute("PRAGMA integrity_check").fetchone()[0]
-        if answer != "ok":
-            raise StoreDamaged(f"the migrated copy {draft} does not check: {answer}; the store is as it was")
-        connection.execute("PRAGMA wal_checkpoint(TRUNCATE)")
-        connection.execute("PRAGMA journal_mode=DELETE")
-    finally:
-        connection.close()
+def _migrate_copy(file: Path) -> str:
+    """Migrate a copy of a store that nobody holds; a kill at any moment leaves the old or the new one."""
+    with Holder(URL.create("sqlite", database=str(file))):
+        refuse_damaged(file)
+        draft, backup = _fresh_draft(file), _fresh_backup(file)
+        copy_database(file, backup)
+        copy_database(file, draft)
+        _migrate_draft(draft)
+        _end_log(file)
+        for made in (draft, backup):
+            _like(file, made)
+        kept = _kept_name(file)
+        os.replace(backup, kept)
+        os.replace(draft, file)
+        sync_folder(file.parent)
+        return str(kept)
 
 
-def copy_database(source: Path, target: Path) -> None:
-    """Copy a SQLite database whole, also while another process writes to it."""
-    reading = sqlite3.connect(f"file:{_quoted(source)}?mode=ro", uri=True)
-    try:
-        writing = sqlite3.connect(target)
+def refuse_damaged(file: Path) -> None:
+    """Raise `StoreDamaged` where a file's pages do not check; it is left as found."""
+    complaint = page_complaint(file)
+    if complaint is not None:
+        raise StoreDamaged(
+            f"{file} is damaged ({complaint}) and left as found: run `runaudit store verify`, "
+            "then name a new file in store.url and gather the landed files again"
+        )
+
+
+def _fresh_draft(file: Path) -> Path:
+    return _without_leftovers(file.with_name(f".{file.name}.migrating"))
+
+
+def _fresh_backup(file: Path) -> Path:
+    return _without_leftovers(file.with_name(f".{file.name}.backing-up"))
+
+
+def _without_leftovers(made: Path) -> Path:
+    """Remove what a killed migration left under a name that is ours."""
+    for end in ("", "-wal", "-shm", "-journal"):
+        Path(f"{made}{end}").unlink(missing_ok=True)
+    return made
+
+
+def _kept_name(file: Path) -> Path:
+    """Return a name for the backup that no earlier backup has."""
+    name, number = file.with_name(f"{file.name}.before-{REVISION}"), 1
+    while name.exists():
+        number += 1
+        name = file.with_name(f"{file.name}.before-{REVISION}.{number}")
+    return name
+
+
+def _migrate_draft(draft: Path) -> None:
+    """Bring the draft to the head, check it, and fold its log into it: one rename then places the whole."""
+    engine = connect_engine(URL.create("sqlite", database=str(draft)), read_only=False, durable=True)
+    _run_alembic(engine)
+    engine.dispose()
+    complaints = integrity_complaints(draft)
+    if complaints:
+        raise StoreDamaged(f"the migrated copy does not check: {complaints[0]}; the store is as it was")
+    _end_log(draft)
+
+
+def _end_log(file: Path) -> None:
+    """Fold a file's write-ahead log into it and remove it: a log beside another file would be played into it.
+
+    Raises
+    ------
+    StoreHeld
+        Another process has the file open.
+    """
+    with closing(sqlite3.connect(file, timeout=BUSY_TIMEOUT_MS / 1000, isolation_level=None)) as connection:
         try:
-            reading.backup(writing, pages=4096)
-        finally:
-            writing.close()
-    finally:
-        reading.close()
+            mode = connection.execute("PRAGMA journal_mode=DELETE").fetchone()[0]
+        except sqlite3.OperationalError as error:
+            raise StoreHeld(f"{file} is being read by another process; end it and try again") from error
+    if mode != "delete" or Path(f"{file}-wal").exists():
+        raise StoreHeld(f"{file} is being read by another process; end it and try again")
 
 
-def _quoted(path: Path) -> str:
-    return str(path).replace("%", "%25").replace("?", "%3f").replace("#", "%23")
+def _like(file: Path, made: Path) -> None:
+    """Give what was made the rights, and where we may the owner, of the old file."""
+    shutil.copymode(file, made)
+    found = file.stat()
+    with suppress(PermissionError):
+        os.chown(made, found.st_uid, found.st_gid)
 
 
 def _upgrade_server(url: URL) -> None:
@@ -122,16 +185,17 @@ def _upgrade_server(url: URL) -> None:
     try:
         with engine.connect() as connection:
             connection.exec_driver_sql(f"SELECT pg_advisory_lock({MIGRATION_LOCK})")
-            try:
-                found = stored_revision(engine, url)
-                if found is not None and found > REVISION:
-                    raise StoreNewer(f"{shown_url(url)} has the newer schema {found}; it is left untouched")
-                if found != REVISION:
-                    _run_alembic(engine)
-            finally:
-                connection.exec_driver_sql(f"SELECT pg_advisory_unlock({MIGRATION_LOCK})")
+            connection.commit()
+            # the lock goes with the connection, which does not return to the pool
+            connection.detach()
+            found = stored_revision(engine, url)
+            refuse_newer(found, url)
+            if found != REVISION:
+                _run_alembic(engine)
     except OperationalError as error:
         raise Unavailable(f"the store server at {shown_url(url)} does not answer: {error.orig}") from error
+    except DBAPIError as error:
+        raise StoreError(f"the store at {shown_url(url)} cannot be migrated: {error.orig}") from error
     finally:
         engine.dispose()
 
@@ -148,19 +212,15 @@ def _run_alembic(engine: Engine) -> None:
 
 
 @contextmanager
-def _file_lock(file: Path) -> Iterator[None]:
+def _making_lock(file: Path) -> Iterator[None]:
     """Hold the lock under which one starter at a time makes or migrates the file."""
-    handle = os.open(file.with_name(f".{file.name}.making"), os.O_CREAT | os.O_RDWR | os.O_CLOEXEC, 0o600)
+    lock = file.with_name(f".{file.name}.making")
+    try:
+        handle = os.open(lock, os.O_CREAT | os.O_RDWR | os.O_CLOEXEC, 0o600)
+    except OSError as error:
+        raise CannotCreate(f"the store's folder {file.parent} cannot be written: {error.strerror}") from error
     try:
         fcntl.flock(handle, fcntl.LOCK_EX)
         yield
-    finally:
-        os.close(handle)
-
-
-def _sync_folder(folder: Path) -> None:
-    handle = os.open(folder, os.O_RDONLY)
-    try:
-        os.fsync(handle)
     finally:
         os.close(handle)

@@ -37,19 +37,22 @@ def save_refusals(
             "refused_us": refused_us,
             "taken_up": taken_up,
         }
-        if connection.execute(_insert_once(connection).values(values)).rowcount > 0:
+        if _insert_once(connection, values):
             new.append(refusal)
     return new
 
 
-def _insert_once(connection: Connection) -> Any:  # the dialects' Insert classes differ
+def _insert_once(connection: Connection, values: dict[str, Any]) -> bool:
+    """Insert a refusal unless it is there, and return whether it is new."""
     if connection.dialect.name == "postgresql":
         from sqlalchemy.dialects import postgresql
 
-        return postgresql.insert(refusals).on_conflict_do_nothing()
+        # the driver counts no rows here, hence the returned one
+        once = postgresql.insert(refusals).values(values).on_conflict_do_nothing().returning(refusals.c.row)
+        return connection.execute(once).first() is not None
     from sqlalchemy.dialects import sqlite
 
-    return sqlite.insert(refusals).on_conflict_do_nothing()
+    return connection.execute(sqlite.insert(refusals).values(values).on_conflict_do_nothing()).rowcount > 0
 
 
 def take_up_refusals(connection: Connection) -> list[Refusal]:

@@ -101,13 +101,14 @@ def insert_runs(
             known[run.id] = run.digest
             fresh.append((run, ordered))
         elif digest != run.digest:
-            rewritten.append(_rewrite(run))
+            rewritten.append(rewrite_refusal(run))
     stored = _insert(connection, fresh, landed_us, config_rows, first_arrival) if fresh else ()
     n_seen = len(batch) - len(fresh) - len(rewritten)
     return Inserted(stored=stored, rewritten=tuple(rewritten), n_seen_before=n_seen)
 
 
-def _rewrite(run: Run) -> Refusal:
+def rewrite_refusal(run: Run) -> Refusal:
+    """Return the refusal of a run whose id was taken before with other content."""
     return Refusal(
         path=run.path,
         offset=run.offset,
@@ -133,16 +134,14 @@ def _insert(
     config_rows: ConfigRows,
     first_arrival: int | None,
 ) -> tuple[StoredRun, ...]:
-    last_row = connection.execute(select(func.max(runs.c.row))).scalar() or 0
+    numbers = _row_numbers(connection, len(fresh))
     arrivals: Iterable[int | None] = (
         [None] * len(fresh) if first_arrival is None else range(first_arrival, first_arrival + len(fresh))
     )
     rows, stored = [], []
-    for number, ((run, ordered), arrival) in enumerate(zip(fresh, arrivals, strict=True), start=last_row + 1):
+    for number, (run, ordered), arrival in zip(numbers, fresh, arrivals, strict=True):
         values = run_values(run, config_rows.row(connection, run), landed_us, ordered=ordered)
-        if first_arrival is not None:
-            values["row"] = number
-        rows.append(values | {"arrival": arrival})
+        rows.append(values | {"row": number, "arrival": arrival})
         stored.append(
             StoredRun(
                 row=number,
@@ -156,6 +155,15 @@ def _insert(
         )
     connection.execute(insert(runs), rows)
     return tuple(stored) if first_arrival is not None else ()
+
+
+def _row_numbers(connection: Connection, n: int) -> Sequence[int]:
+    """Return numbers for new rows; a server's sequence must move with them, or collectors' rows collide."""
+    if connection.dialect.name == "postgresql":
+        query = "SELECT nextval(pg_get_serial_sequence('runs', 'row')) FROM generate_series(1, %(n)s)"
+        return sorted(connection.exec_driver_sql(query, {"n": n}).scalars())
+    last = connection.execute(select(func.max(runs.c.row))).scalar() or 0
+    return range(last + 1, last + 1 + n)
 
 
 def run_values(run: Run, config: int, landed_us: int, *, ordered: bool) -> dict[str, Any]:
@@ -206,7 +214,8 @@ def stored_runs(connection: Connection, *conditions: Any, order: Any = None) -> 
     """Yield runs under SQLAlchemy conditions, by arrival unless another order is given."""
     query = select(*_COLUMNS).join(configs, configs.c.row == runs.c.config).where(*conditions)
     query = query.order_by(runs.c.arrival if order is None else order)
-    result = connection.execution_options(yield_per=N_ROWS_A_FETCH).execute(query)
+    # an option of the statement: one of the connection would stay, and stop executemany on a server
+    result = connection.execute(query, execution_options={"yield_per": N_ROWS_A_FETCH})
     levels: dict[str, dict[str, Level]] = {}
     for row in result:
         yield _stored(row, levels)

@@ -145,7 +145,7 @@ def upgrade() -> None:
         ["row"],
         unique=False,
         sqlite_where=sa.text("taken_up = 0"),
-        postgresql_where=sa.text("taken_up = 0"),
+        postgresql_where=sa.text("NOT taken_up"),
     )
     op.create_table(
         "sources",
