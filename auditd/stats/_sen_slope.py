@@ -10,6 +10,7 @@ import math
 
 import numpy as np
 
+from auditd.stats._inversions import count_inversions
 from auditd.stats._validate import Floats
 
 # Up to here all slopes are held: 2 million of them, 16 MB.
@@ -27,13 +28,30 @@ MAX_LOOKS = 60
 
 
 def score(times: Floats, x: Floats) -> int:
-    """Kendall's S: pairs that rise less pairs that fall; equal times or values count zero."""
+    """Kendall's S: pairs that rise less pairs that fall; equal times or values count zero. Times ascend."""
+    n = x.size
+    if np.all(times[1:] > times[:-1]):
+        order = np.argsort(x, kind="stable")
+        ranks = np.empty(n, dtype=np.int64)
+        ranks[order] = np.arange(n)
+        return n * (n - 1) // 2 - _equal_pairs(x[order]) - 2 * count_inversions(ranks)
+    return _score_with_tied_times(times, x)
+
+
+def _score_with_tied_times(times: Floats, x: Floats) -> int:
     from scipy.stats import kendalltau
 
     n = x.size
     tau = float(kendalltau(times, x, method="asymptotic").statistic) if np.ptp(x) > 0.0 else 0.0
     pairs = 0.5 * n * (n - 1.0)
     return round(tau * math.sqrt(pairs - tied_pairs(times)) * math.sqrt(pairs - tied_pairs(x)))
+
+
+def _equal_pairs(ascending: Floats) -> int:
+    """Number of pairs of equal values among sorted ones."""
+    starts = np.flatnonzero(np.concatenate(([True], ascending[1:] != ascending[:-1], [True])))
+    sizes = np.diff(starts)
+    return int(np.sum(sizes * (sizes - 1))) // 2
 
 
 def tied_pairs(values: Floats) -> float:
@@ -67,7 +85,7 @@ def middle_ranks(times: Floats) -> tuple[int, int]:
 
 def n_slopes(times: Floats) -> int:
     """Number of pairs of different times."""
-    return times.size * (times.size - 1) // 2 - round(tied_pairs(times))
+    return times.size * (times.size - 1) // 2 - _equal_pairs(times)
 
 
 def all_slopes(times: Floats, x: Floats) -> Floats:

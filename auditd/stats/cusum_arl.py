@@ -93,7 +93,9 @@ def _one_sided(k: float, h: float, shift: float, head_start: float) -> tuple[flo
 @lru_cache(maxsize=16)
 def gauss_legendre(n: int) -> tuple[Floats, Floats]:
     """Nodes and weights on (−1, 1), kept because their cost is that of the linear system itself."""
-    nodes, weights = np.polynomial.legendre.leggauss(n)
+    from scipy.special import roots_legendre
+
+    nodes, weights = roots_legendre(n)
     nodes.flags.writeable = weights.flags.writeable = False
     return nodes, weights
 

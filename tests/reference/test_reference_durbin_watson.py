@@ -111,7 +111,7 @@ def test_every_entry_of_savin_and_white(shared_folder, name, level, misprint):
 
 
 def test_moments_of_von_neumanns_ratio():
-    """Theory, from memory: von Neumann (1941), Ann. Math. Stat. 12:367; the ratio is d n / (n − 1), n = 20."""
+    """Theory, from memory: von Neumann (1941), Ann. Math. Stat. 12:367; ratio d n / (n − 1), n = 20."""
     mean, variance = moments(20, np.full((20, 1), 1 / np.sqrt(20)))
     assert mean * 20 / 19 == pytest.approx(2.1052631578947367, rel=1e-12)
     assert variance * (20 / 19) ** 2 == pytest.approx(0.19994584799950013, rel=1e-9)

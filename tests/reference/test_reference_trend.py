@@ -170,7 +170,7 @@ def test_the_niles_change():
 
 
 def test_bartels_own_example(shared_folder):
-    """Published: Bartels (1982), p. 43, and R trend's vignette, which prints the lower tail of the beta law."""
+    """Published: Bartels (1982), p. 43; R trend's vignette prints the lower tail of the beta law."""
     got = von_neumann_rank(read(shared_folder, "bartels1982_ranks.csv").x)
     assert got.statistic == pytest.approx(0.97626, abs=5.8e-6)
     assert got.lower == pytest.approx(0.009463, abs=5.5e-7)
