@@ -5,7 +5,7 @@ import math
 import numpy as np
 import pingouin
 import pytest
-from scipy.stats import nct
+from scipy.stats import chi2, nct
 from statsmodels.stats.weightstats import ttost_ind
 
 from auditd.stats import equivalence, hedges_g
@@ -89,19 +89,23 @@ def test_interval_ends_where_the_law_says(n_a, n_b, shift):
     assert at == pytest.approx([0.975, 0.025], abs=1e-8)
 
 
-def test_large_samples_join_the_exact_interval():
-    """Just below and just above 2,000 df the two ways to the interval differ by less than 1e-4 of its
-    width.
+def test_large_samples_join_the_normal_law():
+    """At 20,000 values the interval is that of the normal law d ± 1.96·√(1/n₁ + 1/n₂ + d²/2n) to 1e-3 of
+    its width.
     """
-    ends = []
-    for n in (1001, 1002):
-        result = hedges_g(_sample(n, 0.5, 1), _sample(n, 0, 1))
-        ends.append((result.low, result.high))
-    width = ends[0][1] - ends[0][0]
-    # Going from 1001 to 1002 values shortens the interval by a thousandth of its half at each end.
-    expected = 0.5 * width * (1 - math.sqrt(1001 / 1002))
-    assert ends[1][0] - ends[0][0] == pytest.approx(expected, abs=1e-4 * width)
-    assert ends[0][1] - ends[1][1] == pytest.approx(expected, abs=1e-4 * width)
+    result = hedges_g(_sample(10_000, 0.5, 1), _sample(10_000, 0, 1))
+    half = 1.959964 * math.sqrt(2e-4 + 0.25 / 40_000)
+    assert (result.low, result.high) == pytest.approx((0.5 - half, 0.5 + half), abs=2e-3 * half)
+
+
+@pytest.mark.parametrize("n", [2, 4, 30])
+def test_huge_differences_have_the_law_of_the_deviation(n):
+    """With a difference of 1e6 deviations only the pooled deviation is uncertain: limits follow
+    chi-squared.
+    """
+    result = hedges_g(_sample(n, 1e6, 1), _sample(n, 0, 1))
+    ends = [result.d * math.sqrt(chi2.ppf(q, result.df) / result.df) for q in (0.025, 0.975)]
+    assert (result.low, result.high) == pytest.approx(ends, rel=1e-5)
 
 
 def test_agrees_with_pingouin():
