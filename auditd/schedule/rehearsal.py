@@ -188,7 +188,7 @@ def _stage_of(plan: Plan) -> tuple[_Stage, tuple[str, ...]]:
         cells=labels,
         hosts=tuple(plan.schedule.hosts),
         replicates=plan.schedule.replicates,
-        host_name="host" if "host" in plan.nuisance or not plan.nuisance else next(iter(plan.nuisance)),
+        host_name=_machine_nuisance(plan),
         baseline="cells" if plan.baseline.kind == "cells" else "pooled",
         n_responses=len(plan.responses),
         alarm_budget=plan.campaign.alarm_budget * FIRST_EPOCH * (1 - FACT_SHARE - AUTO_SHARE * has_auto),
@@ -196,6 +196,14 @@ def _stage_of(plan: Plan) -> tuple[_Stage, tuple[str, ...]]:
         sides=sides,
     )
     return stage, tuple(_remarks_on(plan, has_auto=has_auto))
+
+
+def _machine_nuisance(plan: Plan) -> str:
+    """Return the nuisance that the schedule's hosts are levels of: an exclusive one, `host`, or the first."""
+    stated = [name for name, place in plan.nuisance.items() if isinstance(place, str)]
+    return next(
+        iter([*plan.machines.exclusive, *(name for name in stated if name == "host"), *stated]), "host"
+    )
 
 
 def _remarks_on(plan: Plan, *, has_auto: bool) -> list[str]:
