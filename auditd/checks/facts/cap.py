@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable
 from typing import ClassVar
 
 from auditd.checks.facts.condition import counted
@@ -62,8 +62,7 @@ class CapFact(Quiet):
     def __init__(self, plan: Plan, *, alarm_budget: float) -> None:
         super().__init__(plan, alarm_budget=alarm_budget)
         self._windows: dict[str, _Window] = {}
-        self._told: dict[str, tuple[str | None, int]] = {}  # key -> the run at which it was told, values seen
-        self._grown: dict[str, Finding] = {}
+        self._told: dict[str, str] = {}  # key -> the run at which it was told
 
     def arrived(self, run: Run, _arrival: int) -> Iterable[Finding]:
         """Count the run's values."""
@@ -82,11 +81,6 @@ class CapFact(Quiet):
                 found += self._look(window, run)
         return found
 
-    def standing(self) -> Iterator[Finding]:
-        """Tell of caps that more values have met."""
-        yield from self._grown.values()
-        self._grown.clear()
-
     def _look(self, window: _Window, run: Run) -> list[Finding]:
         extreme = window.at_extreme()
         n = window.n
@@ -96,25 +90,22 @@ class CapFact(Quiet):
             return []
         side, value, n_at = extreme
         key = f"cap:{window.response}:{side}:{value!r}"
-        first = key not in self._told
-        at, _ = self._told.setdefault(key, (run.id, n))
+        at = self._told.setdefault(key, run.id)
         what = "largest" if side == "upper" else "smallest"
         message = (
             f"{counted(n_at, 'value')} of {window.response} among the last {counted(n, 'run')} are "
             f"exactly {value:.6g}, the "
             f"{what} there is: a cap or a limit, so that means are not means"
         )
-        finding = Finding(
-            key=key,
-            kind="cap",
-            message=message,
-            response=window.response,
-            run=at,
-            n=n,
-            share=n_at / n,
-            n_again=n_at,
-        )
-        if first:
-            return [finding]
-        self._grown[key] = finding
-        return []
+        return [
+            Finding(
+                key=key,
+                kind="cap",
+                message=message,
+                response=window.response,
+                run=at,
+                n=n,
+                share=n_at / n,
+                n_again=n_at,
+            )
+        ]

@@ -104,29 +104,26 @@ class ConfoundFact(Quiet):
             verdicts = {} if pair.factor == "cell" and pair.nuisance in covered else self._verdicts(pair)
             if verdicts:
                 covered.add(pair.nuisance)
-            for key, before in list(pair.told.items()):
-                if key not in verdicts:
-                    del pair.told[key]
+            for name, before in list(pair.told.items()):
+                if name not in verdicts:
+                    del pair.told[name]
                     yield _ended(before, self._n)
-            for key, verdict in verdicts.items():
-                finding = self._finding(pair, key, verdict, run, position)
-                if key not in pair.told:
-                    yield finding
-                pair.told.setdefault(key, finding)
+            for name, verdict in verdicts.items():
+                if name not in pair.told:
+                    pair.told[name] = self._finding(pair, verdict, run, position)
+                    yield pair.told[name]
 
     def _verdicts(self, pair: _Pair) -> dict[str, Verdict]:
-        stood = {key.rpartition(":")[2] for key in pair.told}
-        verdicts = pair.table.verdicts(stood, partial=pair.factor != "cell")
-        base = f"confound:{pair.factor}:{pair.nuisance}"
-        return {f"{base}:{verdict.name}": verdict for verdict in verdicts}
+        verdicts = pair.table.verdicts(set(pair.told), partial=pair.factor != "cell")
+        return {verdict.name: verdict for verdict in verdicts}
 
-    def _finding(self, pair: _Pair, key: str, verdict: Verdict, run: Run, position: int) -> Finding:
+    def _finding(self, pair: _Pair, verdict: Verdict, run: Run, position: int) -> Finding:
         rows = self._row_labels(pair.factor)
         columns = self._nuisances[pair.nuisance].labels
         on = _listed([columns[number] for number in verdict.columns])
         of = _listed([rows[number] for number in verdict.rows])
         return Finding(
-            key=key,
+            key=self._key(pair, verdict),
             kind="confound",
             message=_message(pair, verdict, of, on, self._n),
             along=pair.nuisance,
@@ -140,6 +137,11 @@ class ConfoundFact(Quiet):
             share=verdict.strength,
             n_again=verdict.n_needed,
         )
+
+    def _key(self, pair: _Pair, verdict: Verdict) -> str:
+        """Name the condition; a row's number depends on what came first, its label does not."""
+        of = self._row_labels(pair.factor)[verdict.rows[0]] if verdict.kind == "one" else verdict.kind
+        return f"confound:{pair.factor}:{pair.nuisance}:{of}"
 
     def _row_labels(self, factor: str) -> list[str]:
         if factor == "cell" and self._cells is not None:

@@ -43,8 +43,8 @@ class Crossing:
         and columns has a rank below rows + columns − 1 and contrasts between blocks cannot be estimated.
         Rows with fewer than 20 runs are left out. Raised only if, by the totals, at least 14 pairs of runs
         of one column would be expected to come from two blocks.
-    one : all runs of a row (at least 20, at most 5 % and fewer than 5 excepted) are in one column, while by
-        the other rows' shares at least 14 of them would be expected elsewhere.
+    one : all runs of a row (at least 20) are in one column, while by the other rows' shares at least 14 of
+        them would be expected elsewhere. It stands until 5 runs, and 5 % of the row's, are elsewhere.
     partial : Cramér's V, corrected for its bias (Bergsma 2013, Journal of the Korean Statistical Society 42,
         323-328), is at least 0.5, with at least 20 runs in each of two rows and columns.
 
@@ -70,18 +70,18 @@ class Crossing:
 
         Parameters
         ----------
-        stood : names of what was said at the last look; `partial` is kept down to a lower bar.
+        stood : names of what was said at the last look, which is kept down to a lower bar.
         partial : whether Cramér's V is asked.
         """
         if len(self.columns) < 2 or len(self.rows) < 2:
             return []
-        apart = self._apart()
-        if apart:
-            return apart
-        alone = [verdict for row in self.rows if (verdict := self._one(row)) is not None]
-        if alone or not partial:
-            return alone
-        return self._partial(PARTIAL_WITHDRAWN if "partial" in stood else PARTIAL_RAISED)
+        grave = self._apart()
+        if not grave:
+            alone = (self._one(row, stood=f"row{row}" in stood) for row in self.rows)
+            grave = [verdict for verdict in alone if verdict is not None]
+        if not partial or (grave and "partial" not in stood):
+            return grave
+        return grave + self._partial(PARTIAL_WITHDRAWN if "partial" in stood else PARTIAL_RAISED)
 
     def _apart(self) -> list[Verdict]:
         blocks = self._blocks()
@@ -121,20 +121,20 @@ class Crossing:
                     by_column[column] = by_column.get(column, 0) + n
         return mixed * sum(n * (n - 1) / 2 for n in by_column.values())
 
-    def _one(self, row: int) -> Verdict | None:
+    def _one(self, row: int, *, stood: bool) -> Verdict | None:
         counts = self.rows[row]
         n = sum(counts.values())
         if n < MIN_N_LEVEL:
             return None
         column = max(counts, key=lambda number: counts[number])
         n_elsewhere = n - counts[column]
-        if n_elsewhere >= N_ELSEWHERE or n_elsewhere > SHARE_ELSEWHERE * n:
+        if n_elsewhere and (not stood or (n_elsewhere >= N_ELSEWHERE and n_elsewhere > SHARE_ELSEWHERE * n)):
             return None
         n_others = self.n - n
         n_beside = self.columns[column] - counts[column]
         if not n_others or n * (1 - n_beside / n_others) < N_EXPECTED:
             return None
-        n_needed = max(1, math.ceil(SHARE_ELSEWHERE * n), N_ELSEWHERE) - n_elsewhere
+        n_needed = max(math.floor(SHARE_ELSEWHERE * n) + 1, N_ELSEWHERE) - n_elsewhere
         return Verdict(
             "one", f"row{row}", (row,), (column,), 1 - n_elsewhere / n, n_elsewhere, n_beside, n_needed
         )

@@ -3,10 +3,10 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable
 from typing import ClassVar
 
-from auditd.checks.facts.condition import counted
+from auditd.checks.facts.condition import counted, next_told
 from auditd.checks.facts.counting import threshold_log_e
 from auditd.checks.facts.failing_e import FailingLevelsE, FailingStretchE, Outcomes
 from auditd.checks.facts.labels import CellIndex, LevelIndex
@@ -37,8 +37,7 @@ class FailureFact(Quiet):
         self._by: dict[str, FailingLevelsE] = {name: FailingLevelsE() for name in ("cell", *plan.nuisance)}
         self._stretch = FailingStretchE()
         self._spell = _Spell()
-        self._told: dict[str, tuple[str | None, int]] = {}
-        self._changed: set[str] = set()
+        self._told: dict[str, tuple[str, int, int]] = {}  # raised at run and position; failures to tell again
 
     def placed(self, run: Run, position: int) -> Iterable[Finding]:
         """Settle the bets on whether the run failed."""
@@ -56,21 +55,19 @@ class FailureFact(Quiet):
         if self._stretch.observe(outcomes, failed=failed) >= bar:
             crossed.append("order")
         self._spell.take(run.id, position, failed=failed, common=outcomes.common)
-        return self._raised(run, position, crossed, failed=failed) if crossed or failed else ()
+        return self._raised(run, position, crossed) if crossed or failed else ()
 
-    def standing(self) -> Iterator[Finding]:
-        """Tell how the failures stand by now."""
-        for name in sorted(self._changed):
-            yield self._finding(name, *self._told[name])
-        self._changed.clear()
-
-    def _raised(self, run: Run, position: int, crossed: list[str], *, failed: bool) -> list[Finding]:
-        if failed:
-            self._changed.update(self._told)
-        fresh = [name for name in crossed if name not in self._told]
-        for name in fresh:
-            self._told[name] = (run.id, position)
-        return [self._finding(name, run.id, position) for name in fresh]
+    def _raised(self, run: Run, position: int, crossed: list[str]) -> list[Finding]:
+        n_failed = self._outcomes.n_failed
+        for name in crossed:
+            self._told.setdefault(name, (run.id, position, n_failed))
+        due = [name for name, (_, _, n_next) in self._told.items() if n_failed >= n_next]
+        found: list[Finding] = []
+        for name in due:
+            at, index, _ = self._told[name]
+            self._told[name] = (at, index, next_told(n_failed))
+            found.append(self._finding(name, at, index))
+        return found
 
     def _finding(self, name: str, run: str | None, index: int) -> Finding:
         if name == "order":

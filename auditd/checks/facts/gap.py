@@ -65,11 +65,9 @@ class GapFact(Quiet):
         return self._moved_on(run, max(self._ahead) if self._wait else number)
 
     def standing(self) -> Iterator[Finding]:
-        """Tell of gaps that have grown or closed."""
+        """Tell of gaps that have closed."""
         if self._gap is not None and self._gap.changed:
             yield self._gap_finding(self._gap)
-        if self._twice is not None and self._twice.changed:
-            yield self._twice_finding(self._twice)
 
     def _moved_on(self, run: Run, largest: int) -> list[Finding]:
         found: list[Finding] = []
@@ -115,7 +113,6 @@ class GapFact(Quiet):
         )
 
     def _twice_finding(self, condition: Condition) -> Finding:
-        condition.changed = False
         n = condition.n
         message = (
             f"sequence number {self._twice_number} of {condition.run} had been used before; "

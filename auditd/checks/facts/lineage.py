@@ -6,7 +6,7 @@ from collections.abc import Iterable, Iterator
 from typing import ClassVar
 
 from auditd.checks.facts.ancestry import Ancestry
-from auditd.checks.facts.condition import Condition, counted
+from auditd.checks.facts.condition import Condition, counted, next_told
 from auditd.checks.facts.protocol import Quiet
 from auditd.plan import Plan
 from auditd.records import Finding, Kind, Run
@@ -35,8 +35,9 @@ class LineageFact(Quiet):
         self._n_completed = 0
         self._waiting: dict[str, list[str]] = {}  # parent that has not landed -> children
         self._depth = 0
-        self._continued: Condition | None = None
+        self._first = ""  # the run at which continued runs were told first
         self._n_continued = 0
+        self._n_next = 0
         self._cycles: Condition | None = None
         self._missing: Condition | None = None
         self._absent: dict[str, int] = {}  # missing parent -> children placed without it
@@ -64,13 +65,9 @@ class LineageFact(Quiet):
         return (self._missing_finding(run.parent),) if self._missing.seen() else ()
 
     def standing(self) -> Iterator[Finding]:
-        """Tell of what has grown or ended."""
+        """Tell of parents that have landed since they were missed."""
         if self._missing is not None and self._missing.changed:
             yield self._missing_finding(next(iter(self._absent), ""))
-        if self._continued is not None and self._continued.changed:
-            yield self._continued_finding()
-        if self._cycles is not None and self._cycles.changed:
-            yield self._cycle_finding()
 
     def _linked(self, run: Run, parent: str) -> list[Finding]:
         self._ancestry.link(run.id, parent)
@@ -102,41 +99,34 @@ class LineageFact(Quiet):
     def _counted_again(self, run: str) -> list[Finding]:
         self._n_continued += 1
         self._depth = max(self._depth, self._landed[run] - 1)
-        if self._continued is not None:
-            self._continued.seen()
+        if self._n_continued < max(MIN_N_CONTINUED, MIN_SHARE * self._n_completed) and not self._first:
             return []
-        enough = self._n_continued >= max(MIN_N_CONTINUED, MIN_SHARE * self._n_completed)
-        if not enough:
+        self._first = self._first or run
+        if self._n_continued < self._n_next:
             return []
-        self._continued = Condition("lineage:continued", run)
-        self._continued.seen()
+        self._n_next = next_told(self._n_continued)
         return [self._continued_finding()]
 
     def _continued_finding(self) -> Finding:
-        self._continued_told()
         share = self._n_continued / max(1, self._n_completed)
+        continuing = counted(self._n_continued, "completed run continues", "completed runs continue")
         message = (
-            f"{counted(self._n_continued, 'completed run continues', 'completed runs continue')} "
-            "another completed run "
-            f"({share:.0%} of all, chains of up to {self._depth + 1}): they share what they inherited"
+            f"{continuing} another completed run ({share:.0%} of all, chains of up to "
+            f"{self._depth + 1}): they share "
+            "what they inherited"
         )
         return Finding(
             key="lineage:continued",
             kind="lineage",
             message=message,
-            run=self._continued.run if self._continued else None,
+            run=self._first,
             n=self._n_completed,
             share=share,
             n_again=self._n_continued,
         )
 
-    def _continued_told(self) -> None:
-        if self._continued is not None:
-            self._continued.changed = False
-
     def _cycle_finding(self) -> Finding:
         condition = self._cycles or Condition("lineage:cycle", None)
-        condition.changed = False
         message = (
             f"{condition.run} is, by the parents stated, its own ancestor; "
             f"{counted(condition.n, 'such cycle')}"

@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable
 from typing import ClassVar
 
 from auditd.checks.facts.clumping_e import ClumpingE
-from auditd.checks.facts.condition import counted
+from auditd.checks.facts.condition import counted, next_told
 from auditd.checks.facts.counting import threshold_log_e
 from auditd.checks.facts.labels import LevelIndex
 from auditd.checks.facts.protocol import Quiet
@@ -28,7 +28,8 @@ class _Factor:
         self.first: list[int] = []
         self.last: list[int] = []
         self.n_alike = 0
-        self.told: Finding | None = None
+        self.told: tuple[str, int] | None = None
+        self.n_next = 0
 
     def take(self, level: int, position: int) -> float:
         """Enter a run's level and return the wealth."""
@@ -57,7 +58,6 @@ class OrderFact(Quiet):
         self._bar = math.exp(self._threshold)
         self._factors = {name: _Factor() for name in plan.factors}
         self._position = -1
-        self._changed: set[str] = set()
 
     def placed(self, run: Run, _position: int) -> Iterable[Finding]:
         """Enter the run's levels in the order of places."""
@@ -65,23 +65,14 @@ class OrderFact(Quiet):
         found: list[Finding] = []
         for name, factor in self._factors.items():
             wealth = factor.take(factor.levels.number(run.cell.get(name)), self._position)
-            if factor.told is not None:
-                self._changed.add(name)
-            elif wealth >= self._bar:
-                factor.told = self._finding(name, factor, run.id, self._position)
-                found.append(factor.told)
+            if factor.told is None and wealth >= self._bar:
+                factor.told = (run.id, self._position)
+            if factor.told is not None and factor.e.n >= factor.n_next:
+                factor.n_next = next_told(factor.e.n)
+                found.append(self._finding(name, factor, *factor.told))
         return found
 
-    def standing(self) -> Iterator[Finding]:
-        """Tell how the order looks by now."""
-        for name in sorted(self._changed):
-            factor = self._factors[name]
-            if factor.told is not None:
-                factor.told = self._finding(name, factor, factor.told.run, factor.told.index)
-                yield factor.told
-        self._changed.clear()
-
-    def _finding(self, name: str, factor: _Factor, run: str | None, index: int | None) -> Finding:
+    def _finding(self, name: str, factor: _Factor, run: str, index: int) -> Finding:
         n = factor.e.n
         by_chance = sum(k * (k - 1) for k in factor.e.counts) / max(1, n * (n - 1))
         return Finding(

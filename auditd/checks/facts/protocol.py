@@ -13,10 +13,10 @@ class Fact(Protocol):
     """One exact question, asked of each run as it lands.
 
     Its state lives in memory and is a function of the calls alone, so that replaying the store rebuilds
-    it. `arrived` and `placed` raise a condition when it begins, at the run that begins it, whatever the
-    split into blocks; `standing` brings the conditions that have grown since they were last told, and
-    those that no longer hold (`holds=False`). Two findings of one key are one condition, the later one
-    replaces the earlier.
+    it. `arrived` and `placed` tell of a condition at the run at which it begins, and again at runs at which
+    it has grown by a tenth; `standing` tells of those that no longer hold (`holds=False`) or have shrunk.
+    Nothing that is told depends on the split into blocks. Two findings of one key are one condition, the
+    later one replaces the earlier.
     """
 
     kind: ClassVar[Kind]

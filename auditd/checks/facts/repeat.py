@@ -4,10 +4,10 @@ from __future__ import annotations
 
 import math
 import struct
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable
 from typing import ClassVar, NamedTuple
 
-from auditd.checks.facts.condition import Condition, Episodes, counted
+from auditd.checks.facts.condition import Condition, Episodes, counted, next_told
 from auditd.checks.facts.labels import CellIndex
 from auditd.checks.facts.protocol import Quiet
 from auditd.checks.facts.resolution import MAX_CHANCE, Resolution
@@ -31,14 +31,15 @@ class _Earlier(NamedTuple):
 class _CellRepeats:
     """A cell's runs: how many, how many repeat, and since which of them."""
 
-    __slots__ = ("condition", "first", "n", "n_first", "n_repeats")
+    __slots__ = ("first", "n", "n_first", "n_next", "n_repeats", "raised_at")
 
     def __init__(self) -> None:
         self.n = 0
         self.n_repeats = 0
         self.n_first = 0  # runs of the cell, up to the first one that was repeated
         self.first = ""  # the first run that repeated
-        self.condition: Condition | None = None
+        self.raised_at = ""  # the run at which it could be told
+        self.n_next = 0  # runs of the cell at which it is told again
 
 
 class RepeatFact(Quiet):
@@ -84,15 +85,6 @@ class RepeatFact(Quiet):
             return ()
         return self._compared(run, arrival, cell, values)
 
-    def standing(self) -> Iterator[Finding]:
-        """Tell of repeats that have become more, and of their cause as it looks by now."""
-        for cell, tally in self._by_cell.items():
-            if tally.condition is not None and tally.condition.changed:
-                yield self._cell_finding(cell, tally)
-        for condition, first in self._apart.values():
-            if condition.changed:
-                yield self._apart_finding(condition, first)
-
     def _is_skipped(self, cell: int, run: Run) -> bool:
         skipped = self._skipped.get(cell)
         if skipped is None:
@@ -106,15 +98,13 @@ class RepeatFact(Quiet):
         if tally is None:
             tally = self._by_cell[cell] = _CellRepeats()
         tally.n += 1
-        if tally.condition is not None:
-            tally.condition.changed = True  # its share has changed
         seed = hash(run.seed) if run.seed is not None else 0
         key = hash(self._packed(*values))
         earlier = self._latest.get(key)
         self._latest[key] = _Earlier(run.id, cell, seed, tally.n)
         if earlier is None:
             self._resolution.take(cell, values)
-            return ()
+            return self._told_again(cell, tally)
         if earlier.cell == cell and seed and earlier.seed == seed:
             return ()
         n = max(self._n, self._horizon)
@@ -129,11 +119,16 @@ class RepeatFact(Quiet):
         if not tally.n_repeats:
             tally.n_first, tally.first = earlier.n_in_cell, run.id
         tally.n_repeats += 1
-        if tally.condition is None and is_chance:
+        if not (tally.raised_at or is_chance):
+            tally.raised_at = run.id
+        return self._told_again(cell, tally)
+
+    def _told_again(self, cell: int, tally: _CellRepeats) -> list[Finding]:
+        """Tell of a cell's repeats when they begin, and when the cell has gone on by a tenth since."""
+        if not tally.raised_at or tally.n < tally.n_next:
             return []
-        if tally.condition is None:
-            tally.condition = Condition(f"repeat:cell:{self._cells.labels[cell]}", run.id)
-        return [self._cell_finding(cell, tally)] if tally.condition.seen() else []
+        tally.n_next = tally.n_first + next_told(tally.n - tally.n_first)
+        return [self._cell_finding(cell, tally)]
 
     def _repeated_apart(self, run: Run, arrival: int, cell: int, earlier: _Earlier) -> list[Finding]:
         seeds_agree = run.seed is not None and earlier.seed == hash(run.seed)
@@ -149,8 +144,6 @@ class RepeatFact(Quiet):
         return []
 
     def _cell_finding(self, cell: int, tally: _CellRepeats) -> Finding:
-        condition = tally.condition or Condition("", None)
-        condition.changed = False
         label = self._cells.labels[cell]
         n_since = tally.n - tally.n_first
         share = tally.n_repeats / max(1, n_since)
@@ -167,10 +160,10 @@ class RepeatFact(Quiet):
                 f"{self._seeds}, first {tally.first}: a cache that answers twice"
             )
         return Finding(
-            key=condition.key,
+            key=f"repeat:cell:{label}",
             kind="repeat",
             message=message,
-            run=condition.run,
+            run=tally.raised_at,
             n=tally.n,
             cells=(label,),
             share=tally.n_repeats / tally.n,
@@ -178,7 +171,6 @@ class RepeatFact(Quiet):
         )
 
     def _apart_finding(self, condition: Condition, first: str) -> Finding:
-        condition.changed = False
         if condition.key.startswith("repeat:factor"):
             cause = "under one seed: a factor between these cells that is not used"
         else:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable
 from typing import ClassVar
 
 from auditd.checks.facts.condition import Condition, Episodes, counted
@@ -41,15 +41,8 @@ class RewriteFact(Quiet):
         condition, path = self._conditions[key]
         return (_finding(condition, path),) if condition.seen() else ()
 
-    def standing(self) -> Iterator[Finding]:
-        """Tell of rewrites that have become more."""
-        for condition, path in self._conditions.values():
-            if condition.changed:
-                yield _finding(condition, path)
-
 
 def _finding(condition: Condition, path: str) -> Finding:
-    condition.changed = False
     what = f"run {condition.run}" if condition.run else "a record"
     more = f"; {counted(condition.n, 'record')} in all" if condition.n > 1 else ""
     message = f"{what} in {path} changed after it had been taken; the audit keeps what it saw first{more}"

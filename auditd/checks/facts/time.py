@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from bisect import bisect_left, bisect_right
-from collections.abc import Hashable, Iterable, Iterator
+from collections.abc import Hashable, Iterable
 from datetime import datetime
 from typing import ClassVar
 
@@ -104,12 +104,6 @@ class TimeFact(Quiet):
                 found += self._seen(f"time:clock:{along}={level}", run, first, along, level)
         return found
 
-    def standing(self) -> Iterator[Finding]:
-        """Tell of conditions that have grown."""
-        for condition, first, along, level in self._conditions.values():
-            if condition.changed:
-                yield _finding(condition, first, along, level)
-
     def _overlaps(self, run: Run, start: datetime, finish: datetime) -> list[Finding]:
         found: list[Finding] = []
         tolerance_s = _tolerance_s(start, finish)
@@ -141,7 +135,6 @@ class TimeFact(Quiet):
 
 
 def _finding(condition: Condition, first: str, along: str | None, level: str | None) -> Finding:
-    condition.changed = False
     more = f"; {counted(condition.n, 'such run')} so far" if condition.n > 1 else ""
     return Finding(
         key=condition.key,

@@ -72,7 +72,7 @@ def make_run():
 
 @pytest.fixture
 def tell():
-    """Tell a fact of runs, each as it lands and gets its place at once; return the last finding of each key."""
+    """Tell a fact of runs, each placed as it lands; return the last finding of each key."""
 
     def told(fact, runs, *, place=True):
         found = {}
