@@ -1,1 +1,1 @@
-"""checks."""
+"""Questions asked of a campaign: exact facts as runs land (`facts`), and the full audit over every order."""

@@ -12,6 +12,7 @@ from auditd import __version__
 from auditd.cli import (
     amend,
     answer,
+    audit,
     compare,
     demo,
     evidence,
@@ -72,6 +73,7 @@ COMMANDS = (
     show.show,
     answer.answer,
     amend.amend,
+    audit.audit,
     evidence.evidence,
     compare.compare,
     explain.explain,

@@ -150,6 +150,8 @@ def _is_of(one: Document, fault: dict[str, Any]) -> bool:  # a JSON document
     """Whether a warning is of a planted fault: its kind, and where, as far as both say."""
     if one["kind"] not in fault["kinds"] or one["state"] == "withdrawn":
         return False
+    if (fault.get("says") or "") not in one["message"]:
+        return False
     return all(
         fault.get(name) is None or one[name] is None or fault[name] == one[name]
         for name in ("along", "level", "response")

@@ -1,0 +1,57 @@
+"""`runaudit audit`."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import click
+
+from auditd.cli.options import json_option, plan_path
+from auditd.cli.output import number, print_json, print_table, safe
+
+
+@click.command(epilog="Example: runaudit audit --json")
+@json_option
+@click.pass_context
+def audit(context: click.Context, as_json: bool) -> None:
+    """Look once with the classical checks, over every order; p-values adjusted across what was asked."""
+    from auditd.pipeline.full_audit import audit as look
+
+    document = look(plan_path(context))
+    if as_json:
+        print_json(document)
+        return
+    _print("dependence and design", document["findings"])
+    click.echo("")
+    _print("shape and spread (a family of their own)", document["shape"])
+    click.echo("\nnot checked:")
+    for sentence in document["not_checked"]:
+        click.echo(f"  {safe(sentence)}")
+    click.echo("\n'no evidence' is not proof of independence; `runaudit status` says what would have shown.")
+
+
+def _print(title: str, findings: list[dict[str, Any]]) -> None:  # findings' documents
+    click.echo(title)
+    rows = [
+        (
+            one["response"] or "(design)",
+            one["along"],
+            one["check"],
+            one["verdict"],
+            _effect(one["effect"]),
+            number(one["adjusted_pvalue"]),
+            one["n"],
+            one["reason"] or "",
+        )
+        for one in findings
+    ]
+    headers = ["  response", "along", "check", "verdict", "effect", "adjusted p", "runs", "remark"]
+    print_table(headers, [["  " + row[0], *row[1:]] for row in rows], right=[5, 6])
+
+
+def _effect(effect: dict[str, Any] | None) -> str:
+    if effect is None:
+        return ""
+    if effect["low"] is None:
+        return f"{effect['name']} {effect['value']:.3g}"
+    return f"{effect['name']} {effect['value']:.3g} ({effect['low']:.3g} to {effect['high']:.3g})"
