@@ -5,9 +5,7 @@ from __future__ import annotations
 import functools
 import math
 
-MIXTURE_RUNS = 20.0  # effective runs: the mixture's scale; at most 1.6 fixed widths from 60 to 700 effective runs
-    18.0  # effective runs: the mixture's scale; at most 1.6 fixed widths from 60 to 850 effective runs
-)
+MIXTURE_RUNS = 20.0  # effective runs: scale of the mixture; at most 1.6 fixed widths from 60 to 700 of them
 FIRST_LOOK_RUNS = 30.0  # effective runs from which the sequence holds; an earlier start costs width later
 
 

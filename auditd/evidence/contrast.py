@@ -227,7 +227,7 @@ def _paired_problem(runs: Runs, blocks: Codes) -> Problem | None:
 
 
 def _at_pairs(crossing: Crossing, pairs: Pairs) -> Crossing:
-    """The nuisance by block: no column for its levels, which cancel, but one for each level's own difference."""
+    """The nuisance by block: its levels cancel and have no column, each level's own difference has one."""
     present, code = np.unique(crossing.codes.codes[pairs.last], return_inverse=True)
     codes = Codes(codes=code, levels=tuple(crossing.codes.levels[i] for i in present))
     return replace(crossing, codes=codes, kind="cluster", both=np.arange(len(present)))
