@@ -36,11 +36,11 @@ def upper_tail(weights: Floats) -> float:
     if smallest >= 0.0:
         return 1.0
     scaled = weights / max(largest, -smallest)
-    upper = _one_side(scaled)
-    return upper if upper <= 0.5 else 1.0 - _one_side(-scaled)
+    upper = _small_tail(scaled)
+    return upper if upper <= 0.5 else 1.0 - _small_tail(-scaled)
 
 
-def _one_side(weights: Floats) -> float:
+def _small_tail(weights: Floats) -> float:
     """The tail, by trapezoidal sums along the contour whose step is halved until they agree."""
     end = 0.5 / float(weights.max())
     saddle = _saddle_point(weights, end)

@@ -27,7 +27,7 @@ MAX_SECANTS = 4
 MAX_LOOKS = 60
 
 
-def score(times: Floats, x: Floats) -> int:
+def kendall_score(times: Floats, x: Floats) -> int:
     """Kendall's S: pairs that rise less pairs that fall; equal times or values count zero. Times ascend."""
     n = x.size
     if np.all(times[1:] > times[:-1]):
@@ -178,7 +178,7 @@ def _narrowed(
 
 def _excess(times: Floats, x: Floats, slope: float, wanted: float) -> float:
     """How far S of x − slope · t is above the wanted one; it falls as the slope rises."""
-    return float(score(times, x - slope * times)) - wanted
+    return float(kendall_score(times, x - slope * times)) - wanted
 
 
 def _sampled_slopes(times: Floats, x: Floats) -> Floats:

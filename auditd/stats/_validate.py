@@ -53,6 +53,25 @@ def vector(x: ArrayLike, name: str, *, n_min: int = 1, varying: bool = False) ->
     return values
 
 
+def ascending_times(times: ArrayLike, n: int) -> Floats:
+    """Times that never fall, as many as values, counted from the first one.
+
+    Raises
+    ------
+    BadInput : malformed, another number than `n`, or descending.
+    NotTestable : all times are equal.
+    """
+    clock = vector(times, "times", n_min=2)
+    if clock.size != n:
+        raise BadInput(f"times has {clock.size} values; {n} are expected")
+    falls = clock[1:] < clock[:-1]
+    if falls.any():
+        raise BadInput(f"times descend at index {int(np.argmax(falls)) + 1}; sort the runs by time first")
+    if clock[0] == clock[-1]:
+        raise NotTestable("times that differ", f"{n} equal ones")
+    return np.asarray(clock - clock[0])
+
+
 def check_varying(values: Floats, name: str) -> None:
     """Raise when values are constant, or vary by too little to be squared in double precision."""
     spread = float(values.max() - values.min())

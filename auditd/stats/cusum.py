@@ -67,7 +67,7 @@ def cusum(x: ArrayLike, target: float, sigma: float, k: float, h: float) -> Cusu
     k = number(k, "k", above=0.0, below=1e6, closed=True)
     h = number(h, "h", above=0.0)
     z = number_of_sigmas(values, target, sigma)
-    path = np.column_stack((_one_sided(z - k), _one_sided(-z - k)))
+    path = np.column_stack((_reflected_sum(z - k), _reflected_sum(-z - k)))
     alarm, side, before = _first_alarm(path, h)
     return Cusum(
         statistic=float(path.max()),
@@ -87,7 +87,7 @@ def number_of_sigmas(values: Floats, target: float, sigma: float) -> Floats:
     return vector(z, "(x - target) / sigma")
 
 
-def _one_sided(steps: Floats) -> Floats:
+def _reflected_sum(steps: Floats) -> Floats:
     """max(0, C_{t−1} + step_t) without a loop: the walk less its lowest point so far."""
     walk = np.cumsum(steps)
     lowest = np.minimum(np.minimum.accumulate(walk), 0.0)

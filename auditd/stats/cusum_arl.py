@@ -56,15 +56,15 @@ def cusum_arl(k: float, h: float, shift: float, sides: int = 2, head_start: floa
     head_start = number(head_start, "head_start", above=0.0, below=h, closed=True)
     if h in (0.0, head_start):
         raise BadInput("h must be above 0, and head_start below h")
-    upper_zero, upper = _one_sided(k, h, shift, head_start)
+    upper_zero, upper = _one_sided_lengths(k, h, shift, head_start)
     if sides == 2:
-        upper = _two_sided(upper_zero, upper, *_one_sided(k, h, -shift, head_start))
+        upper = _two_sided_length(upper_zero, upper, *_one_sided_lengths(k, h, -shift, head_start))
     if math.isinf(upper):
         raise BadInput(f"the run length for k = {k:g}, h = {h:g} is beyond {LONGEST:g}; choose a smaller h")
     return max(1.0, upper)
 
 
-def _two_sided(upper_zero: float, upper: float, lower_zero: float, lower: float) -> float:
+def _two_sided_length(upper_zero: float, upper: float, lower_zero: float, lower: float) -> float:
     """Both sums together, from each one's run length started at zero and at the head start."""
     if math.isinf(upper_zero) or math.isinf(lower_zero):
         return min(upper, lower)
@@ -72,7 +72,7 @@ def _two_sided(upper_zero: float, upper: float, lower_zero: float, lower: float)
     return both / (upper_zero + lower_zero)
 
 
-def _one_sided(k: float, h: float, shift: float, head_start: float) -> tuple[float, float]:
+def _one_sided_lengths(k: float, h: float, shift: float, head_start: float) -> tuple[float, float]:
     """Run lengths from zero and from the head start; infinite when beyond what can be resolved."""
     from scipy.special import ndtr
 

@@ -76,7 +76,7 @@ def durbin_watson(
     basis, e = _freed_of_design(e, design)
     statistic = float(np.sum(np.diff(e) ** 2) / np.sum(e**2))
     method: Method = "exact" if e.size <= N_EXACT_MAX else "normal"
-    lower, upper = _tails(statistic, e.size, basis, method)
+    lower, upper = _both_tails(statistic, e.size, basis, method)
     pvalue = {"positive": lower, "negative": upper, "two-sided": min(1.0, 2.0 * min(lower, upper))}
     return DurbinWatson(
         statistic=statistic,
@@ -115,7 +115,7 @@ def _freed_of_design(e: Floats, design: ArrayLike | None) -> tuple[Floats, Float
     return np.empty((n, 0)), e
 
 
-def _tails(statistic: float, n: int, basis: Floats, method: Method) -> tuple[float, float]:
+def _both_tails(statistic: float, n: int, basis: Floats, method: Method) -> tuple[float, float]:
     """P(d ≤ statistic) and P(d ≥ statistic)."""
     if method == "normal":
         mean, variance = moments(n, basis)
@@ -137,9 +137,13 @@ def eigenvalues(n: int, basis: Floats) -> Floats:
         return path_eigenvalues(n)
     if p == 1 and float(np.ptp(basis)) < 1e-12:
         return path_eigenvalues(n)[1:]
-    complement = np.linalg.qr(basis, mode="complete")[0][:, p:]
-    steps = np.diff(complement, axis=0)
-    return np.asarray(np.linalg.eigvalsh(steps.T @ steps))
+    # The form projected on both sides, with the design's own directions put above all others (which are ≤ 4).
+    applied = _squared_difference(basis)
+    form = np.diag(np.r_[1.0, np.full(n - 2, 2.0), 1.0]) - np.eye(n, k=1) - np.eye(n, k=-1)
+    form -= applied @ basis.T
+    form -= basis @ applied.T
+    form += basis @ (basis.T @ applied + 8.0 * np.eye(p)) @ basis.T
+    return np.asarray(np.linalg.eigvalsh(form)[: n - p])
 
 
 def moments(n: int, basis: Floats) -> tuple[float, float]:

@@ -8,11 +8,11 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from auditd.errors import BadInput, NotTestable
+from auditd.errors import NotTestable
 from auditd.stats._autocovariance import centred
 from auditd.stats._nonuniform_fourier import fourier_sums
 from auditd.stats._results import HypothesisTest
-from auditd.stats._validate import Floats, count, vector
+from auditd.stats._validate import Floats, ascending_times, count, vector
 
 # Frequencies tried for each 1 / duration (common practice, 5 to 10; VanderPlas 2018, section 7.1).
 OVERSAMPLING = 5
@@ -73,7 +73,7 @@ def lomb_scargle(times: ArrayLike, x: ArrayLike, oversampling: int = OVERSAMPLIN
     """
     values = vector(x, "x", n_min=8, varying=True)
     n = values.size
-    clock = _clock(times, n)
+    clock = ascending_times(times, n)
     oversampling = count(oversampling, "oversampling", high=1000)
     duration = float(clock[-1]) * n / (n - 1.0)
     n_frequencies = oversampling * n // 2
@@ -90,25 +90,13 @@ def lomb_scargle(times: ArrayLike, x: ArrayLike, oversampling: int = OVERSAMPLIN
         statistic=power,
         n=n,
         source="Lomb (1976); Scargle (1982), Astrophys. J. 263:835; p-value: Baluev (2008), MNRAS 385:1279",
-        pvalue=exceedance(power, float(frequencies[-1]) * float(np.std(clock)), n),
+        pvalue=baluev_bound(power, float(frequencies[-1]) * float(np.std(clock)), n),
         null="the values are independent normal",
         period=1.0 / float(frequencies[peak]),
         power=power,
         frequencies=frequencies,
         powers=powers,
     )
-
-
-def _clock(times: ArrayLike, n: int) -> Floats:
-    clock = vector(times, "times", n_min=2)
-    if clock.size != n:
-        raise BadInput(f"times has {clock.size} values; {n} are expected")
-    falls = np.diff(clock) < 0.0
-    if falls.any():
-        raise BadInput(f"times descend at index {int(np.argmax(falls)) + 1}; sort the runs by time first")
-    if clock[0] == clock[-1]:
-        raise NotTestable("times that differ", f"{n} equal ones")
-    return np.asarray(clock - clock[0])
 
 
 def normalised_powers(phases: Floats, deviations: Floats, n_frequencies: int) -> Floats:
@@ -127,7 +115,7 @@ def normalised_powers(phases: Floats, deviations: Floats, n_frequencies: int) ->
     return np.asarray(np.clip(power / float(np.sum(deviations**2)), 0.0, 1.0))
 
 
-def exceedance(power: float, bandwidth: float, n: int) -> float:
+def baluev_bound(power: float, bandwidth: float, n: int) -> float:
     """Baluev's bound for a standard-normalised power, with the bandwidth f_max · sd(times)."""
     if power >= 1.0:
         return 0.0

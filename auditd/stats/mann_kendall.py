@@ -10,11 +10,11 @@ from typing import Literal
 import numpy as np
 from numpy.typing import ArrayLike
 
-from auditd.errors import BadInput, NotTestable
+from auditd.errors import NotTestable
 from auditd.stats._autocovariance import centred, lagged_products
 from auditd.stats._results import HypothesisTest
-from auditd.stats._sen_slope import middle_ranks, n_slopes, score, slopes_at, tie_sizes
-from auditd.stats._validate import Floats, choice, count, probability, vector
+from auditd.stats._sen_slope import kendall_score, middle_ranks, n_slopes, slopes_at, tie_sizes
+from auditd.stats._validate import Floats, ascending_times, choice, count, probability, vector
 
 # Autocorrelations of the ranks beyond ±1.96 / √n enter the correction (Hamed & Rao 1998, section 5).
 SIGNIFICANT = 1.959963984540054
@@ -90,11 +90,11 @@ def mann_kendall(
     choice(correction, "correction", (None, "hamed-rao"))
     values = vector(x, "x", n_min=4, varying=True)
     n = values.size
-    clock = _clock(times, n)
+    clock = np.arange(n, dtype=np.float64) if times is None else ascending_times(times, n)
     half = NormalDist().inv_cdf(0.5 + 0.5 * probability(confidence, "confidence"))
     if lags is not None:
         lags = count(lags, "lags", high=n - 1)
-    s = score(clock, values)
+    s = kendall_score(clock, values)
     var_s = variance(values, clock)
     total = n_slopes(clock)
     if correction is not None:
@@ -118,20 +118,6 @@ def mann_kendall(
         slope_high=upper,
         correction=correction,
     )
-
-
-def _clock(times: ArrayLike | None, n: int) -> Floats:
-    if times is None:
-        return np.arange(n, dtype=np.float64)
-    clock = vector(times, "times", n_min=4)
-    if clock.size != n:
-        raise BadInput(f"times has {clock.size} values; {n} are expected")
-    if np.any(np.diff(clock) < 0.0):
-        first = int(np.argmax(np.diff(clock) < 0.0)) + 1
-        raise BadInput(f"times descend at index {first}; sort the runs by time first")
-    if clock[0] == clock[-1]:
-        raise NotTestable("times that differ", f"{n} equal ones")
-    return np.asarray(clock - clock[0])
 
 
 def variance(x: Floats, times: Floats) -> float:

@@ -75,7 +75,7 @@ def von_neumann_rank(x: ArrayLike, alternative: str = "two-sided") -> VonNeumann
     steps = float(np.sum(np.diff(ranks) ** 2))
     statistic = steps / float(np.sum((ranks - 0.5 * (n + 1.0)) ** 2))
     variance = 4.0 * (n - 2.0) * (5.0 * n * n - 2.0 * n - 9.0) / (5.0 * n * (n + 1.0) * (n - 1.0) ** 2)
-    lower, upper = _exact_tails(ranks, steps) if n <= N_EXACT_MAX else _beta_tails(statistic, variance)
+    lower, upper = _counted_tails(ranks, steps) if n <= N_EXACT_MAX else _beta_tails(statistic, variance)
     pvalue = {"two-sided": min(1.0, 2.0 * min(lower, upper)), "positive": lower, "negative": upper}
     return VonNeumannRank(
         statistic=statistic,
@@ -100,7 +100,7 @@ def _beta_tails(statistic: float, variance: float) -> tuple[float, float]:
     return float(betainc(shape, shape, share)), float(betainc(shape, shape, 1.0 - share))
 
 
-def _exact_tails(ranks: Floats, steps: float) -> tuple[float, float]:
+def _counted_tails(ranks: Floats, steps: float) -> tuple[float, float]:
     """Over all orders of these ranks, tied ones told apart."""
     counts = _step_counts(tuple(sorted(int(r) for r in 2.0 * ranks)))
     total = float(counts.sum())
