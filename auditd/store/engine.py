@@ -14,7 +14,7 @@ from sqlalchemy.exc import DBAPIError, OperationalError
 from sqlalchemy.pool import NullPool
 
 from auditd.errors import StoreError, StoreNewer, Unavailable
-from auditd.store.sqlite_file import connect_file, file_revision
+from auditd.store.sqlite_file import connect_file, file_revision, may_write
 from auditd.store.tables import REVISION
 
 _UNDEFINED_TABLE = "42P01"
@@ -90,7 +90,7 @@ def _begin(connection: Any, *, read_only: bool) -> None:
 def _check_file(file: Path, *, read_only: bool) -> None:
     if not file.is_file():
         raise StoreError(f"no store at {file}; run `runaudit gather` or `runaudit watch` first")
-    if not read_only and not (os.access(file, os.W_OK) and os.access(file.parent, os.W_OK)):
+    if not read_only and not may_write(file):
         raise StoreError(
             f"the store {file} is read-only here; make the file and its folder writable for this user, "
             "or name another file in store.url"

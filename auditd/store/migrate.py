@@ -24,7 +24,7 @@ from auditd.errors import CannotCreate, StoreDamaged, StoreError, StoreHeld, Una
 from auditd.store.copying import copy_database, integrity_complaints, page_complaint, sync_folder
 from auditd.store.engine import connect_engine, open_engine, refuse_newer, shown_url, stored_revision
 from auditd.store.lock import Holder
-from auditd.store.sqlite_file import BUSY_TIMEOUT_MS, file_revision
+from auditd.store.sqlite_file import BUSY_TIMEOUT_MS, connect_file, file_revision
 from auditd.store.tables import REVISION
 
 MIGRATION_LOCK = 0x61756469
@@ -152,11 +152,19 @@ def _migrate_draft(draft: Path) -> None:
     complaints = integrity_complaints(draft)
     if complaints:
         raise StoreDamaged(f"the migrated copy does not check: {complaints[0]}; the store is as it was")
-    _end_log(draft)
+    _fold_log(draft)
+
+
+def _fold_log(draft: Path) -> None:
+    """Fold the draft's log into it; the file itself says that it wants a log, from its first reader on."""
+    with closing(connect_file(draft, read_only=False)) as connection:
+        connection.execute("PRAGMA wal_checkpoint(TRUNCATE)")
+    if Path(f"{draft}-wal").exists():
+        raise StoreHeld(f"{draft} is being read by another process; end it and try again")
 
 
 def _end_log(file: Path) -> None:
-    """Fold a file's write-ahead log into it and remove it: a log beside another file would be played into it.
+    """Fold the old file's log into it and remove it: it would be played into the file that takes its place.
 
     Raises
     ------

@@ -255,17 +255,20 @@ def _stored(row: Row[Any], levels: dict[str, dict[str, Level]]) -> StoredRun:
     )
 
 
-def give_arrivals(connection: Connection, first_arrival: int) -> tuple[StoredRun, ...]:
-    """Take up runs that collectors inserted: give them arrivals, in the order of insertion."""
-    new = list(stored_runs(connection, runs.c.arrival.is_(None), order=runs.c.row))
-    if not new:
-        return ()
-    taken = [msgspec.structs.replace(run, arrival=first_arrival + k) for k, run in enumerate(new)]
+def give_arrivals(connection: Connection, first_arrival: int, by: str = "arrival") -> Iterator[StoredRun]:
+    """Take up runs that were inserted without an arrival, and yield them.
+
+    They are numbered by `sequence` or `started`, or in the order of insertion (`arrival`), which also breaks
+    ties: what a backfill found at once is told in the order in which it was made.
+    """
+    keys = {"sequence": runs.c.sequence, "started": func.coalesce(runs.c.started_us, runs.c.finished_us)}
+    order = [runs.c.row] if by not in keys else [keys[by].is_(None), keys[by], runs.c.row]
+    place = func.row_number().over(order_by=order) - 1
+    numbered = select(runs.c.row, place.label("place")).where(runs.c.arrival.is_(None)).subquery()
     connection.execute(
-        update(runs).where(runs.c.row == bindparam("of_row")).values(arrival=bindparam("new_arrival")),
-        [{"of_row": run.row, "new_arrival": run.arrival} for run in taken],
+        update(runs).where(runs.c.row == numbered.c.row).values(arrival=first_arrival + numbered.c.place)
     )
-    return tuple(taken)
+    return stored_runs(connection, runs.c.arrival >= first_arrival)
 
 
 def give_positions(connection: Connection, places: Sequence[tuple[int, int]]) -> None:

@@ -27,11 +27,16 @@ def connect_file(file: Path, *, read_only: bool, durable: bool = True) -> sqlite
     """
     if not read_only:
         return _set_up_writer(_connect(file, "rw"), durable=durable)
-    alone = not _has_log(file) and not (os.access(file, os.W_OK) and os.access(file.parent, os.W_OK))
+    alone = not _has_log(file) and not may_write(file)
     raw = _connect(file, "ro", immutable=alone)
     raw.execute("PRAGMA query_only=ON")
     raw.execute("PRAGMA cache_size=-32000")
     return raw
+
+
+def may_write(file: Path) -> bool:
+    """Whether this process may write a file and make others beside it, as a log needs."""
+    return all(os.access(path, os.W_OK, effective_ids=True) for path in (file, file.parent))
 
 
 def file_revision(file: Path) -> str | None:
@@ -95,7 +100,7 @@ def _told(file: Path, error: sqlite3.DatabaseError) -> StoreError:
             f"{file} is damaged ({reason}) and left as found: run `runaudit store verify`, "
             "then name a new file in store.url and gather the landed files again"
         )
-    hint = "check its folder" if os.access(file, os.W_OK) else "it is read-only here"
+    hint = "check its folder" if may_write(file) else "it is read-only here"
     return StoreError(f"{file} cannot be opened ({reason}); {hint}")
 
 
