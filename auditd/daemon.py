@@ -101,8 +101,13 @@ class Daemon:
         self.courier.start()
 
     def _scan_first(self) -> None:
-        self._retrying(lambda: self._take(self.landing.scan(time.time())))
+        self._retrying(self._take_what_is_there)
         self._beat(force=True)
+
+    def _take_what_is_there(self) -> None:
+        self.session.take_up()
+        self._take(self.landing.scan(time.time()))
+        self._advance(None)
 
     def _loop(self) -> int:
         while not self.stop.is_set():

@@ -16,7 +16,7 @@ from auditd.series.table import Floats
 class DriftPettitt:
     """Detect one change of level in a response by the largest rank-sum difference.
 
-    Null hypothesis: within cells all values come from one distribution. Alternative: another from some run on.
+    Null hypothesis: within cells all values have one distribution. Alternative: another from some run on.
     Assumptions: no serial dependence; a trend or slow correlation shows here too.
     """
 

@@ -124,6 +124,6 @@ def normal_scores(values: Floats, cells: Ints) -> Floats:
 
 
 def permutation_pvalue(observed: float, under_null: NDArray[np.float64]) -> float:
-    """Return the share of permutations as extreme or more, the observed one counted (Phipson & Smyth 2010)."""
+    """Return the share of permutations as extreme or more, the observed one too (Phipson & Smyth 2010)."""
     extreme: Flags = under_null >= observed
     return float((extreme.sum() + 1) / (len(under_null) + 1))

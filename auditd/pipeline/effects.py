@@ -87,6 +87,8 @@ def _means(values: Floats, codes: np.ndarray, n_cells: int) -> Floats:
 def _shift(_finding: Finding, part: _Part) -> Effect | None:
     """Return the mean since the change less that before it; errors widened for lag-1 correlation."""
     after, before = part.chosen(part.since), part.chosen(part.before)
+    if len(before) < N_LEAST:  # a level that is new: against all runs before it
+        before = part.residuals[part.before]
     if min(len(after), len(before)) < N_LEAST:
         return None
     value = float(after.mean() - before.mean())

@@ -37,7 +37,7 @@ def gather(plan_path: Path, report: Report) -> Gathered:
             known = list(stored_sources(connection))
         landing = Landing(campaign.plan, known, settle_all=True)
         for batch in landing.scan(time.time()):
-            session.take(batch)
+            session.take(batch, at_once=False)
             report("read", landing.progress)
         session.take_up()
         report("audit", landing.progress)

@@ -63,6 +63,10 @@ class Raiser:
                 self._renew(connection, self._cautions[known], finding, table)
         return n_new
 
+    def raise_missing(self, connection: Connection, findings: Iterable[Finding]) -> int:
+        """Raise what the stored runs show and no warning tells: the process ended before it was raised."""
+        return self.raise_facts(connection, [one for one in findings if one.key not in self._of_key])
+
     def raise_alarms(self, connection: Connection, alarms: Sequence[Raised], audit: Audit) -> int:
         """Raise the sequential audit's alarms; count the warnings that are new."""
         if not alarms:

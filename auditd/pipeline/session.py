@@ -35,6 +35,7 @@ from auditd.store.runs import (
 )
 from auditd.store.sources import save_source
 from auditd.store.states import save_flush
+from auditd.store.tables import runs
 
 CHECKPOINT_EVERY_RUNS = 500
 """Placed runs between two saved states; after a kill so many are audited again."""
@@ -78,26 +79,31 @@ class Session:
             self.placer = Placer(self.plan)
             self.facts = FactBook(self.plan, alarm_budget=shares(self.plan).facts)
             self._configs = ConfigRows()
-            self._replay(connection)
+            findings = self._replay(connection)
             self.raiser = Raiser(self.plan, connection)
+            self.totals.n_raised += self.raiser.raise_missing(connection, findings)
             self.audit = Audit(self.plan, connection, self._next_position)
         self._n_since_checkpoint = 0
         self._checkpoint_at = time.monotonic()
 
-    def _replay(self, connection: Connection) -> None:
+    def _replay(self, connection: Connection) -> list[Finding]:
         """Tell placer and facts of every stored run, in the order in which they first heard of them."""
         placed: list[StoredRun] = []
-        for stored in stored_runs(connection):
+        findings: list[Finding] = []
+        for stored in stored_runs(connection, runs.c.arrival.is_not(None)):
             self.placer.restore([stored])
-            self.facts.arrived(stored.run, stored.arrival or 0)
+            findings += self.facts.arrived(stored.run, stored.arrival or 0)
             if stored.position is not None:
                 placed.append(stored)
         for stored in sorted(placed, key=lambda run: run.position or 0):
-            self.facts.placed(stored.run, stored.position or 0)
-        self.facts.standing()
+            findings += self.facts.placed(stored.run, stored.position or 0)
+        return findings + self.facts.standing()
 
-    def take(self, batch: Batch) -> None:
-        """Take one visit's records, with how far the file has been read, in one transaction."""
+    def take(self, batch: Batch, *, at_once: bool = True) -> None:
+        """Take one visit's records, with how far the file has been read, in one transaction.
+
+        Without `at_once` the runs are stored, and `take_up` tells of them later, in their own order.
+        """
         landed_us = now_us()
         found = [item for item in batch.items if isinstance(item, Run)]
         refused = [item for item in batch.items if isinstance(item, Refusal)]
@@ -108,17 +114,19 @@ class Session:
                 [(run, ordered) for run in found],
                 landed_us=landed_us,
                 config_rows=self._configs,
-                first_arrival=self._next_arrival,
+                first_arrival=self._next_arrival if at_once else None,
             )
             refused += inserted.rewritten
-            new_refusals = save_refusals(connection, refused, landed_us, taken_up=True)
+            new_refusals = save_refusals(connection, refused, landed_us, taken_up=at_once)
             save_source(connection, batch.source)
-            findings = self._hear(inserted.stored, new_refusals)
-            self.totals.n_raised += self.raiser.raise_facts(connection, findings)
-        self._next_arrival += len(inserted.stored)
-        if inserted.stored:
+            if at_once:
+                findings = self._hear(inserted.stored, new_refusals)
+                self.totals.n_raised += self.raiser.raise_facts(connection, findings)
+        n_new = len(found) - len(inserted.rewritten) - inserted.n_seen_before
+        if n_new and at_once:
+            self._next_arrival += n_new
             self.landed_at, self.last_run = landed_us / 1e6, inserted.stored[-1].run.id
-        self.totals.n_runs += len(inserted.stored)
+        self.totals.n_runs += n_new
         self.totals.n_refused += len(new_refusals)
         self.totals.n_seen_before += inserted.n_seen_before
 
@@ -144,7 +152,9 @@ class Session:
 
     def take_up_if_shared(self) -> int:
         """Take up what collectors have inserted, where the store is a server that they can reach."""
-        return self.take_up() if self.campaign.url.get_backend_name() == "postgresql" else 0
+        if self.campaign.url.get_backend_name() != "postgresql":
+            return 0
+        return self.take_up()
 
     def is_outdated(self) -> bool:
         """Whether another process took a newer version of the plan into use."""
@@ -152,14 +162,23 @@ class Session:
             return plan_versions(connection)[-1].version != self._plan_version
 
     def take_up(self) -> int:
-        """Take up what collectors have inserted; return how many runs that were."""
+        """Take up runs and refusals that are stored but not told of yet; return how many runs that were."""
+        n_new = 0
         with self.campaign.engine.begin() as connection:
-            stored = give_arrivals(connection, self._next_arrival)
-            findings = self._hear(stored, take_up_refusals(connection))
+            findings: list[Finding] = []
+            for stored in give_arrivals(connection, self._next_arrival, self.placer.by):
+                n_new += 1
+                self.last_run = stored.run.id
+                self.placer.add(stored)
+                findings += self.facts.arrived(stored.run, stored.arrival or 0)
+            for refusal in take_up_refusals(connection):
+                findings += self.facts.refused(refusal)
+            findings += self.facts.standing()
             self.totals.n_raised += self.raiser.raise_facts(connection, findings)
-        self._next_arrival += len(stored)
-        self.totals.n_runs += len(stored)
-        return len(stored)
+        self._next_arrival += n_new
+        if n_new:
+            self.landed_at = time.time()
+        return n_new
 
     def advance(self, flush: str | None = None) -> int:
         """Give places to the runs that may enter, audit them, raise warnings; return how many entered.
