@@ -41,9 +41,10 @@ CHECKS: tuple[str, ...] = (
     "integrated_time", "mann_kendall", "pettitt", "cusum", "ewma", "one_way", "variance_components",
     "intraclass", "newey_west", "cluster_covariance", "welch_anova", "kruskal_wallis", "brown_forsythe",
     "levene", "bartlett", "shapiro_wilk", "anderson_darling", "generalized_esd", "grubbs", "fisher_g",
-    "lomb_scargle", "cramers_v", "level_order", "hedges_g", "equivalence",
+    "lomb_scargle", "cramers_v", "level_order", "hedges_g", "equivalence", "daily_cycle",
+    "parent_correlation",
 )  # fmt: skip
-"""Offline checks and estimators that can be explained, by the names of `auditd.stats`."""
+"""Offline checks and estimators that can be explained, by the names of `auditd.checks` and `auditd.stats`."""
 
 
 def explain(kind: str) -> Explanation:
