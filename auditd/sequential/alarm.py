@@ -13,10 +13,15 @@ FloatArray = npt.NDArray[np.float64]
 Key = tuple[str, str]
 
 N_RUNS_SOON: Final = 300
-"""Scored runs after a leader's alarm within which what it can explain is listed under it whatever its date."""
+"""Runs scored after a leader's alarm within which what it can explain is listed under it, at any date."""
 
 MEAN_KINDS: Final = frozenset({"serial", "drift", "batch", "clock", "lineage"})
 """Kinds that say that a score's mean can be predicted; each leaves traces in all the others and in spread."""
+
+
+LASTING_KINDS: Final = frozenset({"serial", "batch", "clock", "lineage"})
+"""Kinds that go on for as long as nothing is repaired, and so explain later alarms too. A drift explains what
+begins with it; a later alarm with another date is a fault of its own."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -74,7 +79,7 @@ class Alarm:
 
 @dataclass(frozen=True, kw_only=True)
 class Crossing:
-    """A family's crossing within a block: position, family, threshold crossed, and whether it is the first."""
+    """A family's crossing within a block: position, family, threshold, and whether it is the first alarm."""
 
     at: int
     key: Key

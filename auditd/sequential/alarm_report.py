@@ -7,7 +7,17 @@ from collections.abc import Mapping, Sequence
 import numpy as np
 import numpy.typing as npt
 
-from auditd.sequential.alarm import N_RUNS_SOON, Alarm, Crossing, Explained, Key, can_explain, takes_over
+from auditd.sequential.alarm import (
+    LASTING_KINDS,
+    N_RUNS_SOON,
+    Alarm,
+    Crossing,
+    Explained,
+    Key,
+    can_explain,
+    takes_over,
+)
+from auditd.sequential.book import Book
 from auditd.sequential.dating import (
     N_RUNS_DATED,
     log_weight_of_bets,
@@ -15,7 +25,6 @@ from auditd.sequential.dating import (
     log_weight_of_spread,
     starts_not_excluded,
 )
-from auditd.sequential.book import Book
 from auditd.sequential.history import History
 from auditd.sequential.levels import LevelCodes, group
 from auditd.sequential.questions import fresh_bets
@@ -41,7 +50,7 @@ def describe(
 ) -> Alarm:
     """Make the alarm of a crossing."""
     history, levels = series.history, series.levels
-    named = {key: _level(key, crossing.at, book, history, levels, n_scored) for key in log_e}
+    named = {key: _level(key, crossing.at, book, series, n_scored) for key in log_e}
     level = named[crossing.key]
     since, low, high = _dates(crossing.key, level, history, levels, n_scored)
     index = int(history.index[n_scored - 1])
@@ -79,15 +88,15 @@ def _place(
             return None, leader.key
         soon = n_scored - leader.n_scored <= N_RUNS_SOON
         same_start = low <= leader.since_high and high >= leader.since_low
-        if can_explain(leader.key, key) and (soon or same_start):
+        lasting = leader.kind in LASTING_KINDS
+        if can_explain(leader.key, key) and (soon or same_start or lasting):
             return leader.key, None
     return None, None
 
 
-def _level(
-    key: Key, at: int, book: Book, history: History, levels: Mapping[str, LevelCodes], n_scored: int
-) -> str | None:
-    """Name the level with the largest evidence of its own; for `batch`, with the largest standardised mean."""
+def _level(key: Key, at: int, book: Book, series: ScoredSeries, n_scored: int) -> str | None:
+    """Name the level with the largest evidence of its own; for `batch`, the largest standardised mean."""
+    history, levels = series.history, series.levels
     if key[1] not in levels:
         return None
     evidence = book.level_log_wealth(key, at)
@@ -118,7 +127,8 @@ def _dates(
                 _block(z, window, history, kind, along)
             )
         )
-    since, low, high = (int(index[at]) for at in starts_not_excluded(weight))
+    # Where the first run looked at cannot be excluded, no earlier one can.
+    since, low, high = (int(index[at]) if at else 0 for at in starts_not_excluded(weight))
     return since, low, high
 
 

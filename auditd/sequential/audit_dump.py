@@ -46,7 +46,9 @@ def dump_from(data: bytes) -> AuditDump:
             raise BadInput(
                 f"this audit state has version {version}, this release reads {VERSION}: replay the runs"
             )
-        return msgspec.msgpack.decode(data, type=AuditDump, dec_hook=_decode_array)
+        return msgspec.msgpack.decode(
+            data, type=AuditDump, dec_hook=lambda _kind, value: _decode_array(value)
+        )
     except msgspec.MsgspecError as error:
         raise BadInput(f"these bytes are no audit state: {error}") from error
 
@@ -61,6 +63,6 @@ def _encode_array(value: Any) -> Any:  # msgspec's hook takes and gives whatever
     raise NotImplementedError(f"{type(value).__name__} cannot be kept in an audit state")
 
 
-def _decode_array(kind: type, value: Any) -> Any:  # as above
+def _decode_array(value: Any) -> Any:  # as above
     shape, data = value
     return np.frombuffer(data, dtype="<f8").astype(np.float64).reshape(shape)

@@ -62,9 +62,9 @@ class EarlierRuns:
 class Auditor:
     """Audits one response, continuing from its state.
 
-    Null hypothesis: given labels and order, the joint law of the response is unchanged by permuting runs within
-    cells. Alternative: any of the families' dependences, from any run on. Under the null the probability of any
-    alarm, at whatever moments anyone looks, is at most `alarm_budget` (Ville 1939).
+    Null hypothesis: given labels and order, the joint law of the response is unchanged by permuting runs
+    within cells. Alternative: any of the families' dependences, from any run on. Under the null the
+    probability of any alarm, at whatever moments anyone looks, is at most `alarm_budget` (Ville 1939).
 
     Assumptions: order, labels and times do not depend on the responses (otherwise the rate can rise without
     bound: see `stages`); `pooled` and `formula` assume Gaussian errors of one variance, or a random order of
@@ -259,11 +259,10 @@ class Auditor:
         return block
 
     def _log_mean(self, paths: FloatArray) -> FloatArray:
-        return log_sum(paths) - np.log(self.n_asked)
+        mean: FloatArray = log_sum(paths) - np.log(self.n_asked)
+        return mean
 
-    def _advance_part(
-        self, block: RunBlock, scores: FloatArray, part: slice
-    ) -> tuple[FloatArray, list[Alarm]]:
+    def _advance_part(self, block: RunBlock, scores: Scores, part: slice) -> tuple[FloatArray, list[Alarm]]:
         """Bet on one part of a block and raise its alarms."""
         at, scored = self._series.take(block, scores, part)
         paths = np.repeat(self._latest[:, None], part.stop - part.start, axis=1)

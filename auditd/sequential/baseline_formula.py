@@ -19,8 +19,9 @@ OUTSIDE_SPAN = 1e-8
 class FormulaBaseline:
     """Recursive residuals (y_t − x_t'β_{t−1}) / √(1 + x_t'(X'X)⁻¹x_t).
 
-    A run whose row lies outside the span of the earlier rows cannot be predicted and has none. Exact ranks for
-    Gaussian errors of one variance; a misfit of the formula looks like drift unless levels come in random order.
+    A run whose row lies outside the span of the earlier rows cannot be predicted and has none. Exact ranks
+    for Gaussian errors of one variance; a misfit of the formula looks like drift unless levels come in random
+    order.
 
     References
     ----------
@@ -33,7 +34,7 @@ class FormulaBaseline:
         self._origin = np.nan
 
     def residuals(self, values: FloatArray, design: FloatArray) -> tuple[FloatArray, FloatArray]:
-        """Give the residuals of the next runs and the share of each that is the run's own; the runs then join.
+        """Give the next runs' residuals and the share of each that is the run's own; the runs then join.
 
         A run that cannot be predicted has NaN. The own share 1/(1 + leverage) is the squared correlation with
         the error.

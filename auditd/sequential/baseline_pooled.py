@@ -14,7 +14,7 @@ IntArray = npt.NDArray[np.int64]
 class PooledBaseline:
     """Recursive residuals (y − mean of m earlier runs of the cell)·√(m/(m+1)).
 
-    Independent and N(0, σ²) when errors are Gaussian with one variance in all cells; then their ranks are exact.
+    Independent and N(0, σ²) when errors are Gaussian with one variance in all cells; then ranks are exact.
 
     References
     ----------
@@ -27,7 +27,7 @@ class PooledBaseline:
         self._sum = np.zeros(0)
 
     def residuals(self, values: FloatArray, cells: IntArray) -> tuple[FloatArray, FloatArray]:
-        """Give the residuals of the next runs and the share of each that is the run's own; the runs then join.
+        """Give the next runs' residuals and the share of each that is the run's own; the runs then join.
 
         A cell's first run has NaN and 0. The own share m/(m+1) is the squared correlation with the error.
         """

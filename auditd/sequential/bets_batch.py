@@ -24,7 +24,7 @@ class BatchEffects:
     Searle, Casella & McCulloch (1992), Variance Components, section 3.4: best prediction of a random effect.
     """
 
-    families = (("batch", len(BATCH_SHARE)),)
+    families: tuple[tuple[str, int], ...] = (("batch", len(BATCH_SHARE)),)
     has_levels_alone = False
 
     def __init__(self, along: str) -> None:
@@ -53,7 +53,7 @@ class BatchEffects:
         by_level = (
             0.5 * z * z - 0.5 * np.log(variance) - (z - root * posterior * moment) ** 2 / (2.0 * variance)
         )
-        log_l = np.empty_like(by_level)
+        log_l: FloatArray = np.empty_like(by_level)
         log_l[:, groups.by_level] = by_level
         return log_l
 

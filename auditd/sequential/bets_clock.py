@@ -22,7 +22,7 @@ class ClockCycle:
     Gelman et al. (2013), Bayesian Data Analysis, section 14.8 (normal prior, known variance).
     """
 
-    families = (("clock", len(CLOCK_PERIOD_S) * len(CLOCK_VARIANCE)),)
+    families: tuple[tuple[str, int], ...] = (("clock", len(CLOCK_PERIOD_S) * len(CLOCK_VARIANCE)),)
     has_levels_alone = False
     along = "order"
 

@@ -12,9 +12,9 @@ FloatArray = npt.NDArray[np.float64]
 
 
 class ParentCorrelation:
-    """Bets that a run's score is N(φ·z_parent, 1 − φ²); a run without a scored earlier parent is not bet on."""
+    """Bets that a run's score is N(φ·z_parent, 1 − φ²); without a scored earlier parent it does not bet."""
 
-    families = (("lineage", len(LINEAGE_PHI)),)
+    families: tuple[tuple[str, int], ...] = (("lineage", len(LINEAGE_PHI)),)
     has_levels_alone = False
     along = "order"
 

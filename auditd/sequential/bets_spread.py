@@ -14,7 +14,7 @@ FloatArray = npt.NDArray[np.float64]
 class SpreadChange:
     """Bets that scores are N(0, κ²)."""
 
-    families = (("spread", len(SPREAD_SCALE)),)
+    families: tuple[tuple[str, int], ...] = (("spread", len(SPREAD_SCALE)),)
     has_levels_alone = False
     along = "order"
 

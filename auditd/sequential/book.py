@@ -34,6 +34,7 @@ class Book:
         )
         self._joint = StartMixture([family for bet in self._bets for family in bet.families])
         self._alone = {bet.along: LevelsAlone(bet.families) for bet in self._bets if bet.has_levels_alone}
+        self._shared: dict[str, FloatArray] = {}
 
     def advance(self, block: ScoredBlock) -> FloatArray:
         """Take the next scored runs; give each family's log e-value after each, (families, n)."""
@@ -45,11 +46,20 @@ class Book:
             row = rows.stop
             if bet.has_levels_alone:
                 alone = self._alone[bet.along].follow(bets_log_l, block.count, block.groups[bet.along])
+                self._shared[bet.along] = log_e[rows] - alone
                 log_e[rows] = np.logaddexp(log_e[rows] + LOG_EVERY, alone + LOG_ONE)
         return log_e
 
+    def is_shared(self, key: Key, at: int) -> bool:
+        """Say whether all levels together show more than one alone, after run `at` of the last block."""
+        for bet in self._bets:
+            kinds = [kind for kind, _ in bet.families]
+            if bet.has_levels_alone and bet.along == key[1] and key[0] in kinds:
+                return bool(self._shared[bet.along][kinds.index(key[0]), at] > 0.0)
+        return False
+
     def level_log_wealth(self, key: Key, at: int) -> FloatArray | None:
-        """Give each level's own log wealth after run `at` of the block taken last, where levels stand alone."""
+        """Give each level's own log wealth after run `at` of the block taken last, or None."""
         for bet in self._bets:
             kinds = [kind for kind, _ in bet.families]
             if bet.has_levels_alone and bet.along == key[1] and key[0] in kinds:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from typing import Final
 
 import numpy as np
@@ -68,7 +67,7 @@ class CellReference:
 class ConformalRanks:
     """Ranks runs among the earlier runs of their cell, block after block.
 
-    p = (#{earlier smaller} + U·(1 + #{earlier equal})) / n, n counting the run itself. If each cell's runs are
+    p = (#{earlier smaller} + U·(1 + #{earlier equal})) / n, n counting the run itself. If a cell's runs are
     exchangeable, the p are independent and uniform, whatever the law of the values; this is the second place
     on which the guarantee rests.
 

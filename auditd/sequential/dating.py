@@ -53,7 +53,7 @@ def log_weight_of_bets(log_l: FloatArray) -> FloatArray:
 def starts_not_excluded(log_weight: FloatArray) -> tuple[int, int, int]:
     """Give the most probable start and the first and last of the starts kept.
 
-    The starts kept are the most probable ones that together hold COVERAGE of the posterior under an even prior.
+    Kept are the most probable starts that together hold COVERAGE of the posterior under an even prior.
     """
     weight = np.exp(log_weight - log_weight.max())
     order = np.argsort(-weight, kind="stable")

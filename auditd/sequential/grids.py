@@ -20,7 +20,7 @@ DRIFT_PHI_LEVEL: Final = (0.97, 0.99)
 DRIFT_SHARE: Final = (0.03, 0.1, 0.3, 0.6)
 """Share of variance of a slow signal: standard deviations of 0.17, 0.32, 0.55 and 0.77 of a score's."""
 
-BATCH_SHARE: Final = (0.01, 0.03, 0.1, 0.25, 0.5)
+BATCH_SHARE: Final = (0.03, 0.1, 0.3)
 """Intraclass correlations bet on by `batch`."""
 
 BATCH_WINDOW: Final = 200

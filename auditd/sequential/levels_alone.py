@@ -53,7 +53,8 @@ class LevelsAlone:
         )
         n_seen = np.maximum.accumulate(np.maximum(groups.code, n_before - 1)) + 1
         total = np.logaddexp(total, self._rows.log_first[:, None] - np.log1p(n_seen))
-        return np.logaddexp(total, self._rows.log_late + log_unstarted(count))
+        log_e: FloatArray = np.logaddexp(total, self._rows.log_late + log_unstarted(count))
+        return log_e
 
     def _join(self, new: IntArray) -> None:
         """Give new levels their share of the first start."""
@@ -76,7 +77,7 @@ class LevelsAlone:
     def level_log_wealth(self, family: int, at: int) -> FloatArray:
         """Give each level's log wealth after run `at` of the block taken last; −inf before its first run."""
         code, value, before = self._past
-        latest = before[family].copy()
+        latest: FloatArray = before[family].copy()
         # Of repeated positions the last assignment stands.
         latest[code[: at + 1]] = value[family, : at + 1]
         return latest

@@ -27,9 +27,11 @@ def bets_asked(options: Options) -> tuple[Bets, ...]:
 
 
 def fresh_bets(kind: str, along: str, *, within_one_level: bool) -> Bets:
-    """Give the bets of one family without a past; within one level a signal follows that level's own order."""
+    """Give one family's bets without a past; within one level a signal follows that level's own order."""
     if kind in WITHIN_LEVELS:
         return SignalAlongOrder((kind,), WITHIN_LEVELS if within_one_level else None)
     if kind == "batch":
         return BatchEffects(along)
-    return {"spread": SpreadChange, "clock": ClockCycle, "lineage": ParentCorrelation}[kind]()
+    if kind == "clock":
+        return ClockCycle()
+    return ParentCorrelation() if kind == "lineage" else SpreadChange()

@@ -54,10 +54,10 @@ def replay(
 ) -> Replay:
     """Audit a series of runs for broken independence, as if after every run.
 
-    Null hypothesis: given labels and order, the joint law of the response is unchanged by permuting runs within
-    cells. Alternative: serial dependence, drift, batch effects, a daily or weekly cycle, a change of spread, or
-    inheritance from a parent run, from any run on. Under the null any alarm at all has probability at most
-    `alarm_budget`, over all responses and however often anyone looks.
+    Null hypothesis: given labels and order, the joint law of the response is unchanged by permuting runs
+    within cells. Alternative: serial dependence, drift, batch effects, a daily or weekly cycle, a change of
+    spread, or inheritance from a parent run, from any run on. Under the null any alarm at all has probability
+    at most `alarm_budget`, over all responses and however often anyone looks.
 
     Parameters
     ----------
@@ -68,8 +68,8 @@ def replay(
     parents : (n,) 0-based index of the parent run, −1 for none; asks `lineage`. A parent that does not come
         earlier is not bet on.
     ids : (n,) run ids that enter the randomisers; the indices' text when None.
-    baseline : "cells" (ranks within cells), "pooled" (deviations from cells' running means, ranked together) or
-        "formula" (recursive least-squares residuals on `design`, ranked together).
+    baseline : "cells" (ranks within cells), "pooled" (deviations from cells' running means, ranked together)
+        or "formula" (recursive least-squares residuals on `design`, ranked together).
     design : (n, p) for baseline "formula", with its constant column.
     alarm_budget : probability in (0, 1).
     n_responses : responses that share the budget.
@@ -89,8 +89,8 @@ def replay(
 
     References
     ----------
-    Vovk, Gammerman & Shafer (2005), Algorithmic Learning in a Random World. Ville (1939), Étude critique de la
-    notion de collectif. Ramdas, Grünwald, Vovk & Shafer (2023), Statistical Science 38: e-processes.
+    Vovk, Gammerman & Shafer (2005), Algorithmic Learning in a Random World. Ville (1939), Étude critique de
+    la notion de collectif. Ramdas, Grünwald, Vovk & Shafer (2023), Statistical Science 38: e-processes.
     """
     if nuisance is not None and not isinstance(nuisance, Mapping):
         raise BadInput(f"nuisance must map names to labels, got {type(nuisance).__name__}")

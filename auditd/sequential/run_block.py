@@ -66,11 +66,12 @@ def numbers(given: object, name: str, *, ndim: int) -> FloatArray:
     """Give a float64 array of the stated dimension, or raise BadInput."""
     try:
         array = np.asarray(given)
-        if array.dtype.kind not in "biufO":
-            raise TypeError(array.dtype)
-        array = array.astype(np.float64)
+        is_number = array.dtype.kind in "biufO"
+        array = array.astype(np.float64) if is_number else array
     except (TypeError, ValueError) as error:
         raise BadInput(f"{name} must be numbers: {error}") from error
+    if not is_number:
+        raise BadInput(f"{name} must be numbers, got {array.dtype}")
     if array.ndim != ndim:
         raise BadInput(f"{name} must have {ndim} dimension(s), got shape {array.shape}")
     return array

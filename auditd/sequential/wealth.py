@@ -59,7 +59,8 @@ def log_sum(paths: FloatArray) -> FloatArray:
 
 def log_mean(paths: FloatArray) -> FloatArray:
     """Give the log of the mean of exp(paths) over the first axis."""
-    return log_sum(paths) - np.log(paths.shape[0])
+    mean: FloatArray = log_sum(paths) - np.log(paths.shape[0])
+    return mean
 
 
 class FamilyRows:
@@ -107,4 +108,7 @@ class StartMixture:
         """
         path = grow_wealth(self.log_wealth, log_l, log_start_weight(count), self._late)
         self.log_wealth = path[:, -1].copy()
-        return np.logaddexp(self._rows.log_mean(path), self._rows.log_late + log_unstarted(count))
+        log_e: FloatArray = np.logaddexp(
+            self._rows.log_mean(path), self._rows.log_late + log_unstarted(count)
+        )
+        return log_e
