@@ -20,7 +20,8 @@ def likely_cause(finding: Finding, changes: Sequence[Change], *, n: int | None =
     ----------
     finding : dated by `since`, `since_low` and `since_high` (positions).
     changes : first appearances of nuisance levels; those that are within one level of another nuisance
-        (`within`) are considered for findings on that level only.
+        (`within`) are considered for findings on that level only. Of the finding's own nuisance its own
+        level alone: it was different from its first run on.
     n : runs audited so far; defaults to the finding's own.
 
     A coincidence of dates is no proof: two things that changed at once are both named. None when nothing
@@ -42,8 +43,10 @@ def likely_cause(finding: Finding, changes: Sequence[Change], *, n: int | None =
 
 
 def _concerns(change: Change, finding: Finding) -> bool:
-    if change.moment.position == 0 or change.nuisance == finding.along:
+    if change.moment.position == 0:
         return False
+    if change.nuisance == finding.along:
+        return change.level == finding.level and change.within is None
     return change.within is None or change.within == (finding.along, finding.level)
 
 

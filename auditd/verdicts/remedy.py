@@ -65,7 +65,8 @@ def _cost_told(finding: Finding, n_runs: int | None) -> str:
         return "Cost: not known yet; `runaudit evidence` says it once the loss can be estimated, in runs."
     if n_runs == 0:
         return "Cost: no runs."
-    about = "about " if finding.kind in {*BY_LOSS, "confound", "order"} else ""
+    about = "about " if finding.kind in {*BY_LOSS, "order"} else ""
+    about = "at least " if finding.kind == "confound" else about
     return f"Cost: {about}{n_runs:,} {'run' if n_runs == 1 else 'runs'}."
 
 
@@ -79,48 +80,44 @@ def _place(finding: Finding) -> str:
 def _drift(finding: Finding, _plan: Plan) -> str:
     if finding.along in {None, "order"}:
         return (
-            "Stop the drift at its source, then repeat the affected cells in complete blocks, in "
-            "random order within "
-            "each (`runaudit schedule --rest`); `runaudit answer … --restart` once it is mended."
+            "Stop the drift at its source, then repeat the affected cells in complete blocks, in random "
+            "order within each (`runaudit schedule --rest`); `runaudit answer … --restart` once it is "
+            "mended."
         )
     where = f"{finding.along} {finding.level}" if finding.level is not None else f"each {finding.along}"
     return (
         f"Take {where} out of use until it is looked at, and repeat its cells in randomised blocks "
-        "elsewhere; "
-        f"set its runs aside or absorb the shift with `runaudit answer`."
+        "elsewhere; set its runs aside or absorb the shift with `runaudit answer`."
     )
 
 
 def _serial(finding: Finding, _plan: Plan) -> str:
     return (
-        "Look for state that runs leave behind (heat, caches, a warm pool, a generator that goes "
-        "on); until it is "
-        f"gone, repeat {_place(finding)} in random order and let `runaudit compare` widen the intervals."
+        "Look for state that runs leave behind (heat, caches, a warm pool, a generator that goes on); "
+        f"until it is gone, repeat {_place(finding)} in random order and let `runaudit compare` widen the "
+        "intervals."
     )
 
 
 def _batch(finding: Finding, _plan: Plan) -> str:
     along = finding.along or "level"
     return (
-        f"Run every cell on every {along} equally often, in random order, and compare within "
-        f"{along}s; more runs on "
-        f"the same {along}s do not help against differences between them."
+        f"Run every cell on every {along} equally often, in random order, and compare within {along}s; "
+        f"more runs on the same {along}s do not help against differences between them."
     )
 
 
 def _spread(finding: Finding, _plan: Plan) -> str:
     return (
         f"Find what made {_place(finding)} noisier or quieter; intervals that assume one scatter no "
-        "longer hold. "
-        "Repeat them in randomised blocks under one setting."
+        "longer hold. Repeat them in randomised blocks under one setting."
     )
 
 
 def _clock(_finding: Finding, _plan: Plan) -> str:
     return (
-        "Spread every cell over all hours of the cycle, in complete blocks no longer than a part of "
-        "it, or run in "
-        "its quiet hours only; find what runs beside the campaign then."
+        "Spread every cell over all hours of the cycle, in complete blocks no longer than a part of it, "
+        "or run in its quiet hours only; find what runs beside the campaign then."
     )
 
 
@@ -130,29 +127,27 @@ def _lineage(finding: Finding, _plan: Plan) -> str:
     if finding.key == "lineage:cycle":
         return "Correct the parents in the records: a run cannot come of itself."
     return (
-        "Count each restart chain as one run, or repeat the children from a fresh start with seeds "
-        "of their own."
+        "Count each restart chain as one run, or repeat the children from a fresh start with seeds of "
+        "their own."
     )
 
 
 def _repeat(finding: Finding, _plan: Plan) -> str:
     if finding.key.startswith("repeat:factor"):
         return (
-            "Check that the factor between these cells reaches the program; if it cannot change "
-            "results, leave it out "
-            "of the factors or name the cells under design.deterministic."
+            "Check that the factor between these cells reaches the program; if it cannot change results, "
+            "leave it out of the factors or name the cells under design.deterministic."
         )
     if "ignored seed" in finding.message:
         cell = finding.cells[0] if finding.cells else "that cell"
         return (
             f"Check how the seed reaches the program in {cell}; its runs count as one. If it is "
-            "deterministic by "
-            "nature, name it under design.deterministic, else repeat its runs with seeds that take effect."
+            "deterministic by nature, name it under design.deterministic, else repeat its runs with "
+            "seeds that take effect."
         )
     return (
-        "Switch off or key the cache (or mend the copying step) so that the seed is part of the key, "
-        "and repeat the "
-        "runs that were answered from it; until then they count once."
+        "Switch off or key the cache (or mend the copying step) so that the seed is part of the key, and "
+        "repeat the runs that were answered from it; until then they count once."
     )
 
 
@@ -164,8 +159,8 @@ def _seed(_finding: Finding, plan: Plan) -> str:
             'If shared seeds are intended, say so by seeds.role = "block".'
         )
     return (
-        "Within a cell a seed serves one run: repeat the later run of each pair with the seed of "
-        "another block."
+        "Within a cell a seed serves one run: repeat the later run of each pair with the seed of another "
+        "block."
     )
 
 
@@ -174,9 +169,8 @@ def _confound(finding: Finding, _plan: Plan) -> str:
     on = f" other than {finding.level}" if finding.level is not None else ""
     what = ", ".join(finding.cells[:3]) if finding.cells else "the levels concerned"
     return (
-        f"Run {what} on a {along}{on} too, and the cells it is compared with beside it, in random "
-        "order; no analysis "
-        "can part them afterwards."
+        f"Run {what} on a {along}{on} too, and the cells it is compared with beside it, in random order; "
+        "no analysis can part them afterwards."
     )
 
 
@@ -185,14 +179,13 @@ def _order(finding: Finding, _plan: Plan) -> str:
         return "Order by a sequence number or start time that every run states, or raise order.patience."
     if finding.key.startswith("order:landing"):
         return (
-            "State a sequence number or start time and order by it: the order of landing is no "
-            "order to audit."
+            "State a sequence number or start time and order by it: the order of landing is no order to "
+            "audit."
         )
     factor = finding.along or "the factors"
     return (
-        "Put the remaining runs into random order in complete blocks (`runaudit schedule --rest`); "
-        "what differs along "
-        f"{factor} so far may as well be time."
+        "Put the remaining runs into random order in complete blocks (`runaudit schedule --rest`); what "
+        f"differs along {factor} so far may as well be time."
     )
 
 
@@ -201,42 +194,38 @@ def _time(finding: Finding, _plan: Plan) -> str:
     if finding.key.startswith("time:overlap"):
         return (
             f"See whether two runs share the machine{where} or its clock was set back; if it may hold "
-            "more runs, say so "
-            "by machines.slots. Set disturbed runs aside with `runaudit answer`."
+            "more runs, say so by machines.slots. Set disturbed runs aside with `runaudit answer`."
         )
     return (
-        f"Check the clock{where} (time service, zone), and order by a sequence number while it is "
-        "not trusted."
+        f"Check the clock{where} (time service, zone), and order by a sequence number while it is not "
+        "trusted."
     )
 
 
 def _gap(finding: Finding, _plan: Plan) -> str:
     if finding.key == "gap:twice":
         return (
-            "Give each run a number of its own in the records; `runaudit amend` to order by start "
-            "time meanwhile."
+            "Give each run a number of its own in the records; `runaudit amend` to order by start time "
+            "meanwhile."
         )
     return (
-        "Find out why these runs never landed; land failed ones with their status, and make up the "
-        "rest. If failing "
-        "depends on the result, the means of what landed are off."
+        "Find out why these runs never landed; land failed ones with their status, and make up the rest. "
+        "If failing depends on the result, the means of what landed are off."
     )
 
 
 def _rewrite(_finding: Finding, _plan: Plan) -> str:
     return (
-        "Find what wrote the record again and which version is right; the first one stays in the "
-        "audit. Answer the "
-        "warning, or set the run aside."
+        "Find what wrote the record again and which version is right; the first one stays in the audit. "
+        "Answer the warning, or set the run aside."
     )
 
 
 def _failure(finding: Finding, _plan: Plan) -> str:
     where = f"{finding.along} {finding.level}" if finding.along not in {None, "order"} else "that stretch"
     return (
-        f"Look at what failed in {where}, then make these runs up in the cells that lost them, in "
-        "random order; "
-        "compare completion rates before means."
+        f"Look at what failed in {where}, then make these runs up in the cells that lost them, in random "
+        "order; compare completion rates before means."
     )
 
 
@@ -244,8 +233,7 @@ def _cap(finding: Finding, _plan: Plan) -> str:
     response = finding.response or "the response"
     return (
         f"Raise the limit and repeat the runs that met it, or compare {response} by medians or as "
-        "censored; means of "
-        "capped values are not means."
+        "censored; means of capped values are not means."
     )
 
 

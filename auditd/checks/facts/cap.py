@@ -94,8 +94,7 @@ class CapFact(Quiet):
         what = "largest" if side == "upper" else "smallest"
         message = (
             f"{counted(n_at, 'value')} of {window.response} among the last {counted(n, 'run')} are "
-            f"exactly {value:.6g}, the "
-            f"{what} there is: a cap or a limit, so that means are not means"
+            f"exactly {value:.6g}, the {what} there is: a cap or a limit, so that means are not means"
         )
         return [
             Finding(

@@ -60,10 +60,12 @@ class ConfoundFact(Quiet):
         self._n = 0
         self._next_look = FIRST_LOOK
         self._fresh: dict[Combination, _Fresh] = {}
-        self._cells = CellIndex() if len(plan.factors) > 1 else None
+        self._cells = CellIndex()
+        self._members: dict[tuple[str, int], dict[str, None]] = {}  # factor and level -> its cells' labels
         self._factors = {name: LevelIndex() for name in plan.factors}
         self._nuisances = {name: LevelIndex() for name in plan.nuisance}
-        names = [*plan.factors, "cell"] if self._cells else list(plan.factors)
+        self._asks_cells = len(plan.factors) > 1
+        names = [*plan.factors, "cell"] if self._asks_cells else list(plan.factors)
         self._pairs = {(a, b): _Pair(a, b) for b in plan.nuisance for a in names}
         self._tables = [[self._pairs[a, b].table for a in names] for b in plan.nuisance]
 
@@ -89,8 +91,11 @@ class ConfoundFact(Quiet):
         """Enter the runs since the last look into the tables, each combination of levels once."""
         for fresh in self._fresh.values():
             rows = [index.number(fresh.cell[name]) for name, index in self._factors.items()]
-            if self._cells is not None:
-                rows.append(self._cells.number(fresh.cell))
+            cell = self._cells.number(fresh.cell)
+            for name, row in zip(self._factors, rows, strict=True):
+                self._members.setdefault((name, row), {})[self._cells.labels[cell]] = None
+            if self._asks_cells:
+                rows.append(cell)
             for (name, index), tables in zip(self._nuisances.items(), self._tables, strict=True):
                 column = index.number(fresh.nuisance.get(name))
                 for row, table in zip(rows, tables, strict=True):
@@ -133,7 +138,7 @@ class ConfoundFact(Quiet):
             n=self._n,
             cells=tuple(rows[number] for number in verdict.rows)
             if pair.factor == "cell"
-            else self._as_cells(pair, verdict),
+            else self._cells_of(pair.factor, verdict.rows),
             share=verdict.strength,
             n_again=verdict.n_needed,
         )
@@ -144,21 +149,18 @@ class ConfoundFact(Quiet):
         return f"confound:{pair.factor}:{pair.nuisance}:{of}"
 
     def _row_labels(self, factor: str) -> list[str]:
-        if factor == "cell" and self._cells is not None:
-            return self._cells.labels
-        return self._factors[factor].labels
+        return self._cells.labels if factor == "cell" else self._factors[factor].labels
 
-    def _as_cells(self, pair: _Pair, verdict: Verdict) -> tuple[str, ...]:
-        labels = self._factors[pair.factor].labels
-        return tuple(f"{pair.factor}={labels[number]}" for number in verdict.rows)
+    def _cells_of(self, factor: str, rows: tuple[int, ...]) -> tuple[str, ...]:
+        return tuple(label for row in rows for label in self._members[factor, row])
 
 
 def _message(pair: _Pair, verdict: Verdict, of: str, on: str, n: int) -> str:
     what = f"{pair.factor} {of}" if pair.factor != "cell" else f"cell {of}"
     if verdict.kind == "apart":
         return (
-            f"not separable: {what} ran only on {pair.nuisance} {on}, and no other level of "
-            f"{pair.factor} ran there"
+            f"not separable: {what} ran only on {pair.nuisance} {on}, and no other level of {pair.factor} "
+            "ran there"
         )
     if verdict.kind == "one":
         every = "every run" if not verdict.n_elsewhere else f"all but {counted(verdict.n_elsewhere, 'run')}"
@@ -170,8 +172,8 @@ def _message(pair: _Pair, verdict: Verdict, of: str, on: str, n: int) -> str:
         return f"not separable: {every} of {what} ran on {pair.nuisance} {on}; {others}"
     return (
         f"{pair.factor} and {pair.nuisance} went together in {counted(n, 'run')}: Cramér's V "
-        f"{verdict.strength:.2f} "
-        "(0 none, 1 the same thing), so that little of their effects can be told apart"
+        f"{verdict.strength:.2f} (0 none, 1 the same thing), so that little of their effects can be told "
+        "apart"
     )
 
 

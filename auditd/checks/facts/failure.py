@@ -77,9 +77,8 @@ class FailureFact(Quiet):
         n, k = e.n[level], e.failed[level]
         labels = self._cells.labels if name == "cell" else self._levels[name].labels
         message = (
-            f"{k} of {counted(n, 'run')} {'of cell' if name == 'cell' else f'on {name}'} "
-            f"{labels[level]} failed, "
-            f"{self._outcomes.n_failed - k} of {self._outcomes.n - n:,} elsewhere"
+            f"{k} of {counted(n, 'run')} {'of cell' if name == 'cell' else f'on {name}'} {labels[level]} "
+            f"failed, {self._outcomes.n_failed - k} of {self._outcomes.n - n:,} elsewhere"
         )
         return Finding(
             key=f"failure:{name}",
@@ -101,7 +100,8 @@ class FailureFact(Quiet):
         spell = self._spell
         message = (
             f"{spell.n_failed} of {counted(spell.n, 'run')} from {spell.first} to {spell.last} failed, "
-            f"{self._outcomes.n_failed - spell.n_failed} of {self._outcomes.n - spell.n:,} before and after"
+            f"{self._outcomes.n_failed - spell.n_failed} of {self._outcomes.n - spell.n:,} before and "
+            "after"
         )
         return Finding(
             key="failure:order",

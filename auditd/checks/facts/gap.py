@@ -103,8 +103,8 @@ class GapFact(Quiet):
         listed = ", ".join(str(number) for number, _ in zip(self._missing, range(N_LISTED), strict=False))
         more = ", …" if n > N_LISTED else ""
         message = (
-            f"{counted(n, 'number')} of the sequence never landed, first passed over at "
-            f"{condition.run}: {listed}{more}"
+            f"{counted(n, 'number')} of the sequence never landed, first passed over at {condition.run}: "
+            f"{listed}{more}"
         )
         if not n:
             message = "every number of the sequence has landed by now"

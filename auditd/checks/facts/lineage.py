@@ -111,9 +111,8 @@ class LineageFact(Quiet):
         share = self._n_continued / max(1, self._n_completed)
         continuing = counted(self._n_continued, "completed run continues", "completed runs continue")
         message = (
-            f"{continuing} another completed run ({share:.0%} of all, chains of up to "
-            f"{self._depth + 1}): they share "
-            "what they inherited"
+            f"{continuing} another completed run ({share:.0%} of all, chains of up to {self._depth + 1}): "
+            "they share what they inherited"
         )
         return Finding(
             key="lineage:continued",

@@ -85,7 +85,6 @@ class OrderFact(Quiet):
             n=n,
             log_e=factor.e.segments.log_e(),
             threshold=self._threshold,
-            cells=tuple(f"{name}={label}" for label in factor.levels.labels[:20]),
             share=factor.n_alike / max(1, n - 1),
             n_again=len(factor.e.counts) * min(factor.e.counts),
         )
@@ -99,9 +98,8 @@ def _message(name: str, factor: _Factor, by_chance: float) -> str:
         return f"the levels of {name} did not come in random order: {told}{more}"
     alike = factor.n_alike / max(1, factor.e.n - 1)
     return (
-        f"the levels of {name} did not come in random order: {alike:.0%} of the runs have the level "
-        "of the run "
-        f"before, {by_chance:.0%} would by chance"
+        f"the levels of {name} did not come in random order: {alike:.0%} of the runs have the level of "
+        f"the run before, {by_chance:.0%} would by chance"
     )
 
 
@@ -116,8 +114,7 @@ def late_finding(*, n_late: int, n: int, run: str | None) -> Finding:
     share = n_late / max(1, n)
     message = (
         f"{counted(n_late, 'run')} of {n:,} ({share:.1%}) landed after their place in the order had "
-        "passed; they are kept "
-        "and not audited"
+        "passed; they are kept and not audited"
     )
     holds = share > MAX_LATE_SHARE
     return Finding(key="order:late", kind="order", message=message, run=run, n=n, share=share, holds=holds)
@@ -133,8 +130,8 @@ def landing_order_finding(*, response: str, pvalue: float, correlation: float, n
     n : runs compared.
     """
     message = (
-        f"landing order depends on the outcome: {response} goes with the duration of runs (rank correlation "
-        f"{correlation:.2f}), and short runs land first; serial and drift checks are withheld"
+        f"landing order depends on the outcome: {response} goes with the duration of runs (rank "
+        f"correlation {correlation:.2f}), and short runs land first; serial and drift checks are withheld"
     )
     log_e = None if pvalue <= 0 else -math.log(pvalue)
     return Finding(

@@ -23,8 +23,7 @@ def plan_finding(*, version: int, changed: list[str], reason: str, position: int
     listed = ", ".join(changed[:N_LISTED]) + (", …" if len(changed) > N_LISTED else "")
     message = (
         f"version {version} of the plan is in use after {counted(position, 'run')}: {listed} changed "
-        f"({reason}); "
-        "what is decided by the runs seen before is exploratory from here on"
+        f"({reason}); what is decided by the runs seen before is exploratory from here on"
     )
     return Finding(
         key=f"plan:{version}",

@@ -148,16 +148,15 @@ class RepeatFact(Quiet):
         n_since = tally.n - tally.n_first
         share = tally.n_repeats / max(1, n_since)
         if share >= IGNORED_SHARE:
+            some = "all" if tally.n_repeats == n_since else f"{tally.n_repeats + 1} of"
             message = (
-                f"{tally.n_repeats + 1} of the last {counted(n_since + 1, 'run')} of cell {label} are "
-                "equal to the last "
+                f"{some} the last {counted(n_since + 1, 'run')} of cell {label} are equal to the last "
                 f"digit {self._seeds}, since {tally.first}: an ignored seed in one configuration"
             )
         else:
             message = (
-                f"{counted(tally.n_repeats, 'run')} of cell {label} gave an earlier result again to "
-                "the last digit "
-                f"{self._seeds}, first {tally.first}: a cache that answers twice"
+                f"{counted(tally.n_repeats, 'run')} of cell {label} gave an earlier result again to the "
+                f"last digit {self._seeds}, first {tally.first}: a cache that answers twice"
             )
         return Finding(
             key=f"repeat:cell:{label}",

@@ -101,6 +101,6 @@ class SeedFact(Quiet):
         where = "" if self._anywhere else f" of cell {cell}"
         total = counted(condition.n, "run has", "runs have")
         return (
-            f"seed {condition.seed} of {earlier} was used again by {later}{where}; {total} the seed "
-            "of an earlier run"
+            f"seed {condition.seed} of {earlier} was used again by {later}{where}; {total} the seed of an "
+            "earlier run"
         )

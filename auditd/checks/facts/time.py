@@ -98,8 +98,8 @@ class TimeFact(Quiet):
             before, machine.last_placed = machine.last_placed, (at_s, run.id)
             if before is not None and at_s < before[0] - _tolerance_s(run.started, run.started):
                 first = (
-                    f"{run.id} started {before[0] - at_s:.3g} s before {before[1]}, which has a "
-                    "smaller number"
+                    f"{run.id} started {before[0] - at_s:.3g} s before {before[1]}, which has a smaller "
+                    "number"
                 )
                 found += self._seen(f"time:clock:{along}={level}", run, first, along, level)
         return found
@@ -114,8 +114,8 @@ class TimeFact(Quiet):
             machine.add(low, high)
             if n_beside >= self._slots:
                 first = (
-                    f"{run.id} ran on {along} {level} beside {counted(n_beside, 'other run')}, with "
-                    f"room for {self._slots}"
+                    f"{run.id} ran on {along} {level} beside {counted(n_beside, 'other run')}, with room "
+                    f"for {self._slots}"
                 )
                 found += self._seen(f"time:overlap:{along}={level}", run, first, along, level)
         return found

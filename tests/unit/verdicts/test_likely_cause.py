@@ -15,13 +15,19 @@ def test_the_level_that_first_ran_there_is_named_with_run_and_time(make_finding,
 
 
 def test_a_change_elsewhere_is_not_named(make_finding, moment):
-    """Outside the set of dates, at the campaign's first run, or of the finding's own nuisance."""
+    """Outside the set of dates, at the campaign's first run, or another level of the same nuisance."""
     finding = make_finding(along="order", level=None, since=413, since_low=405, since_high=425, n=2000)
     assert likely_cause(finding, [_change(moment, 500)]) is None
     start = make_finding(along="order", level=None, since=0, since_low=0, since_high=10, n=2000)
     assert likely_cause(start, [_change(moment, 0)]) is None
+    other = make_finding(along="build", level="b1", since=413, since_low=405, since_high=425, n=2000)
+    assert likely_cause(other, [_change(moment, 412)]) is None
+
+
+def test_a_level_that_was_different_from_its_first_run_on_is_said_to_be_so(make_finding, moment):
+    """The finding is on build b2, and began when b2 did."""
     own = make_finding(along="build", level="b2", since=413, since_low=405, since_high=425, n=2000)
-    assert likely_cause(own, [_change(moment, 412)]) is None
+    assert likely_cause(own, [_change(moment, 412)]).startswith("build b2 first ran at r0412")
 
 
 def test_two_changes_at_once_are_both_named(make_finding, moment):
