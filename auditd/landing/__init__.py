@@ -9,8 +9,9 @@ The daemon's loop::
         watcher.relay()
         for batch in landing.visit(time.time()):
             store.take(batch)  # runs and batch.source in one transaction
-        watcher.tend(time.time())
-        watcher.wake.wait(landing.wait_s(time.time()))
+        if not watcher.tend(time.time()):
+            ...  # watching cannot be restored: end with 70
+        watcher.wake.wait(min(10.0, landing.wait_s(time.time())))
     watcher.stop()
 
 `gather` is `for batch in Landing(plan, sources, settle_all=True).scan(time.time())`.

@@ -45,7 +45,8 @@ class Area:
 
     def real(self, stored: str) -> str:
         """Return the path to open."""
-        return os.path.join(self._base, self._unspoken.get(stored, stored))
+        path = self._unspoken.get(stored, stored)
+        return path if path.startswith("/") else f"{self._base}/{path}"
 
     def stored(self, real: str) -> str | None:
         """Return the stored path of a result file, or None for what does not belong to the landing."""
@@ -68,6 +69,10 @@ class Area:
         if stored != relative:
             self._unspoken[stored] = relative
         return stored
+
+    def _named(self, folder: str, real: str, name: str) -> str:
+        """Return the stored path of a name in a folder."""
+        return join(folder, name) if name.isascii() else self._stored(os.path.join(real, name))
 
     def distrust(self, folder: str | None) -> None:
         """Have a folder, or everything, listed anew."""
@@ -114,8 +119,8 @@ class Area:
             inner = real[len(root) :].lstrip("/")
             for name in new:
                 if self._names.takes(name, join(inner, name)):
-                    path = self._stored(os.path.join(real, name))
-                    if path.isascii() or memory.get(path) is None:
+                    path = self._named(stored, real, name)
+                    if name.isascii() or memory.get(path) is None:
                         yield path
             stack += [os.path.join(real, name) for name in folders]
 

@@ -147,8 +147,9 @@ class Files:
             yield from self._same(file, file.seen or moved, change="append")
             return
         taking = Taking(file.path, file.descriptor, status, start)
-        steps = iter([taking.refused(NO_FORMAT)])
-        if file.reader is not None:
+        if file.reader is None:
+            steps = iter([taking.refused(NO_FORMAT)])
+        else:
             steps = taking.steps(file.reader, self._mapper, final=final)
         yield from self._give(file, steps, trial, still_s)
 

@@ -19,7 +19,7 @@ Change = Literal["new", "append", "truncated", "rotated", "rewritten"]
 
 
 class Start(msgspec.Struct, frozen=True, kw_only=True):
-    """From where a file is read, and what had happened to it."""
+    """From where a file is read, and what had happened to it; `refusal` is a hash of why it was refused."""
 
     change: Change
     offset: int = 0
@@ -27,6 +27,7 @@ class Start(msgspec.Struct, frozen=True, kw_only=True):
     context: bytes = b""
     generation: int = 0
     first: bytes = b""
+    refusal: bytes = b""
 
     @property
     def may_be_another(self) -> bool:
@@ -68,7 +69,13 @@ def _start_of_document(descriptor: int, status: os.stat_result, seen: Seen) -> S
     whole = seen.offset == seen.size == status.st_size <= HEAD_BYTES
     if whole and matches(descriptor, seen):
         return None
-    return Start(change="rewritten", generation=seen.generation, first=seen.first)
+    return _again("rewritten", seen)
+
+
+def _again(change: Change, seen: Seen) -> Start:
+    """Read a file from its beginning once more."""
+    refusal = seen.tail if seen.state == "refused" else b""
+    return Start(change=change, generation=seen.generation, first=seen.first, refusal=refusal)
 
 
 def _start_of_lines(descriptor: int, status: os.stat_result, seen: Seen) -> Start | None:
@@ -82,8 +89,7 @@ def _start_of_lines(descriptor: int, status: os.stat_result, seen: Seen) -> Star
     elif _goes_on_within_line(descriptor, seen.offset) or _rewritten_unseen(status, seen):
         change = "rewritten"
     if change != "append" or seen.state == "refused":
-        again = "rewritten" if change == "append" else change
-        return Start(change=again, generation=seen.generation, first=seen.first)
+        return _again("rewritten" if change == "append" else change, seen)
     if status.st_size == seen.offset:
         return None
     return Start(

@@ -77,12 +77,12 @@ class Landing:
         began_s = time.thread_time()
         self._n_scans += 1
         new = self._new(None, now)
-        known = self._files.memory.paths() if self._settle_all or self._n_scans == 1 else iter(())
+        known = list(self._files.memory.paths()) if self._settle_all or self._n_scans == 1 else []
         self._next_scan = now + self.pace.interval_s(time.thread_time() - began_s, changed=bool(new))
         waiting = [path for path, one in self._files.pending.items() if one.n_errors == 0 or one.due <= now]
         yield from self._look_at(new, now)
         yield from self._look_at(waiting, now)
-        yield from self._look_at(list(known), now)
+        yield from self._look_at(known, now)
         yield from self._due(now)
 
     def visit(self, now: float) -> Iterator[Batch]:

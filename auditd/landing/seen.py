@@ -51,18 +51,34 @@ _SHARED = ("device", "inode", "size", "mtime_ns", "offset", "n_records", "n_head
 
 def to_source(path: str, seen: Seen) -> Source:
     """Return what the store keeps of a file."""
-    shared = {name: getattr(seen, name) for name in _SHARED}
-    own = (seen.ctime_ns, seen.generation, seen.first, seen.context)
-    return Source(path=path, context=_pack(own), **shared)
+    return Source(
+        path=path,
+        device=seen.device,
+        inode=seen.inode,
+        size=seen.size,
+        mtime_ns=seen.mtime_ns,
+        offset=seen.offset,
+        n_records=seen.n_records,
+        n_head=seen.n_head,
+        head=seen.head,
+        tail=seen.tail,
+        context=_pack((seen.ctime_ns, seen.generation, seen.first, seen.context)),
+        state=seen.state,
+    )
 
 
 def from_source(source: Source) -> Seen:
-    """Return what a store's source says; what it does not say is found out by looking at the file."""
+    """Return what a store's source says; what it does not say is found out by looking at the file.
+
+    A refused file is looked at once more: an extra may have been installed, or a format stated, since.
+    """
     shared = {name: getattr(source, name) for name in _SHARED}
     try:
         ctime_ns, generation, first, context = _unpack_context(source.context)
     except msgspec.DecodeError:
         ctime_ns, generation, first, context = -1, 0, b"", b""
+    if source.state == "refused":
+        ctime_ns = -1
     return Seen(ctime_ns=ctime_ns, generation=generation, first=first, context=context, **shared)
 
 

@@ -8,7 +8,7 @@ from collections.abc import Iterator
 
 import msgspec
 
-from auditd.landing.identity import Change, Start, head_and_tail
+from auditd.landing.identity import Change, Start, hash_of, head_and_tail
 from auditd.landing.seen import Seen, to_source
 from auditd.read import Extent, Mapper, Portion, Reader
 from auditd.records import Batch, Refusal, Run
@@ -99,8 +99,13 @@ class Taking:
             change = "append"
 
     def refused(self, reason: str) -> Step:
-        """Refuse the file as a whole; it is read again when it changes."""
-        seen = seen_of(self._status, state="refused", generation=self._generation, first=self._first)
+        """Refuse the file as a whole, once for one reason; it is read again when it changes."""
+        mark = hash_of(reason.encode())
+        seen = seen_of(
+            self._status, state="refused", generation=self._generation, first=self._first, tail=mark
+        )
+        if mark == self._start.refusal:
+            return Step(batch=None, seen=seen)
         refusal = Refusal(path=self._path, offset=0, number=0, reason=reason, kind="file")
         batch = Batch(source=to_source(self._path, seen), items=(refusal,), change=self._start.change)
         return Step(batch=batch, seen=seen)

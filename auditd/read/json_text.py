@@ -15,7 +15,9 @@ from auditd.errors import BadInput
 from auditd.read.raw import MAX_DEPTH
 
 BOM = b"\xef\xbb\xbf"
-_TOKENS = ("NaN", "Infinity", "-Infinity")
+_WORDS = ("NaN", "Infinity", "-Infinity", "true", "false", "null")
+_LAST_WORD = re.compile(rb"[-+.\w]+$")
+_CUT_NUMBER = re.compile(r"-?\d*\.?\d*(?:[eE][+-]?\d*)?")
 _BARE = re.compile(rb"\b(NaN|Infinity)\b")
 _SURROGATE = re.compile(rb"\\u[dD][89a-fA-F]")
 _AT_BYTE = re.compile(r"\(byte (\d+)\)")
@@ -72,8 +74,10 @@ def _decode_tolerant(data: bytes, error: msgspec.DecodeError) -> Any:
     except UnicodeDecodeError:
         _refuse(data, str(error))
     except json.JSONDecodeError as tolerant:
-        at_end = tolerant.pos >= len(data.decode().rstrip()) or tolerant.msg.startswith("Unterminated")
-        raise NotJson(f"not JSON: {tolerant}", half=at_end or _ends_in_token(data)) from None
+        text = data.decode()
+        half = tolerant.pos >= len(text.rstrip()) or tolerant.msg.startswith("Unterminated")
+        half = half or _is_cut_token(text[tolerant.pos :])
+        raise NotJson(f"not JSON: {tolerant}", half=half) from None
     except RecursionError:
         raise NotJson(_TOO_DEEP) from None
     except ValueError as tolerant:
@@ -100,9 +104,7 @@ def _refuse_lone_surrogates(value: Any) -> None:
 
 def _refuse(data: bytes, message: str) -> NoReturn:
     """Raise with a reason, telling what is half from what can never become JSON."""
-    at = _AT_BYTE.search(message)
-    half = "truncated" in message or (at is not None and int(at[1]) >= len(data.rstrip()))
-    half = half or _ends_in_token(data)
+    half = "truncated" in message or _is_cut(data, _AT_BYTE.search(message))
     try:
         data.decode()
     except UnicodeDecodeError as error:
@@ -112,9 +114,18 @@ def _refuse(data: bytes, message: str) -> NoReturn:
     raise NotJson("JSON ends too early" if half else f"not JSON: {message}", half=half)
 
 
-def _ends_in_token(data: bytes) -> bool:
-    """Whether the text breaks off within a bare NaN or Infinity."""
-    tail = data[-9:].decode(errors="replace")
-    return any(
-        tail.endswith(token[:n]) for token in _TOKENS for n in range(1, len(token)) if token[:n] != "-"
-    )
+def _is_cut(data: bytes, at: re.Match[str] | None) -> bool:
+    """Whether the place that the decoder complains of is where the text breaks off within a word."""
+    if at is None:
+        return False
+    word = _LAST_WORD.search(data)
+    start = len(data) if word is None else word.start()
+    if int(at[1]) < start:
+        return False
+    text = data[start:].decode(errors="replace")
+    return _CUT_NUMBER.fullmatch(text) is not None or _is_cut_token(text)
+
+
+def _is_cut_token(text: str) -> bool:
+    """Whether a text is the beginning of a word that JSON, or a bare token, may have."""
+    return any(word.startswith(text) and word != text for word in _WORDS)

@@ -1,4 +1,4 @@
-"""What befalls files, on real files, processes and threads; errors are injected where root is refused nothing."""
+"""What befalls files, on real files, processes and threads; errors injected only where root meets none."""
 
 import errno
 import json
@@ -216,7 +216,7 @@ def test_a_dead_emitter_is_replaced(watched, results):
 
 
 def test_watching_that_cannot_be_restored_says_so(watched, monkeypatch):
-    """If the observer cannot be replaced at all, tend() is False: the daemon ends with 70 and is restarted."""
+    """If the observer cannot be replaced at all, tend() is False: the daemon ends with 70."""
     _, watcher, _ = watched
     watcher._observer.stop()
     watcher._observer.join()
@@ -234,7 +234,7 @@ with open(path, "w") as file:
 
 
 def test_dripped_files_and_a_killed_writer(plan, results):
-    """Pieces with pauses, and a writer killed half-way: no partial run, one final run, the stuck one waits."""
+    """Pieces with pauses, and a writer killed half-way: no partial run, one final one, a stuck one waits."""
     landing, kept = Landing(plan), Kept()
     text = json.dumps({"id": "whole", "y": 1, "note": "x" * 60})
     arguments = [sys.executable, "-c", DRIPPER]
@@ -272,7 +272,7 @@ def test_gather_takes_what_validates_and_lists_the_rest(plan, results):
 
 
 def test_a_last_line_is_taken_after_it_was_still(plan, results):
-    """A last line without newline waits for 60 s, then is taken if it validates; a late newline adds nothing."""
+    """A last line without newline waits for 60 s, then is taken if it validates; a late newline is none."""
     path = results / "l.ndjson"
     path.write_text(record("a") + "\n" + record("b"))
     landing, kept, now = Landing(plan), Kept(), time.time()
@@ -341,7 +341,7 @@ def test_a_file_moved_within_the_landing_is_not_taken_again(tmp_path, results, n
 @pytest.mark.parametrize("restart", [False, True])
 @pytest.mark.parametrize("name", ["r.json", "r.ndjson"])
 def test_same_size_and_mtime_but_other_content(plan, results, name, restart):
-    """A rewrite that keeps size and mtime is noticed by the rotation within 10 minutes, also over a restart."""
+    """A rewrite that keeps size and mtime is noticed within 10 minutes, also over a restart."""
     path = results / name
     path.write_text(record("r", 1.0) + "\n")
     landing, kept = Landing(plan), Kept()
@@ -425,7 +425,7 @@ def is_record(line):
 
 @pytest.mark.parametrize("seed", range(40))
 def test_appended_truncated_rotated_replaced_at_random(plan, results, seed):
-    """Over 40 random steps with restarts, what was taken is exactly what stood in whole lines at some scan."""
+    """Over 40 random steps with restarts, what was taken is what stood in whole lines at some scan."""
     rng = random.Random(seed)
     writer = Writer(rng, results / "x.ndjson")
     landing, kept, now = Landing(plan), Kept(), time.time()
@@ -524,7 +524,7 @@ def test_the_landing_removed_and_made_again(watched, results):
 
 
 def test_inodes_that_change_by_a_remount(plan, results):
-    """With other device and inode numbers but the same files (a remount, as stored), nothing is taken again."""
+    """With other device and inode numbers but the same files (a remount), nothing is taken again."""
     import msgspec
 
     (results / "a.json").write_text(record("a"))
@@ -604,7 +604,7 @@ def test_a_file_that_vanishes_while_it_is_looked_at(plan, results, monkeypatch):
 
 
 def test_links_pipes_and_temporary_names_are_passed_over(plan, results, tmp_path):
-    """Links are not followed (nor loops of them), a pipe does not hang the scan, temporary names are no files."""
+    """Links are not followed (nor loops of them), a pipe never hangs the scan, temporary names are none."""
     (tmp_path / "outside.json").write_text(record("outside"))
     os.symlink(tmp_path / "outside.json", results / "link.json")
     os.symlink(results, results / "loop")
@@ -677,7 +677,7 @@ def test_a_line_of_100_mb_is_stepped_over_in_bounded_memory(plan, results):
 
 
 def test_names_with_newlines_escapes_and_broken_bytes(plan, results):
-    """Newlines and terminal escapes stay data; bytes that are not UTF-8 are escaped, and no file is taken twice."""
+    """Newlines and terminal escapes stay data; bytes that are not UTF-8 are escaped; each file once."""
     names = [b"new\nline.json", b"esc\x1b[31mred.json", b"\xff\xfe.json", "ä\u202e.json".encode()]
     for k, name in enumerate(names):
         with open(os.path.join(os.fsencode(results), name), "w", encoding="utf-8") as file:
@@ -709,7 +709,7 @@ def test_a_refused_file_is_read_again_when_it_changes(plan, results):
 
 
 def test_memory_stays_bounded_on_a_large_file(plan, results):
-    """A file of 60,000 records is given in batches of at most 20,000, so that the store can commit between."""
+    """A file of 60,000 records is given in batches of at most 20,000: the store commits between."""
     with open(results / "x.ndjson", "w", encoding="utf-8") as file:
         file.writelines(f"{record(f'r{k}')}\n" for k in range(60_000))
     sizes = [len(batch.items) for batch in Landing(plan).scan(now_after())]

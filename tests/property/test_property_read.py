@@ -1,4 +1,4 @@
-"""However a file grew, what was taken equals one parse of it; and 10,000 hostile files make no reader raise."""
+"""However a file grew, what was taken equals one parse of it; 10,000 hostile files make no reader raise."""
 
 import csv as csv_module
 import io

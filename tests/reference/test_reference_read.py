@@ -139,7 +139,7 @@ def test_json_values_against_the_json_module():
 
 
 def test_nan_is_read():
-    """The json module writes NaN bare; RFC 8259, section 6, has no such token, and it is read all the same."""
+    """The json module writes NaN bare; RFC 8259, section 6, has no such token; it is read all the same."""
     read = decode_json(json.dumps({"y": float("nan"), "z": [float("inf")]}).encode())
     assert read["y"] != read["y"]
     assert read["z"] == [float("inf")]
