@@ -9,9 +9,10 @@ import numpy as np
 
 from auditd.errors import NotTestable
 from auditd.evidence.clustered import by_cluster
-from auditd.evidence.crossing import MAX_LEVELS, Crossing, cross
+from auditd.evidence.crossing import MAX_LEVELS, NuisanceCrossing, cross
 from auditd.evidence.fit import build
 from auditd.evidence.inputs import (
+    CONSTANT,
     Codes,
     Floats,
     Labels,
@@ -20,9 +21,10 @@ from auditd.evidence.inputs import (
     as_nuisances,
     as_values,
     matched_sides,
+    standardise,
 )
 from auditd.evidence.naive import welch
-from auditd.evidence.paired import Pairs, adjusted, constant_within, pair
+from auditd.evidence.paired import Pairs, constant_within, level_adjusted, pair
 from auditd.evidence.problem import MAX_CELLS, Problem
 from auditd.evidence.report import Scene, aliased, clustered, solved
 from auditd.evidence.result import Contrast
@@ -34,13 +36,13 @@ MIN_RESIDUAL_DF = 3  # runs beyond the fitted columns
 
 
 @dataclass(frozen=True, kw_only=True)
-class Runs:
+class ComparedRuns:
     """The checked arguments; y is centred and scaled."""
 
     y: Floats
     cells: Codes
     weights: Floats
-    crossings: tuple[Crossing, ...]
+    crossings: tuple[NuisanceCrossing, ...]
 
 
 def contrast(
@@ -101,33 +103,34 @@ def contrast(
     side_a, side_b, n_left_out = matched_sides(a, b, coded)
     weights = np.zeros(coded.n_levels)
     weights[side_a], weights[side_b] = -1 / len(side_a), 1 / len(side_b)
-    _require_runs(y, coded, weights)
-    centre, scale = float(y.mean()), float(y.std())
+    scaled, scale = standardise(y)
+    _require_runs(scaled, scale / max(float(np.abs(y).max()), 1e-300), coded, weights)
     crossings = tuple(cross(name, codes, coded, weights) for name, codes in nuisances.items())
-    runs = Runs(y=(y - centre) / scale, cells=coded, weights=weights, crossings=crossings)
-    plain = welch(runs.y, coded.codes, weights, level)
-    remarks = (
-        [f"{n_left_out} listed cells have no runs, or no partner with runs, and are left out"]
-        if n_left_out
-        else []
-    )
-    remarks += [
+    runs = ComparedRuns(y=scaled, cells=coded, weights=weights, crossings=crossings)
+    return _compare(runs, seeds, _scene(runs, scale, level, n_left_out))
+
+
+def _scene(runs: ComparedRuns, scale: float, level: float, n_left_out: int) -> Scene:
+    """The naive result, counts and remarks that hold whatever is fitted."""
+    remarks = [
         f"{c.name}: one run a level, so its effect cannot be told from the runs' own spread"
-        for c in crossings
+        for c in runs.crossings
         if c.kind == "unit"
     ]
-    scene = Scene(
-        naive=plain,
+    if n_left_out:
+        remarks.append(f"{n_left_out} listed cells have no runs, or no partner with runs, and are left out")
+    sides = _side_counts(runs.cells, runs.weights)
+    return Scene(
+        naive=welch(runs.y, runs.cells.codes, runs.weights, level),
         scale=scale,
-        n=int((weights[coded.codes] != 0).sum()),
+        n=sum(sides),
         confidence=level,
-        sides=_side_counts(coded, weights),
+        sides=sides,
         remarks=tuple(remarks),
     )
-    return _compare(runs, seeds, scene)
 
 
-def _compare(runs: Runs, seeds: Codes | None, scene: Scene) -> Contrast:
+def _compare(runs: ComparedRuns, seeds: Codes | None, scene: Scene) -> Contrast:
     """Choose the way: not estimable, paired, clustered, or by columns."""
     reasons = [c.reason for c in runs.crossings if c.kind == "aliased" and c.reason]
     if reasons:
@@ -155,8 +158,8 @@ def _compare(runs: Runs, seeds: Codes | None, scene: Scene) -> Contrast:
     )
 
 
-def _require_runs(y: Floats, cells: Codes, weights: Floats) -> None:
-    """Refuse what cannot be compared: a side with one run, or runs that do not vary."""
+def _require_runs(y: Floats, relative: float, cells: Codes, weights: Floats) -> None:
+    """Refuse a side with one run, and runs that do not vary; `relative` is their spread ÷ size."""
     counts = np.bincount(cells.codes, minlength=cells.n_levels)
     for name, side in (("a", weights < 0), ("b", weights > 0)):
         if counts[side].sum() < MIN_SIDE_RUNS:
@@ -164,9 +167,8 @@ def _require_runs(y: Floats, cells: Codes, weights: Floats) -> None:
     if len(y) - cells.n_levels < MIN_RESIDUAL_DF:
         raise NotTestable(f"{MIN_RESIDUAL_DF} runs beyond one a cell", len(y) - cells.n_levels)
     mean = np.bincount(cells.codes, y) / counts
-    residual = y - mean[cells.codes]
-    compared = weights[cells.codes] != 0
-    if float(np.abs(residual[compared]).max()) <= 1e-12 * max(float(np.abs(y).max()), 1e-300):
+    residual = (y - mean[cells.codes])[weights[cells.codes] != 0]
+    if float(np.abs(residual).max()) <= CONSTANT * max(1.0, 1 / max(relative, CONSTANT)):
         raise NotTestable("runs that vary within their cells", "constant values in every compared cell")
 
 
@@ -175,7 +177,7 @@ def _side_counts(cells: Codes, weights: Floats) -> tuple[int, int]:
     return int(counts[weights < 0].sum()), int(counts[weights > 0].sum())
 
 
-def _problem(runs: Runs) -> Problem:
+def _problem(runs: ComparedRuns) -> Problem:
     """The linear model; with very many cells, runs are centred within cells and each side is one cell."""
     weights, code, y = runs.weights, runs.cells.codes, runs.y
     side = np.sign(weights[code]) / 2
@@ -195,7 +197,7 @@ def _problem(runs: Runs) -> Problem:
     )
 
 
-def _paired_problem(runs: Runs, blocks: Codes) -> Problem | None:
+def _paired_problem(runs: ComparedRuns, blocks: Codes) -> Problem | None:
     """Differences of blocks as one cell, about their common mean; None with too few complete blocks.
 
     A nuisance that is one throughout each block may have a difference of its own at each level; the effects
@@ -208,7 +210,7 @@ def _paired_problem(runs: Runs, blocks: Codes) -> Problem | None:
         if constant_within(crossing, blocks):
             kept.append(crossing)
         else:
-            y = adjusted(y, runs.cells, blocks, crossing)
+            y = level_adjusted(y, runs.cells, blocks, crossing)
     pairs = pair(y, runs.cells, blocks, runs.weights)
     if pairs is None:
         return None
@@ -226,7 +228,7 @@ def _paired_problem(runs: Runs, blocks: Codes) -> Problem | None:
     )
 
 
-def _at_pairs(crossing: Crossing, pairs: Pairs) -> Crossing:
+def _at_pairs(crossing: NuisanceCrossing, pairs: Pairs) -> NuisanceCrossing:
     """The nuisance by block: its levels cancel and have no column, each level's own difference has one."""
     present, code = np.unique(crossing.codes.codes[pairs.last], return_inverse=True)
     codes = Codes(codes=code, levels=tuple(crossing.codes.levels[i] for i in present))

@@ -13,7 +13,7 @@ MAX_LEVELS = 40  # levels that enter the design one column each; above, levels a
 
 
 @dataclass(frozen=True, kw_only=True)
-class Crossing:
+class NuisanceCrossing:
     """One nuisance against the cells.
 
     kind : "block" (each compared cell meets each level), "random" (partly crossed), "cluster" (as random,
@@ -28,21 +28,21 @@ class Crossing:
     reason: str | None = None
 
 
-def cross(name: str, codes: Codes, cells: Codes, weights: Floats) -> Crossing:
+def cross(name: str, codes: Codes, cells: Codes, weights: Floats) -> NuisanceCrossing:
     """Classify one nuisance by its table of counts against the cells."""
     n_levels, n_cells = codes.n_levels, cells.n_levels
     met = np.unique(cells.codes * n_levels + codes.codes)
     met_cell, met_level = met // n_levels, met % n_levels
     level_count = np.bincount(codes.codes)
     if level_count.max() == 1:
-        return Crossing(name=name, codes=codes, kind="unit", both=np.empty(0, np.int64))
+        return NuisanceCrossing(name=name, codes=codes, kind="unit", both=np.empty(0, np.int64))
     left = np.bincount(met_level[weights[met_cell] < 0], minlength=n_levels) > 0
     right = np.bincount(met_level[weights[met_cell] > 0], minlength=n_levels) > 0
     both = np.flatnonzero(left & right)
     component = _components(met_cell, met_level, n_cells, n_levels)
     unbalanced = np.abs(np.bincount(component, weights)) > 1e-9
     if unbalanced.any():
-        return Crossing(
+        return NuisanceCrossing(
             name=name, codes=codes, kind="aliased", both=both, reason=_alias_reason(name, codes, left, right)
         )
     compared_levels = left | right
@@ -52,7 +52,7 @@ def cross(name: str, codes: Codes, cells: Codes, weights: Floats) -> Crossing:
         kind = "cluster"
     else:
         kind = "block" if (n_met == compared_levels.sum()).all() else "random"
-    return Crossing(name=name, codes=codes, kind=kind, both=both)
+    return NuisanceCrossing(name=name, codes=codes, kind=kind, both=both)
 
 
 def _components(cell: Ints, level: Ints, n_cells: int, n_levels: int) -> Ints:
@@ -70,7 +70,7 @@ def _components(cell: Ints, level: Ints, n_cells: int, n_levels: int) -> Ints:
 
 def _alias_reason(name: str, codes: Codes, left: np.ndarray, right: np.ndarray) -> str:
     """Say in words why the two sides cannot be told from the nuisance."""
-    sides = [_listed(codes, np.flatnonzero(side)) for side in (left, right)]
+    sides = [_first_names(codes, np.flatnonzero(side)) for side in (left, right)]
     if not (left & right).any():
         return (
             f"not separable from {name}: every run of a has {name} {sides[0]}, every run of b {sides[1]}; "
@@ -79,7 +79,7 @@ def _alias_reason(name: str, codes: Codes, left: np.ndarray, right: np.ndarray) 
     return f"not separable from {name}: some compared cells share no {name} with their counterpart"
 
 
-def _listed(codes: Codes, index: Ints) -> str:
+def _first_names(codes: Codes, index: Ints) -> str:
     """The first few levels by name."""
     names = [str(codes.levels[i]) for i in index[:3]]
     return ", ".join(names) + (f" and {len(index) - 3} more" if len(index) > 3 else "")

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from auditd.evidence.chains import Stretches, along_order, within
-from auditd.evidence.crossing import Crossing
+from auditd.evidence.crossing import NuisanceCrossing
 from auditd.evidence.inputs import Floats, Ints
 from auditd.evidence.moments import Moments
 from auditd.evidence.posterior import Posterior, explore
@@ -47,7 +47,7 @@ class Model:
         return np.concatenate((self.problem.contrast, np.zeros(len(self.base) - len(self.problem.contrast))))
 
 
-def level_penalty(crossing: Crossing, share: Floats, n: int) -> Floats:
+def level_penalty(crossing: NuisanceCrossing, share: Floats, n: int) -> Floats:
     """Innovation variance ÷ level variance: nearly 0 for a block, from the share B for a random effect."""
     mean_runs = n / crossing.codes.n_levels
     if crossing.kind == "block":
@@ -101,7 +101,7 @@ def plain_residuals(problem: Problem, columns: Columns) -> Floats:
     return np.asarray(problem.y - (table @ np.linalg.solve(gram, table.T @ sums))[columns.code])
 
 
-def weigh(model: Model) -> tuple[Posterior, dict[int, float], int | None]:
+def weigh_parameters(model: Model) -> tuple[Posterior, dict[int, float], int | None]:
     """Posterior over φ and the strongest partly crossed effect; other shares are set by likelihood."""
     random = [place for place, c in enumerate(model.problem.crossings) if c.kind == "random"]
     moments, c = model.moments.select(model.base), model.contrast()

@@ -15,6 +15,7 @@ Floats = npt.NDArray[np.float64]
 Ints = npt.NDArray[np.int64]
 Labels = Sequence[Hashable] | npt.NDArray[Any]  # labels are JSON values of any kind
 
+CONSTANT = 1e-14  # spread ÷ size below which values differ by rounding only
 LARGEST = 1e150  # squares beyond this leave the range of a float64
 
 
@@ -58,6 +59,17 @@ def as_values(values: object) -> Floats:
     if result.size and float(np.abs(result).max()) > LARGEST:
         raise BadInput(f"values: larger than {LARGEST:g} in size; rescale them")
     return result
+
+
+def standardise(y: Floats) -> tuple[Floats, float]:
+    """Values less their mean, in standard deviations, and that deviation; zeros if all are equal."""
+    centred = y - y.mean()
+    size = float(np.abs(centred).max(initial=0.0))
+    if size <= 0:
+        return centred, 0.0
+    inside = centred / size
+    spread = float(inside.std())
+    return inside / spread, size * spread
 
 
 def _from_objects(array: npt.NDArray[Any]) -> npt.NDArray[Any]:

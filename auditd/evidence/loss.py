@@ -66,11 +66,11 @@ def evidence_loss(
     share = len(kept) / n
     if parents is not None:
         as_parents(parents, n)
-        share = _inherited(y, labels.codes, duplicates, parents)
+        share = _left_by_copies(y, labels.codes, duplicates, parents)
     return _bounded(*(1 - (1 - part) * share for part in (result.loss, result.loss_low, result.loss_high)))
 
 
-def _inherited(y: object, cells: Labels, duplicates: object, parents: object) -> float:
+def _left_by_copies(y: object, cells: Labels, duplicates: object, parents: object) -> float:
     """What copies and lineage leave of the runs."""
     parts = effective_number(y, cells=cells, duplicates=duplicates, parents=parents).parts
     return parts["duplicates"] * parts["lineage"]

@@ -10,7 +10,7 @@ import numpy as np
 from auditd.evidence.chains import Stretches, along_order, within
 from auditd.evidence.higher import Autoregression, choose_order, looks_white
 from auditd.evidence.inputs import Codes, Floats, Ints
-from auditd.evidence.moments import Moments, gather
+from auditd.evidence.moments import Moments, sum_moments
 from auditd.evidence.posterior import Posterior, explore, none_found
 from auditd.evidence.restricted import FIXED_RIDGE, Fits, evaluate
 from auditd.evidence.steps import MIN_CHAIN_RUNS, segments
@@ -44,7 +44,7 @@ class Steps:
 
 
 @dataclass(frozen=True, kw_only=True)
-class Memory:
+class TimeDependence:
     """What was found along time.
 
     steps : of the level. posterior : of the AR(1) coefficient along `chains`. higher : an AR(p) where the
@@ -59,7 +59,7 @@ class Memory:
     variance: float
 
 
-def remember(residual: Floats, level: Ints, nuisances: Mapping[str, Codes]) -> Memory:
+def remember(residual: Floats, level: Ints, nuisances: Mapping[str, Codes]) -> TimeDependence:
     """Find steps and fit the autocorrelation of residuals about the means of `level` (codes)."""
     candidates: list[Stretches] = [along_order(len(residual))]
     candidates += [
@@ -70,7 +70,7 @@ def remember(residual: Floats, level: Ints, nuisances: Mapping[str, Codes]) -> M
     steps, rest = find_steps(residual, choose(residual, candidates))
     chains = choose(rest, candidates)
     posterior, n_fixed = _fit(residual, level, steps, chains)
-    return Memory(
+    return TimeDependence(
         chains=chains,
         steps=steps,
         posterior=posterior,
@@ -145,9 +145,9 @@ def _fit(residual: Floats, level: Ints, steps: Steps, chains: Stretches) -> tupl
             (segment[first][:, None] == np.arange(n_segments)).astype(float),
         )
     )
-    moments = gather(residual, code, table, chains)
+    moments = sum_moments(residual, code, table, chains)
     if many:
-        moments = _corrected(moments, level, chains)
+        moments = _unbiased_moments(moments, level, chains)
     ridge = np.concatenate(
         (np.zeros(columns), np.full(n_segments, FIXED_RIDGE * len(residual) / (n_segments + 1)))
     )
@@ -160,7 +160,7 @@ def _fit(residual: Floats, level: Ints, steps: Steps, chains: Stretches) -> tupl
     return explore(fit, with_share=False), n_fixed
 
 
-def _corrected(moments: Moments, level: Ints, chains: Stretches) -> Moments:
+def _unbiased_moments(moments: Moments, level: Ints, chains: Stretches) -> Moments:
     """Undo what removing many means did to the sums: −σ²/n_level for each pair within a level."""
     n, n_levels = moments.n, int(level.max()) + 1
     runs = np.bincount(level)

@@ -38,7 +38,7 @@ class Moments:
         )
 
 
-def gather(y: Floats, code: Ints, table: Floats, chains: Chains) -> Moments:
+def sum_moments(y: Floats, code: Ints, table: Floats, chains: Chains) -> Moments:
     """Sum up the runs.
 
     Parameters

@@ -3,24 +3,34 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from auditd.errors import NotTestable
 from auditd.evidence.chains import Chains
 from auditd.evidence.distinct import as_parents, lineage, originals
-from auditd.evidence.inputs import Codes, Floats, Ints, Labels, as_codes, as_nuisances, as_values
+from auditd.evidence.inputs import (
+    CONSTANT,
+    Codes,
+    Floats,
+    Ints,
+    Labels,
+    as_codes,
+    as_nuisances,
+    as_values,
+    standardise,
+)
 from auditd.evidence.levels import LevelEffects, effects
 from auditd.evidence.memory import remember
-from auditd.evidence.moments import gather
+from auditd.evidence.moments import sum_moments
 from auditd.evidence.persistence import lags_needed, same_cell_pairs
 from auditd.evidence.posterior import Posterior, explore
 from auditd.evidence.restricted import Fits, evaluate
 from auditd.evidence.result import EffectiveNumber
 from auditd.evidence.tally import (
     TAIL,
-    Effect,
+    JudgedEffect,
     Ledger,
     Lineage,
     concentration,
@@ -39,7 +49,7 @@ SUSPECT = 0.05  # p below which level means are taken off before time is asked
 
 
 @dataclass(frozen=True, kw_only=True)
-class Runs:
+class DistinctRuns:
     """Distinct runs: residuals about the cells' means on a scale of 1, codes, and lineage links."""
 
     residual: Floats
@@ -118,18 +128,16 @@ def _some(codes: Codes, kept: Ints) -> Codes:
 
 def _prepare(
     y: Floats, cell: Ints, nuisances: dict[str, Codes], links: Chains | None
-) -> tuple[Runs, list[str]]:
+) -> tuple[DistinctRuns, list[str]]:
     """Residuals about the cells' means, and the nuisances that can be asked."""
     _, cell = np.unique(cell, return_inverse=True)
     count = np.bincount(cell).astype(float)
     if len(y) - len(count) < MIN_RESIDUAL_DF:
         raise NotTestable(f"{MIN_RESIDUAL_DF} distinct runs beyond one a cell", len(y) - len(count))
-    centred = y - y.mean()
-    size = float(np.abs(centred).max())
-    scaled = centred / size if size > 0 else centred
+    scaled, size = standardise(y)
     residual = scaled - (np.bincount(cell, scaled) / count)[cell]
     spread = float(residual @ residual / (len(y) - len(count))) ** 0.5
-    if size <= 1e-14 * float(np.abs(y).max()) or spread <= 1e-13:
+    if size * spread <= CONSTANT * float(np.abs(y).max()) or spread <= CONSTANT:
         raise NotTestable("runs that vary within their cells", "constant values in every cell")
     remarks = [
         f"{name}: one run a level, so its effect cannot be told from the runs' own spread"
@@ -137,10 +145,12 @@ def _prepare(
         if codes.n_levels == len(y)
     ]
     asked = {name: codes for name, codes in nuisances.items() if 1 < codes.n_levels < len(y)}
-    return Runs(residual=residual / spread, cell=cell, count=count, nuisances=asked, links=links), remarks
+    return DistinctRuns(
+        residual=residual / spread, cell=cell, count=count, nuisances=asked, links=links
+    ), remarks
 
 
-def _lineage(runs: Runs) -> Lineage | None:
+def _restart_chains(runs: DistinctRuns) -> Lineage | None:
     """Fit the coefficient from parent to child, and count chains and continuations by cell."""
     links = runs.links
     if links is None:
@@ -149,7 +159,7 @@ def _lineage(runs: Runs) -> Lineage | None:
     few = n_cells <= MAX_CELLS
     code = runs.cell if few else np.zeros_like(runs.cell)
     k = n_cells if few else 1
-    moments = gather(runs.residual, code, np.eye(k), links)
+    moments = sum_moments(runs.residual, code, np.eye(k), links)
     c = np.ones(k)
 
     def fit(rho: Floats, _share: Floats) -> Fits:
@@ -162,7 +172,7 @@ def _lineage(runs: Runs) -> Lineage | None:
     )
 
 
-def _suspects(residual: Floats, runs: Runs) -> tuple[list[LevelEffects], Ints, Floats, list[str]]:
+def _suspects(residual: Floats, runs: DistinctRuns) -> tuple[list[LevelEffects], Ints, Floats, list[str]]:
     """Level effects, strongest first; codes and residuals with the suspicious ones' means taken off."""
     found: list[LevelEffects] = []
     remarks: list[str] = []
@@ -188,9 +198,9 @@ def _suspects(residual: Floats, runs: Runs) -> tuple[list[LevelEffects], Ints, F
     return found, level, rest, remarks
 
 
-def _count(runs: Runs, n: int, remarks: list[str]) -> EffectiveNumber:
+def _count(runs: DistinctRuns, n: int, remarks: list[str]) -> EffectiveNumber:
     """Put the parts together."""
-    family = _lineage(runs)
+    family = _restart_chains(runs)
     inherited = _sign(family.posterior) > 0 if family else False
     rho = family.posterior.quantile(family.posterior.phi, 0.5) if family and inherited else 0.0
     residual = (
@@ -216,22 +226,15 @@ def _count(runs: Runs, n: int, remarks: list[str]) -> EffectiveNumber:
     sure = phi if _sign(memory.posterior, tail) else 0.0
     cell_inflation = bare.persistence(np.array([sure]))[0]
     judged = tuple(
-        _judged(e, dependence_of(e, memory, cell_inflation, sure, runs.cell)) for e in level_effects
+        _with_dependence(e, dependence_of(e, memory, cell_inflation, sure, runs.cell)) for e in level_effects
     )
-    ledger = Ledger(
-        count=runs.count,
-        lineage=family,
-        effects=judged,
-        memory=memory,
-        pairs=pairs,
-        stepped=stepped,
-        segment_weight=weight,
-    )
-    return _result(ledger, n, rho, tail, tuple(remarks + more))
+    return _result(replace(bare, effects=judged), n, rho, tail, tuple(remarks + more))
 
 
-def _judged(level_effects: LevelEffects, dependence: float) -> Effect:
-    return Effect(effects=level_effects, dependence=dependence, found=level_effects.pvalue(dependence) < TAIL)
+def _with_dependence(level_effects: LevelEffects, dependence: float) -> JudgedEffect:
+    return JudgedEffect(
+        effects=level_effects, dependence=dependence, found=level_effects.pvalue(dependence) < TAIL
+    )
 
 
 def _sign(posterior: Posterior, tail: float = TAIL) -> int:
@@ -258,18 +261,6 @@ def _result(ledger: Ledger, n: int, rho: float, tail: float, remarks: tuple[str,
     n_serial = float(mass @ total(ledger, left, batch, step, ledger.persistence(phi), serial=True))
     spread = np.quantile(1 - draws(ledger) / n, (TAIL, 1 - TAIL))
     loss = 1 - n_serial / n
-    detail = {
-        "phi": posterior.quantile(posterior.phi, 0.5),
-        "order": float(1 if memory.higher is None else len(memory.higher.coefficients)),
-        "steps": float(memory.steps.df),
-    }
-    if ledger.lineage is not None:
-        detail["rho"] = ledger.lineage.posterior.quantile(ledger.lineage.posterior.phi, 0.5)
-    for effect in ledger.effects:
-        size = effect.effects.variance(effect.dependence)
-        detail[f"icc {effect.effects.name}"] = size / (
-            size + memory.variance + memory.steps.variance * float(ledger.stepped.mean())
-        )
     return EffectiveNumber(
         n=n,
         n_effective=n_serial,
@@ -282,6 +273,23 @@ def _result(ledger: Ledger, n: int, rho: float, tail: float, remarks: tuple[str,
             "batch": n_batch / n_lineage,
             "serial": n_serial / n_batch,
         },
-        detail=detail,
+        detail=_detail(ledger),
         remarks=(*remarks, *((f"dependence in time: along {memory.chains.along}",) if dependent else ())),
     )
+
+
+def _detail(ledger: Ledger) -> dict[str, float]:
+    """The estimates behind the parts, whether their parts were found or not."""
+    memory, posterior = ledger.memory, ledger.memory.posterior
+    detail = {
+        "phi": posterior.quantile(posterior.phi, 0.5),
+        "order": float(1 if memory.higher is None else len(memory.higher.coefficients)),
+        "steps": float(memory.steps.df),
+    }
+    if ledger.lineage is not None:
+        detail["rho"] = ledger.lineage.posterior.quantile(ledger.lineage.posterior.phi, 0.5)
+    own = memory.variance + memory.steps.variance * float(ledger.stepped.mean())
+    for effect in ledger.effects:
+        size = effect.effects.variance(effect.dependence)
+        detail[f"icc {effect.effects.name}"] = size / (size + own)
+    return detail

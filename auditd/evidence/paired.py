@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from auditd.evidence.crossing import MAX_LEVELS, Crossing
+from auditd.evidence.crossing import MAX_LEVELS, NuisanceCrossing
 from auditd.evidence.inputs import Codes, Floats, Ints
 
 MIN_BLOCKS = 4  # complete blocks that a paired comparison needs
@@ -44,7 +44,7 @@ def pair(y: Floats, cells: Codes, blocks: Codes, weights: Floats) -> Pairs | Non
     return Pairs(difference=difference[order], last=last[complete][order], n_runs=int(count[complete].sum()))
 
 
-def constant_within(crossing: Crossing, blocks: Codes) -> bool:
+def constant_within(crossing: NuisanceCrossing, blocks: Codes) -> bool:
     """Whether every block ran on one level of the nuisance."""
     low = np.full(blocks.n_levels, crossing.codes.n_levels, dtype=np.int64)
     high = np.full(blocks.n_levels, -1, dtype=np.int64)
@@ -53,7 +53,7 @@ def constant_within(crossing: Crossing, blocks: Codes) -> bool:
     return bool((low == high).all())
 
 
-def adjusted(y: Floats, cells: Codes, blocks: Codes, crossing: Crossing) -> Floats:
+def level_adjusted(y: Floats, cells: Codes, blocks: Codes, crossing: NuisanceCrossing) -> Floats:
     """Take off level effects of a nuisance that differs within blocks, estimated within blocks and cells."""
     n_levels = crossing.codes.n_levels
     if n_levels > MAX_LEVELS:

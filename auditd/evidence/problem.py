@@ -7,9 +7,9 @@ from dataclasses import dataclass
 import numpy as np
 
 from auditd.evidence.chains import Chains
-from auditd.evidence.crossing import Crossing
+from auditd.evidence.crossing import NuisanceCrossing
 from auditd.evidence.inputs import Floats, Ints
-from auditd.evidence.moments import Moments, gather
+from auditd.evidence.moments import Moments, sum_moments
 
 MAX_CELLS = 60  # cells that get a column each; with more, runs are centred within their cells first
 
@@ -29,7 +29,7 @@ class Problem:
     cell: Ints
     contrast: Floats
     side: Floats
-    crossings: tuple[Crossing, ...]
+    crossings: tuple[NuisanceCrossing, ...]
     n_cells_spent: int
     at_zero: float = 0.0
 
@@ -76,4 +76,4 @@ def lay_columns(problem: Problem) -> Columns:
 
 def collect(problem: Problem, columns: Columns, chains: Chains) -> Moments:
     """The sums of this comparison along the given chains."""
-    return gather(problem.y, columns.code, columns.table, chains)
+    return sum_moments(problem.y, columns.code, columns.table, chains)

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 from auditd.evidence.anytime import critical
 from auditd.evidence.clustered import Clustered
-from auditd.evidence.crossing import Crossing
+from auditd.evidence.crossing import NuisanceCrossing
 from auditd.evidence.naive import Naive
 from auditd.evidence.result import Contrast
 from auditd.evidence.solution import Solution
@@ -68,7 +68,9 @@ def aliased(scene: Scene, reason: str) -> Contrast:
     )
 
 
-def solved(solution: Solution, scene: Scene, method: str, crossings: tuple[Crossing, ...]) -> Contrast:
+def solved(
+    solution: Solution, scene: Scene, method: str, crossings: tuple[NuisanceCrossing, ...]
+) -> Contrast:
     """Words and figures of a fit by columns or by pairs."""
     from scipy.special import chdtri
 
@@ -133,9 +135,9 @@ def _filled(measured: Measured, scene: Scene, method: str) -> Contrast:
     """All fields of an estimable comparison, back on the scale of the values."""
     scale, naive = scene.scale, scene.naive
     n_effective = scene.n / max(measured.inflation, 1e-12)
-    normal = _normal_quantile(scene.confidence)
+    normal = _two_sided_z(scene.confidence)
     half_any = measured.half * critical(min(n_effective, scene.n), scene.confidence) / normal
-    g, g_half = _effect(measured, naive, scene.confidence)
+    g, g_half = _standardised(measured, naive, scene.confidence)
     weak = min(scene.sides) / scene.n * n_effective < WEAK_RUNS
     remarks = scene.remarks + (("weak: fewer than 10 effective runs a side",) if weak else ())
     return Contrast(
@@ -164,13 +166,13 @@ def _filled(measured: Measured, scene: Scene, method: str) -> Contrast:
     )
 
 
-def _normal_quantile(confidence: float) -> float:
+def _two_sided_z(confidence: float) -> float:
     from scipy.special import ndtri
 
     return float(ndtri(0.5 + confidence / 2))
 
 
-def _effect(measured: Measured, naive: Naive | None, confidence: float) -> tuple[float | None, float]:
+def _standardised(measured: Measured, naive: Naive | None, confidence: float) -> tuple[float | None, float]:
     """Hedges' g with an interval whose variance is the honest one plus that of the standard deviation.
 
     References

@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
-from auditd.evidence.fit import Model, errors_of, weigh
+from auditd.evidence.fit import Model, errors_of, weigh_parameters
 from auditd.evidence.higher import choose_order, looks_white, whitened_fit
 from auditd.evidence.inputs import Floats
 from auditd.evidence.interaction import Interaction, judge
@@ -47,9 +47,7 @@ class Solution:
 
 def solve(model: Model, confidence: float) -> Solution:
     """Weigh the parameters, correct for unequal spread and the levels' own differences, take the interval."""
-    from scipy.special import stdtrit
-
-    posterior, others, lead = weigh(model)
+    posterior, others, lead = weigh_parameters(model)
     fits, best = posterior.fits, posterior.best
     phi = float(posterior.phi[best])
     nu = float(model.moments.n - model.n_fixed)
@@ -74,29 +72,41 @@ def solve(model: Model, confidence: float) -> Solution:
         centre += longer.shift
         half *= longer.factor**0.5
         variances = variances * longer.factor
-    scatter = _widest(
-        [judge(model, place, phi, ridge, float(fits.estimate[best])) for place in model.columns.slopes]
-    )
-    factor, scatter_df = 1.0, float("inf")
-    if scatter is not None:
-        factor = scatter.variance / float(fits.unit[best] * fits.sigma2[best])
-        scatter_df = scatter.df
-        df_scatter = 1 / (1 / scatter.df + 0.5 * uncertainty)
-        half *= factor**0.5 * float(
-            stdtrit(df_scatter, 0.5 + confidence / 2) / stdtrit(df, 0.5 + confidence / 2)
-        )
-        df, centre = df_scatter, centre + scatter.shift
-    return Solution(
+    solution = Solution(
         estimate=centre,
         half=half,
         df=df,
-        variances=variances * factor,
+        variances=variances,
         marginals=fits.sigma2 / (1 - posterior.phi**2),
         weights=posterior.weight,
         phi=posterior.mean(posterior.phi),
-        scatter_df=scatter_df,
-        interaction=scatter,
+        scatter_df=float("inf"),
+        interaction=None,
         order=1 if longer is None else longer.order,
+    )
+    own = [judge(model, place, phi, ridge, float(fits.estimate[best])) for place in model.columns.slopes]
+    scatter = _widest(own)
+    if scatter is None:
+        return solution
+    factor = scatter.variance / float(fits.unit[best] * fits.sigma2[best])
+    return _scattered(solution, scatter, factor, 1 / (1 / scatter.df + 0.5 * uncertainty), confidence)
+
+
+def _scattered(
+    solution: Solution, scatter: Interaction, factor: float, df: float, confidence: float
+) -> Solution:
+    """The same with a nuisance's own differences as the error."""
+    from scipy.special import stdtrit
+
+    p = 0.5 + confidence / 2
+    return replace(
+        solution,
+        estimate=solution.estimate + scatter.shift,
+        half=solution.half * factor**0.5 * float(stdtrit(df, p) / stdtrit(solution.df, p)),
+        df=df,
+        variances=solution.variances * factor,
+        scatter_df=scatter.df,
+        interaction=scatter,
     )
 
 

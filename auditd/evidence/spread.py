@@ -12,7 +12,7 @@ MIN_SIDE_DF = 3  # innovations beyond the cells' means that a side needs for a v
 
 
 @dataclass(frozen=True, kw_only=True)
-class Spread:
+class SideSpread:
     """Variance with each side's own innovation variance ÷ with a common one, and degrees of freedom."""
 
     ratio: float
@@ -21,7 +21,7 @@ class Spread:
 
 def by_side(
     error: Floats, weight: Floats, side: Floats, cell: Ints, unit: float, sigma2: float, df: float
-) -> Spread:
+) -> SideSpread:
     """Let a, b and the other cells have a variance each.
 
     With φ = 0 and no nuisance this is Welch's variance and Satterthwaite's degrees of freedom exactly.
@@ -41,16 +41,16 @@ def by_side(
         n_cells = int((np.bincount(cell[members]) > 0).sum())
         side_df = int(members.sum()) - n_cells
         if side_df < MIN_SIDE_DF:
-            return Spread(ratio=1.0, df=df)
+            return SideSpread(ratio=1.0, df=df)
         part = pull * float(error[members] @ error[members]) / side_df
         total += part
         own += pull
         spent += part * part / side_df
     if total <= 0 or own <= 0:
-        return Spread(ratio=1.0, df=df)
+        return SideSpread(ratio=1.0, df=df)
     # degrees of freedom spent on blocks are taken off in proportion
     n_side_df = len(error) - len(np.unique(cell))
     lost = df / max(n_side_df, 1)
     rest = max(unit - own, 0.0) * sigma2
     ratio = (total / lost + rest) / (unit * sigma2)
-    return Spread(ratio=ratio, df=min(max(total * total / spent * lost, 1.0), df))
+    return SideSpread(ratio=ratio, df=min(max(total * total / spent * lost, 1.0), df))

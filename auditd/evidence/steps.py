@@ -16,7 +16,7 @@ import numpy as np
 
 from auditd.evidence.chains import along_order
 from auditd.evidence.inputs import Floats, Ints
-from auditd.evidence.moments import gather
+from auditd.evidence.moments import sum_moments
 from auditd.evidence.restricted import evaluate
 
 MIN_SEGMENT_RUNS = 8  # runs on each side of a step
@@ -35,14 +35,14 @@ def segments(x: Floats) -> Ints:
     todo = [(0, len(x))]
     while todo and len(starts) < MAX_SEGMENTS:
         low, high = todo.pop(0)
-        place = _step(x[low:high])
+        place = _one_step(x[low:high])
         if place is not None:
             starts.append(low + place)
             todo += [(low, low + place), (low + place, high)]
     return np.array(sorted(starts), dtype=np.int64)
 
 
-def _step(x: Floats) -> int | None:
+def _one_step(x: Floats) -> int | None:
     """Place of the step in a stretch, or None."""
     m = len(x)
     if m < MIN_CHAIN_RUNS:
@@ -64,8 +64,8 @@ def _step(x: Floats) -> int | None:
 def likelihood_ratio(y: Floats, place: int) -> float:
     """Twice the log-likelihood ratio of AR(1) with a step at `place` against AR(1) without."""
     code = (np.arange(len(y)) >= place).astype(np.int64)
-    two = gather(y, code, np.eye(2), along_order(len(y)))
-    one = gather(y, code, np.ones((2, 1)), along_order(len(y)))
+    two = sum_moments(y, code, np.eye(2), along_order(len(y)))
+    one = sum_moments(y, code, np.ones((2, 1)), along_order(len(y)))
     phi = PHI_NODES
     best = []
     for moments in (two, one):

@@ -8,7 +8,7 @@ import numpy as np
 
 from auditd.evidence.inputs import Floats, Ints
 from auditd.evidence.levels import LevelEffects
-from auditd.evidence.memory import Memory
+from auditd.evidence.memory import TimeDependence
 from auditd.evidence.persistence import inflation, inflation_by, lags_needed, same_cell_pairs
 from auditd.evidence.posterior import Posterior
 
@@ -28,7 +28,7 @@ class Lineage:
 
 
 @dataclass(frozen=True, kw_only=True)
-class Effect:
+class JudgedEffect:
     """Level effects; inflation of their means by what happens within; found: the interval excludes 0."""
 
     effects: LevelEffects
@@ -46,8 +46,8 @@ class Ledger:
 
     count: Floats
     lineage: Lineage | None
-    effects: tuple[Effect, ...]
-    memory: Memory
+    effects: tuple[JudgedEffect, ...]
+    memory: TimeDependence
     pairs: Floats
     stepped: Floats
     segment_weight: Floats
@@ -79,7 +79,7 @@ def concentration(group: Ints, n_groups: int, segment: Ints) -> tuple[Floats, Fl
 
 
 def dependence_of(
-    effects: LevelEffects, memory: Memory, cell_inflation: Floats, phi: float, cell: Ints
+    effects: LevelEffects, memory: TimeDependence, cell_inflation: Floats, phi: float, cell: Ints
 ) -> float:
     """Expected mean square between levels ÷ within, had levels no effects but dependence within them."""
     n_slots, n_cells = len(effects.means), len(cell_inflation)
