@@ -123,7 +123,8 @@ def _is_cut(data: bytes, at: re.Match[str] | None) -> bool:
     if int(at[1]) < start:
         return False
     text = data[start:].decode(errors="replace")
-    return _CUT_NUMBER.fullmatch(text) is not None or _is_cut_token(text)
+    at_end = int(at[1]) >= len(data)
+    return (at_end and _CUT_NUMBER.fullmatch(text) is not None) or _is_cut_token(text)
 
 
 def _is_cut_token(text: str) -> bool:
