@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable
 from typing import ClassVar
 
@@ -33,12 +34,14 @@ class _Window:
         self.response = response
         self.counts: dict[float, int] = {}
         self.n = 0
+        self.largest = -math.inf
+        self.smallest = math.inf
 
     def at_extreme(self) -> tuple[str, float, int] | None:
         """Return (`upper` or `lower`, the value, how many), or None where nothing stands out."""
         if len(self.counts) <= MIN_N_DISTINCT:
             return None
-        for side, value in (("upper", max(self.counts)), ("lower", min(self.counts))):
+        for side, value in (("upper", self.largest), ("lower", self.smallest)):
             n_at = self.counts[value]
             if n_at < max(MIN_N_AT_EXTREME, MIN_SHARE * self.n):
                 continue
@@ -77,6 +80,8 @@ class CapFact(Quiet):
                 continue
             window.counts[value] = window.counts.get(value, 0) + 1
             window.n += 1
+            window.largest = max(window.largest, value)
+            window.smallest = min(window.smallest, value)
             if window.n % N_BETWEEN_LOOKS == 0:
                 found += self._look(window, run)
         return found

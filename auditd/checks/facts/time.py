@@ -27,12 +27,15 @@ class _Machine:
         self.starts: list[float] = []
         self.ends: list[float] = []
         self.longest_s = 0.0
+        self.latest_s = 0.0
         self.last_placed: tuple[float, str] | None = None
 
     def n_beside(self, start: float, end: float, tolerance_s: float) -> int:
         """Return the largest number of remembered runs that were under way at one moment within "
         "[start, end].
         """
+        if start >= self.latest_s - tolerance_s:
+            return 0
         low = bisect_left(self.starts, start - self.longest_s)
         high = bisect_right(self.starts, end - tolerance_s)
         events: list[tuple[float, int]] = []
@@ -52,6 +55,7 @@ class _Machine:
         self.starts.insert(where, start)
         self.ends.insert(where, end)
         self.longest_s = max(self.longest_s, end - start)
+        self.latest_s = max(self.latest_s, end)
         if len(self.starts) > N_INTERVALS_KEPT:
             del self.starts[0], self.ends[0]
 
