@@ -146,14 +146,36 @@ def test_runs_without_arrival_are_taken_up_in_the_order_of_insertion(engine):
         insert(connection, [5], first_arrival=0)
         assert insert(connection, [9, 3, 7], first_arrival=None).stored == ()
     with engine.begin() as connection:
-        taken = give_arrivals(connection, count_runs(connection).next_arrival)
+        taken = list(give_arrivals(connection, count_runs(connection).next_arrival))
     assert [(run.run.id, run.arrival) for run in taken] == [("r9", 1), ("r3", 2), ("r7", 3)]
     with engine.begin() as connection:
-        assert give_arrivals(connection, 4) == ()
+        assert list(give_arrivals(connection, 4)) == []
         insert(connection, [11], first_arrival=4)
         insert(connection, [12], first_arrival=None)
         assert [run.arrival for run in give_arrivals(connection, 5)] == [5]
         assert [stored.run.id for stored in stored_runs(connection)] == ["r5", "r9", "r3", "r7", "r11", "r12"]
+
+
+@pytest.mark.parametrize(
+    ("by", "expected"),
+    [
+        ("arrival", ["r3", "r1", "r4", "r2"]),
+        ("sequence", ["r2", "r4", "r3", "r1"]),
+        ("started", ["r1", "r2", "r4", "r3"]),
+    ],
+)
+def test_a_backfill_is_taken_up_in_the_order_in_which_it_was_made(engine, by, expected):
+    """By sequence or start, what states none of it last, and in the order of insertion among equals."""
+    stated = {
+        3: {"sequence": 7, "started": None, "finished": None},
+        1: {"sequence": None},
+        4: {"sequence": 2, "started": None, "finished": make_run(4).started},
+        2: {"sequence": 1},
+    }
+    with engine.begin() as connection:
+        for number, fields in stated.items():
+            insert(connection, [number], first_arrival=None, **fields)
+        assert [stored.run.id for stored in give_arrivals(connection, 0, by)] == expected
 
 
 def test_positions_lateness_and_counts(engine):
