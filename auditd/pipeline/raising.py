@@ -10,7 +10,7 @@ from sqlalchemy import Connection
 
 from auditd.alerts.targets import targets_for
 from auditd.pipeline.asking import caution_document
-from auditd.pipeline.auditing import Audit, Raised
+from auditd.pipeline.auditing import Raised
 from auditd.pipeline.consequences import consequence_of, grade_of
 from auditd.pipeline.dates import changes, dated
 from auditd.pipeline.effects import effect_of
@@ -27,6 +27,8 @@ from auditd.verdicts.cautions import caution
 from auditd.verdicts.grades import GradeHold
 
 SEQUENTIAL = ("serial", "drift", "batch", "spread", "clock", "lineage")
+N_DIGITS_LOG_E = 9
+"""Decimals of a log e-value that are kept: any split of the runs into blocks agrees to so many."""
 N_REGRADE = 30
 """Runs after an alarm from which its effect is estimated anew: at the alarm it is inflated."""
 
@@ -44,9 +46,14 @@ class Raiser:
         self._cautions = {one.id: one for one in stored_cautions(connection)}
         self._of_key = {one.finding.key: one.id for one in self._cautions.values()}
         self._holds: dict[str, GradeHold] = {}
+        self._grown: dict[str, Finding] = {}
 
     def raise_facts(self, connection: Connection, findings: Iterable[Finding]) -> int:
-        """Raise facts, update those that have grown, withdraw those that no longer hold; count the new."""
+        """Raise facts that are new, and count them.
+
+        Those that have grown, or hold no longer, are kept for `regrade`: a count that grows with every run
+        must not cost a look at the whole campaign each time.
+        """
         table: RunTable | None = None
         n_new = 0
         for finding in findings:
@@ -55,19 +62,19 @@ class Raiser:
                 continue
             if known is None and not finding.holds:
                 continue
+            if known is not None:
+                self._grown[finding.key] = finding
+                continue
             if table is None:
                 table = load_table(connection, self._plan)
-            if known is None:
-                n_new += self._raise(connection, finding, table)
-            else:
-                self._renew(connection, self._cautions[known], finding, table)
+            n_new += self._raise(connection, finding, table)
         return n_new
 
     def raise_missing(self, connection: Connection, findings: Iterable[Finding]) -> int:
         """Raise what the stored runs show and no warning tells: the process ended before it was raised."""
         return self.raise_facts(connection, [one for one in findings if one.key not in self._of_key])
 
-    def raise_alarms(self, connection: Connection, alarms: Sequence[Raised], audit: Audit) -> int:
+    def raise_alarms(self, connection: Connection, alarms: Sequence[Raised]) -> int:
         """Raise the sequential audit's alarms; count the warnings that are new."""
         if not alarms:
             return 0
@@ -82,7 +89,6 @@ class Raiser:
                 continue
             else:
                 n_new += self._raise(connection, finding, table)
-        del audit
         return n_new
 
     def withdraw(self, connection: Connection, kind: str, message: str) -> None:
@@ -93,10 +99,13 @@ class Raiser:
                 self._store(connection, msgspec.structs.replace(one, finding=finding, state="withdrawn"))
 
     def regrade(self, connection: Connection, table: RunTable) -> None:
-        """Estimate standing dependences anew from the runs after their alarms, and grade them again."""
-        states = {one.id: one for one in stored_cautions(connection)}
-        for one in list(states.values()):
+        """Store facts that have grown; estimate dependences anew from the runs after their alarms."""
+        for one in stored_cautions(connection):
             self._cautions[one.id] = one
+        for finding in self._grown.values():
+            self._renew(connection, self._cautions[self._of_key[finding.key]], finding, table)
+        self._grown.clear()
+        for one in list(self._cautions.values()):
             if one.state != "standing" or one.finding.kind not in SEQUENTIAL or one.finding.index is None:
                 continue
             n_after = int((table.positions > one.finding.index).sum())
@@ -253,8 +262,8 @@ def finding_of(raised: Raised, table: RunTable, plan: Plan) -> Finding:
         since=first + alarm.since,
         since_low=first + alarm.since_low,
         since_high=first + alarm.since_high,
-        log_e=alarm.log_e,
-        threshold=alarm.threshold,
+        log_e=round(alarm.log_e, N_DIGITS_LOG_E),
+        threshold=round(alarm.threshold, N_DIGITS_LOG_E),
         explains=tuple(
             Listed(kind=one.kind, along=one.along, level=one.level, log_e=one.log_e) for one in alarm.explains
         ),

@@ -4,10 +4,12 @@ from __future__ import annotations
 
 from pathlib import Path
 
-from sqlalchemy import Connection, update
+from sqlalchemy import Connection, select, update
 
+from auditd.checks.facts.plan import plan_finding
 from auditd.errors import BadInput, PlanError
 from auditd.pipeline.campaign import Campaign, new_key, open_for_replies, plan_difference
+from auditd.pipeline.raising import Raiser
 from auditd.plan import Plan
 from auditd.plan_reading import parse_plan
 from auditd.records import Finding
@@ -16,7 +18,7 @@ from auditd.store.cautions import caution_number, stored_cautions
 from auditd.store.clock import now_us
 from auditd.store.plans import plan_versions, save_epoch, save_plan_version
 from auditd.store.runs import count_runs
-from auditd.store.tables import answers, cautions
+from auditd.store.tables import answers, cautions, runs
 
 
 def reply(plan_path: Path, name: str, reason: str, action: Action, scope: dict[str, str]) -> None:
@@ -132,6 +134,15 @@ def amend(plan_path: Path, reason: str) -> list[str]:
             reason=f"plan amended: {reason}",
             scope={},
         )
+        last = connection.execute(select(runs.c.id).where(runs.c.position == position - 1)).scalar()
+        finding = plan_finding(
+            version=version,
+            changed=[change.split(":", 1)[0] for change in changes],
+            reason=reason,
+            position=position,
+            run=last,
+        )
+        Raiser(campaign.plan, connection).raise_facts(connection, [finding])
     return changes
 
 

@@ -221,7 +221,7 @@ class Session:
         findings += self.facts.standing()
         self.totals.n_raised += self.raiser.raise_facts(connection, findings)
         alarms = self.audit.advance(connection, entered)
-        self.totals.n_raised += self.raiser.raise_alarms(connection, alarms, self.audit)
+        self.totals.n_raised += self.raiser.raise_alarms(connection, alarms)
         self._n_since_checkpoint += len(entered)
         due = time.monotonic() - self._checkpoint_at > CHECKPOINT_EVERY_S
         if self._n_since_checkpoint >= CHECKPOINT_EVERY_RUNS or (due and self._n_since_checkpoint):
@@ -248,5 +248,5 @@ class Session:
         return batch.change == "append" or n_runs <= 1
 
     def _has_replies(self) -> bool:
-        with self.campaign.engine.begin() as connection:
+        with self.campaign.engine.connect() as connection:
             return apply_answers(connection, self.plan, self._next_position, only_ask=True)

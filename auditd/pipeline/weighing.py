@@ -59,7 +59,7 @@ class Weigher:
     def refresh_if_due(self) -> bool:
         """Compute the displays if runs have come and the last computation is long enough ago."""
         now = time.monotonic()
-        n = self._session.n_placed
+        n = self._session.n_placed + self._session.n_arrived
         if n == self._n_shown or now < self._due_at:
             return False
         if n < GROWTH * self._n_shown and now < self._shown_at + STALE_S:
