@@ -30,7 +30,7 @@ class Interaction:
     """Variance of the contrast with the levels' own differences as error, its degrees of freedom, and the
     estimate's move.
 
-    f : mean square of the levels' own differences ÷ error mean square.
+    f, pvalue : mean square of the levels' own differences ÷ error mean square, and its upper tail.
     """
 
     name: str
@@ -38,11 +38,13 @@ class Interaction:
     df: float
     shift: float
     f: float
-    between: float
+    pvalue: float
 
 
 def judge(model: Model, place: int, phi: float, ridge: Floats, base_estimate: float) -> Interaction | None:
     """Fit the slopes of one nuisance at a given φ; None where runs are too few to tell them from error."""
+    from scipy.special import fdtrc
+
     slopes = model.columns.slopes[place]
     n_own = len(slopes) - 1
     moments = model.moments.select(np.concatenate((model.base, slopes)))
@@ -73,5 +75,5 @@ def judge(model: Model, place: int, phi: float, ridge: Floats, base_estimate: fl
         df=n_own + PRIOR_DF,
         shift=moved,
         f=f,
-        between=float(error / penalties[best]) if f > 1 else 0.0,
+        pvalue=float(fdtrc(n_own, df_full, f)),
     )

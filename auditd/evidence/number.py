@@ -42,6 +42,7 @@ from auditd.evidence.tally import (
 
 MIN_RESIDUAL_DF = 3
 MAX_CELLS = 60  # cells whose means are columns of the lineage's likelihood
+ROUNDING = 1e-12  # relative error of sums over cells
 AFTER_LINEAGE = (
     0.0005  # tail in place of 0.025 once lineage explains the order: its innovations are estimated
 )
@@ -268,14 +269,19 @@ def _result(ledger: Ledger, n: int, rho: float, tail: float, remarks: tuple[str,
         loss_low=min(float(spread[0]), loss),
         loss_high=max(float(spread[1]), loss),
         parts={
-            "duplicates": n_distinct / n,
-            "lineage": n_lineage / n_distinct,
-            "batch": n_batch / n_lineage,
-            "serial": n_serial / n_batch,
+            "duplicates": _factor(n_distinct, n),
+            "lineage": _factor(n_lineage, n_distinct),
+            "batch": _factor(n_batch, n_lineage),
+            "serial": _factor(n_serial, n_batch),
         },
         detail=_detail(ledger),
         remarks=(*remarks, *((f"dependence in time: along {memory.chains.along}",) if dependent else ())),
     )
+
+
+def _factor(after: float, before: float) -> float:
+    """What a cause leaves; exactly 1 where it takes nothing but rounding."""
+    return 1.0 if abs(after / before - 1) < ROUNDING else after / before
 
 
 def _detail(ledger: Ledger) -> dict[str, float]:

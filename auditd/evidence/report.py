@@ -11,6 +11,7 @@ from auditd.evidence.naive import Naive
 from auditd.evidence.result import Contrast
 from auditd.evidence.solution import Solution
 
+FOUND = 0.05  # p of the levels' own differences below which they count in the effective number
 WEAK_RUNS = 10.0  # effective runs a side below which a comparison is called weak
 
 
@@ -72,24 +73,19 @@ def solved(
     solution: Solution, scene: Scene, method: str, crossings: tuple[NuisanceCrossing, ...]
 ) -> Contrast:
     """Words and figures of a fit by columns or by pairs."""
-    from scipy.special import chdtri
-
     independent, sd2 = _independent(scene)
     marginal = 1.0 if independent is None else independent
     inflation = solution.variances / marginal
     if "blocks" not in method:
         inflation = inflation / (solution.marginals / sd2).clip(min=1.0)
     tail = (1 - scene.confidence) / 2
-    low = high = 1.0
-    if solution.scatter_df != float("inf"):
-        low = solution.scatter_df / float(chdtri(solution.scatter_df, tail))
-        high = solution.scatter_df / float(chdtri(solution.scatter_df, 1 - tail))
+    low, middle, high = _scatter_range(solution, tail)
     measured = Measured(
         estimate=solution.estimate,
         half=solution.half,
         df=solution.df,
-        variance=solution.quantile(solution.variances, 0.5),
-        inflation=solution.quantile(inflation, 0.5),
+        variance=solution.quantile(solution.variances, 0.5) * middle,
+        inflation=solution.quantile(inflation, 0.5) * middle,
         inflation_low=solution.quantile(inflation, tail) * low,
         inflation_high=solution.quantile(inflation, 1 - tail) * high,
     )
@@ -98,6 +94,19 @@ def solved(
     if solution.interaction is not None:
         words.append(f"{solution.interaction.name} × cell as error")
     return _filled(measured, scene, "; ".join(words))
+
+
+def _scatter_range(solution: Solution, tail: float) -> tuple[float, float, float]:
+    """What the levels' own differences do to the variance: lower end, middle (1 unless found), upper end."""
+    from scipy.special import chdtri
+
+    if solution.interaction is None:
+        return 1.0, 1.0, 1.0
+    df = solution.scatter_df
+    middle = solution.scatter if solution.interaction.pvalue < FOUND else 1.0
+    low = solution.scatter * df / float(chdtri(df, tail))
+    high = solution.scatter * df / float(chdtri(df, 1 - tail))
+    return min(low, middle), middle, max(high, middle)
 
 
 def clustered(found: Clustered, scene: Scene, name: str) -> Contrast:

@@ -23,6 +23,7 @@ class Solution:
 
     variances, marginals : (G,) variance of the estimate, and variance of one run, at each grid point;
         weights (G,) of the points.
+    scatter : what a nuisance's own differences make of the variances, as a factor.
     scatter_df : degrees of freedom of the interaction's mean square, infinite where none enters. order : of
         the autoregression.
     """
@@ -34,6 +35,7 @@ class Solution:
     marginals: Floats
     weights: Floats
     phi: float
+    scatter: float
     scatter_df: float
     interaction: Interaction | None
     order: int
@@ -80,6 +82,7 @@ def solve(model: Model, confidence: float) -> Solution:
         marginals=fits.sigma2 / (1 - posterior.phi**2),
         weights=posterior.weight,
         phi=posterior.mean(posterior.phi),
+        scatter=1.0,
         scatter_df=float("inf"),
         interaction=None,
         order=1 if longer is None else longer.order,
@@ -104,7 +107,7 @@ def _scattered(
         estimate=solution.estimate + scatter.shift,
         half=solution.half * factor**0.5 * float(stdtrit(df, p) / stdtrit(solution.df, p)),
         df=df,
-        variances=solution.variances * factor,
+        scatter=factor,
         scatter_df=scatter.df,
         interaction=scatter,
     )

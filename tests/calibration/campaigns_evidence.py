@@ -58,7 +58,10 @@ def hosts(rng, n, n_hosts, icc, interaction, crossing):
         + np.sqrt(interaction) * rng.standard_normal((n_hosts, 2))[host, cells]
     )
     return Campaign(
-        values=values, cells=cells, host=host, known_half=known_half_hosts(host, cells, 1 - icc, icc, interaction)
+        values=values,
+        cells=cells,
+        host=host,
+        known_half=known_half_hosts(host, cells, 1 - icc, icc, interaction),
     )
 
 

@@ -33,7 +33,13 @@ def measure(draw, n_campaigns, seed):
         naive.append((r.high - r.low) / (r.naive_high - r.naive_low))
         effective.append(r.n_effective)
     n = len(widths)
-    return held / n, float(np.mean(widths)), float(np.mean(naive)), held_naive / n, float(np.median(effective))
+    return (
+        held / n,
+        float(np.mean(widths)),
+        float(np.mean(naive)),
+        held_naive / n,
+        float(np.median(effective)),
+    )
 
 
 def serial_rows(n_campaigns):
@@ -44,7 +50,9 @@ def serial_rows(n_campaigns):
         for phi in (0.0, 0.3, 0.6, 0.9):
             for order in ("A then B", "randomised"):
                 covered, width, naive, plain, _ = measure(
-                    lambda rng, n=n, phi=phi, order=order: serial(rng, n, phi, order), n_campaigns, [1, n, int(phi * 10)]
+                    lambda rng, n=n, phi=phi, order=order: serial(rng, n, phi, order),
+                    n_campaigns,
+                    [1, n, int(phi * 10)],
                 )
                 cells = np.repeat([0, 1], n // 2)
                 if order == "randomised":
@@ -85,7 +93,9 @@ def block_rows(n_campaigns):
         for rho in (0.2, 0.5, 0.8):
             for phi, order in ((0.0, "randomised"), (0.6, "randomised"), (0.6, "A then B")):
                 covered, width, _, plain, _ = measure(
-                    lambda rng, a=(n, rho, phi, order): paired(rng, *a), n_campaigns, [3, n, int(rho * 10), int(phi * 10)]
+                    lambda rng, a=(n, rho, phi, order): paired(rng, *a),
+                    n_campaigns,
+                    [3, n, int(rho * 10), int(phi * 10)],
                 )
                 yield f"| {n} | {rho} | {phi} | {order} | {covered:.3f} | {width:.3f} | {plain:.3f} |"
 
@@ -117,7 +127,9 @@ def sequence_rows(n_campaigns):
         (600, 0.6, "tens in turn", 60),
     ):
         rng = np.random.default_rng([4, n, int(phi * 10)])
-        found = np.array([looks(rng, n, phi, order, first) for _ in range(n_campaigns)], dtype=float).mean(axis=0)
+        found = np.array([looks(rng, n, phi, order, first) for _ in range(n_campaigns)], dtype=float).mean(
+            axis=0
+        )
         yield f"| {n} | {phi} | {order} | {found[0]:.3f} | 0.94 | {found[1]:.3f} | {found[2]:.3f} | 1.6 |"
 
 
