@@ -76,26 +76,25 @@ class Placer:
         return max(PATIENCE_FACTOR * longest, PATIENCE_MIN_S)
 
     def restore(self, runs: Iterable[StoredRun]) -> None:
-        """Take in the runs of the store, in arrival order, without letting any enter."""
+        """Take in the runs of the store, in arrival order, without letting any enter.
+
+        `ready` comes next, before any `add`: it lets in what the ended process would have let in.
+        """
         for run in runs:
             self._note(run)
             if run.position is not None:
                 self._last = max(self._last, self._key(run)) if self._last else self._key(run)
             elif not run.late:
-                self._push(run)
+                self._take_in(run)
 
     def add(self, run: StoredRun) -> None:
         """Take in a run that has landed."""
         self._note(run)
-        key = self._key(run)
-        placeless = self.by == "sequence" and run.run.sequence is None
-        if placeless or (self._last is not None and key <= self._last):
-            self._late.append(run)
-        else:
-            self._push(run)
+        self._take_in(run)
 
     def ready(self) -> Placed:
         """Return who enters now by the rule."""
+        self._set_late_apart()
         entered = []
         while self._waiting and self._may_enter(self._waiting[0]):
             entered.append(self._pop())
@@ -103,6 +102,7 @@ class Placer:
 
     def flush(self) -> Placed:
         """Let in all that wait, in order."""
+        self._set_late_apart()
         entered = []
         while self._waiting:
             entered.append(self._pop())
@@ -127,8 +127,14 @@ class Placer:
             return (2**62 if stored.run.sequence is None else stored.run.sequence, stored.run.id)
         return (_start_us(stored.run, stored.landed_us), stored.run.id)
 
-    def _push(self, run: StoredRun) -> None:
-        heapq.heappush(self._waiting, (self._key(run), run.row, run))
+    def _take_in(self, run: StoredRun) -> None:
+        """Let a run wait for its place, unless that has passed or it can have none."""
+        key = self._key(run)
+        placeless = self.by == "sequence" and run.run.sequence is None
+        if placeless or (self._last is not None and key <= self._last):
+            self._late.append(run)
+        else:
+            heapq.heappush(self._waiting, (key, run.row, run))
 
     def _pop(self) -> StoredRun:
         key, _, run = heapq.heappop(self._waiting)
@@ -138,6 +144,11 @@ class Placer:
     def _take_late(self) -> tuple[StoredRun, ...]:
         late, self._late = tuple(self._late), []
         return late
+
+    def _set_late_apart(self) -> None:
+        """Take out restored runs whose place had passed when the process ended before it could say so."""
+        while self._waiting and self._last is not None and self._waiting[0][0] <= self._last:
+            self._late.append(heapq.heappop(self._waiting)[2])
 
     def _may_enter(self, first: tuple[Key, int, StoredRun]) -> bool:
         if self.by == "arrival":
