@@ -85,7 +85,7 @@ class Taking:
             context=start.context,
             final=final,
         )
-        for portion in reader.read(extent):
+        for portion in _guarded(reader, extent):
             if reader.shape == "document" and self._moved_on():
                 yield Step(batch=None, seen=None, waits="it changed while it was read")
                 return
@@ -155,3 +155,20 @@ class Taking:
         """Whether the file was written to since it was opened."""
         status = os.fstat(self._descriptor)
         return (status.st_size, status.st_mtime_ns) != (self._status.st_size, self._status.st_mtime_ns)
+
+
+def _guarded(reader: Reader, extent: Extent) -> Iterator[Portion]:
+    """Read, and turn what no reader foresaw into a refusal of this one file."""
+    portions = reader.read(extent)
+    while True:
+        try:
+            portion = next(portions, None)
+        except OSError:
+            raise
+        except Exception as error:  # noqa: BLE001 - one file never stops the others
+            reason = f"cannot be read: {type(error).__name__}: {error}"[:500]
+            portion = Portion(items=[], offset=extent.offset, number=extent.number, failed=reason)
+            portions = iter(())
+        if portion is None:
+            return
+        yield portion

@@ -76,9 +76,8 @@ def run_daemon_until(landing, watcher, kept, done, limit_s):
     return time.monotonic() - began
 
 
-@pytest.fixture
-def watched(plan):
-    """Return a landing with events, begun, and what it gave."""
+def watching(plan):
+    """A landing with events, begun, and what it gave."""
     landing, kept = Landing(plan), Kept()
     watcher = Watcher(landing, "events")
     watcher.start()
@@ -87,15 +86,26 @@ def watched(plan):
     watcher.stop()
 
 
-def test_events_wake_and_a_renamed_file_is_taken_at_once(watched, results):
-    """A file renamed into place is indexed within a second of its landing, without waiting to settle."""
-    landing, watcher, kept = watched
+@pytest.fixture
+def watched(plan):
+    yield from watching(plan)
+
+
+@pytest.fixture
+def patient(tmp_path, results):
+    """Likewise, but files settle in five minutes only: what is taken before was told by an event."""
+    yield from watching(parse_plan(PLAN.replace("0.2s", "5m"), tmp_path / "plan.toml"))
+
+
+def test_events_wake_and_a_renamed_file_is_taken_at_once(patient, results):
+    """A file renamed into place is indexed at once, without waiting to settle."""
+    landing, watcher, kept = patient
     assert watcher.mode == "events"
     (results / ".r1.tmp").write_text(record("r1"))
     os.rename(results / ".r1.tmp", results / "r1.json")
-    took_s = run_daemon_until(landing, watcher, kept, lambda: kept.ids, 5)
+    took_s = run_daemon_until(landing, watcher, kept, lambda: kept.ids, 20)
     assert kept.ids == ["r1"]
-    assert took_s < 1
+    assert took_s < 20
 
 
 @pytest.mark.slow
@@ -191,9 +201,9 @@ def test_more_folders_than_watches(plan, results, monkeypatch):
 
 
 @pytest.mark.filterwarnings("ignore::pytest.PytestUnhandledThreadExceptionWarning")
-def test_a_dead_observer_is_replaced(watched, results):
+def test_a_dead_observer_is_replaced(patient, results):
     """An observer whose thread died is noticed by the next tending and replaced; files are seen again."""
-    landing, watcher, kept = watched
+    landing, watcher, kept = patient
     dead = watcher._observer
     dead.stop()
     dead.join()
@@ -201,18 +211,18 @@ def test_a_dead_observer_is_replaced(watched, results):
     assert watcher._observer is not dead
     assert watcher.n_restarts == 1
     (results / "r.json").write_text(record("r"))
-    assert run_daemon_until(landing, watcher, kept, lambda: kept.ids, 5) < 1
+    assert run_daemon_until(landing, watcher, kept, lambda: kept.ids, 20) < 20
 
 
-def test_a_dead_emitter_is_replaced(watched, results):
+def test_a_dead_emitter_is_replaced(patient, results):
     """Likewise a single emitter's thread beneath a living observer."""
-    landing, watcher, kept = watched
+    landing, watcher, kept = patient
     emitter = next(iter(watcher._observer.emitters))
     emitter.stop()
     emitter.join()
     assert watcher.tend(time.time() + 60)
     (results / "r.json").write_text(record("r"))
-    assert run_daemon_until(landing, watcher, kept, lambda: kept.ids, 5) < 1
+    assert run_daemon_until(landing, watcher, kept, lambda: kept.ids, 20) < 20
 
 
 def test_watching_that_cannot_be_restored_says_so(watched, monkeypatch):
@@ -502,11 +512,11 @@ def test_folders_moved_in_a_thousand_times(watched, results, tmp_path):
     assert len(kept.ids) == len(set(kept.ids)) == 1000
 
 
-def test_the_landing_removed_and_made_again(watched, results):
+def test_the_landing_removed_and_made_again(patient, results):
     """Removed and made again with old and new files: goes on, takes nothing again and nothing as deleted."""
-    landing, watcher, kept = watched
+    landing, watcher, kept = patient
     (results / "a.json").write_text(record("a"))
-    run_daemon_until(landing, watcher, kept, lambda: kept.ids, 5)
+    run_daemon_until(landing, watcher, kept, lambda: kept.ids, 20)
     shutil.rmtree(results)
     kept.take(landing.scan(time.time()))
     assert [one.path for one in landing.waiting(time.time())] == ["results"]
@@ -520,7 +530,7 @@ def test_the_landing_removed_and_made_again(watched, results):
     assert not landing.waiting(time.time())
     watcher.tend(time.time() + 100)
     (results / "c.json").write_text(record("c"))
-    assert run_daemon_until(landing, watcher, kept, lambda: len(kept.ids) == 3, 5) < 1
+    assert run_daemon_until(landing, watcher, kept, lambda: len(kept.ids) == 3, 20) < 20
 
 
 def test_inodes_that_change_by_a_remount(plan, results):
@@ -733,3 +743,53 @@ def test_rotated_logs_without_ids_are_new_runs(tmp_path, results):
     kept.take(Landing(plan, kept.sources.values()).scan(now + 3))
     assert kept.ids == ["results/x.ndjson#0", "results/x.ndjson~1#0", "results/x.ndjson~2#0"]
     assert [change for _, change, n in kept.changes if n] == ["new", "rotated", "truncated"]
+
+
+def test_a_line_that_was_taken_and_is_written_on(tmp_path, results):
+    """A last line taken after a minute's rest that then goes on is given once more, whole."""
+    plan = parse_plan(PLAN, tmp_path / "plan.toml")
+    path = results / "x.csv"
+    path.write_text("id,y\na,1\nb,2")
+    landing, kept, now = Landing(plan), Kept(), time.time()
+    kept.take(landing.scan(now + 100))
+    with open(path, "a", encoding="utf-8") as file:
+        file.write("5\nc,3\n")
+    kept.take(landing.scan(now + 110))
+    told = [(item.id, item.responses["y"]) for item in kept.items]
+    assert told == [("a", 1), ("b", 2), ("a", 1), ("b", 25), ("c", 3)]
+    assert kept.changes[-1] == ("results/x.csv", "rewritten", 3)
+
+
+def test_a_reader_that_fails_in_an_unforeseen_way(plan, results, monkeypatch):
+    """Whatever a reader raises over one file (injected), that file is refused; the others go on."""
+    for key in ("bad", "good"):
+        (results / f"{key}.json").write_text(record(key))
+
+    def failing(data):
+        return 1 / (b"bad" not in data) and json.loads(data)
+
+    monkeypatch.setattr("auditd.read.json_document.decode_json", failing)
+    kept = Kept().take(Landing(plan).scan(now_after()))
+    assert kept.ids == ["good"]
+    assert [(one.path, one.kind) for one in kept.refusals] == [("results/bad.json", "file")]
+    assert "ZeroDivisionError" in kept.refusals[0].reason
+
+
+@pytest.mark.slow
+def test_idle_on_100000_files(plan, results):
+    """Ten minutes of the given clock over 100,000 taken files cost at most 0.5 % of one core, however watched."""
+    for k in range(100):
+        (results / f"d{k}").mkdir()
+        for n in range(1000):
+            with open(results / f"d{k}" / f"{n}.json", "w", encoding="utf-8") as file:
+                file.write(record(f"r{k}-{n}"))
+    landing, now = Landing(plan), now_after(60)
+    assert sum(1 for _ in landing.scan(now)) == 100_000
+    for polls in (False, True):
+        landing.pace.polls = polls
+        began, start = time.process_time(), now
+        while now < start + 600:
+            assert not list(landing.visit(now))
+            now += max(0.1, landing.wait_s(now))
+        share = (time.process_time() - began) / 600
+        assert share <= 0.005, f"polls: {polls}"
