@@ -306,6 +306,16 @@ def test_short_series_still_give_their_autocorrelation_time():
     assert math.isfinite(caught.value.estimate)
 
 
+def test_ten_million_values():
+    """Ten million values are answered within seconds, or refused with what would have to be smaller."""
+    x = np.random.default_rng(2).normal(size=10_000_000)
+    assert 0 < ljung_box(x, 20).pvalue < 1
+    assert 0 < fisher_g(x).pvalue <= 1
+    assert abs(runs_test(x).statistic) < 5
+    with pytest.raises(NotTestable, match="lower the oversampling"):
+        lomb_scargle(np.arange(x.size), x)
+
+
 def test_integers_lists_and_booleans_are_numbers():
     """Lists, integers, booleans and object arrays of numbers give what the floats give."""
     x = np.arange(40) * 7 % 11
