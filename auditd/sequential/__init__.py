@@ -2,7 +2,26 @@
 
 from auditd.sequential.alarm import Alarm, Explained
 from auditd.sequential.auditor import Advanced, Auditor, EarlierRuns
+from auditd.sequential.level_order_e import LevelOrder
 from auditd.sequential.options import Options
+from auditd.sequential.rate_e import RateConcentration
 from auditd.sequential.replay import Replay, replay
+from auditd.sequential.seed_blocks import SeedBlockBuilder, SeedBlocks, seed_blocks
+from auditd.sequential.stages import cells_within_stages
 
-__all__ = ["Advanced", "Alarm", "Auditor", "EarlierRuns", "Explained", "Options", "Replay", "replay"]
+__all__ = [
+    "Advanced",
+    "Alarm",
+    "Auditor",
+    "EarlierRuns",
+    "Explained",
+    "LevelOrder",
+    "Options",
+    "RateConcentration",
+    "Replay",
+    "SeedBlockBuilder",
+    "SeedBlocks",
+    "cells_within_stages",
+    "replay",
+    "seed_blocks",
+]

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -192,7 +192,7 @@ class Auditor:
                 options=self.options,
                 n_runs=self._series.n_runs,
                 n_scored=self._series.n_scored,
-                levels={name: list(codes) for name, codes in self._series.levels.items()},
+                levels=self._levels_seen(),
                 latest=self._latest.tolist(),
                 alarms=self._alarms,
                 parts=self._book.state(),
@@ -220,15 +220,15 @@ class Auditor:
             raise BadInput(f"the state covers {dump.n_runs} runs, got {n_given}")
         if runs is not None and n_given:
             auditor._rebuild(runs)
-        if auditor.n_scored != dump.n_scored or [*auditor._levels_seen()] != [*dump.levels.items()]:
+        if auditor.n_scored != dump.n_scored or auditor._levels_seen() != dump.levels:
             raise BadInput("these runs are not the ones that the state covers: scored runs or levels differ")
         auditor._latest = np.array(dump.latest)
         auditor._alarms = list(dump.alarms)
         auditor._book.restore(dump.parts)
         return auditor
 
-    def _levels_seen(self) -> Iterator[tuple[str, list[str]]]:
-        return ((name, list(codes)) for name, codes in self._series.levels.items())
+    def _levels_seen(self) -> dict[str, list[str]]:
+        return {name: list(codes) for name, codes in self._series.levels.items()}
 
     def _rebuild(self, runs: EarlierRuns) -> None:
         """Rebuild reference, scores and labels from stored runs, without betting."""
@@ -279,6 +279,7 @@ class Auditor:
             threshold_first=self.threshold_first,
             threshold_own=self.threshold_own,
             raised=frozenset(alarm.key for alarm in self._alarms),
+            shared_at=self._book.shared,
         )
         return paths, [self._raise(crossing, scored_paths) for crossing in found]
 

@@ -50,13 +50,14 @@ class Book:
                 log_e[rows] = np.logaddexp(log_e[rows] + LOG_EVERY, alone + LOG_ONE)
         return log_e
 
-    def is_shared(self, key: Key, at: int) -> bool:
-        """Say whether all levels together show more than one alone, after run `at` of the last block."""
-        for bet in self._bets:
-            kinds = [kind for kind, _ in bet.families]
-            if bet.has_levels_alone and bet.along == key[1] and key[0] in kinds:
-                return bool(self._shared[bet.along][kinds.index(key[0]), at] > 0.0)
-        return False
+    def shared(self, at: int) -> dict[Key, bool]:
+        """Say, for families with levels alone, whether all levels together show more, after run `at`."""
+        return {
+            (kind, bet.along): bool(self._shared[bet.along][number, at] > 0.0)
+            for bet in self._bets
+            if bet.has_levels_alone
+            for number, (kind, _) in enumerate(bet.families)
+        }
 
     def level_log_wealth(self, key: Key, at: int) -> FloatArray | None:
         """Give each level's own log wealth after run `at` of the block taken last, or None."""

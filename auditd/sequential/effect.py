@@ -120,7 +120,8 @@ def intraclass(scores: npt.ArrayLike, levels: npt.ArrayLike) -> Effect:
 
     References
     ----------
-    Searle, Casella & McCulloch (1992), Variance Components, section 3.6. Donner & Wells (1986), Biometrics 42.
+    Searle, Casella & McCulloch (1992), Variance Components, section 3.6. Donner & Wells (1986),
+    Biometrics 42.
     """
     z, level = np.asarray(scores, dtype=np.float64), np.asarray(levels)
     if level.shape != z.shape or z.ndim != 1:

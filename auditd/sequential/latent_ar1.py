@@ -86,8 +86,8 @@ def log_bets(
     """Give log L = log f(z_t | past) − log φ(z_t) for segments that each continue their own signal.
 
     A score of reliability ρ (its squared correlation with the score that an endless reference would give)
-    shows √ρ of the signal, and feeds √ρ of itself; what a prediction explains shrinks by ρ and by the trust
-    in the scores it rests on. This is an approximation to the filter with varying gains, and it is predictable,
+    shows √ρ of the signal, and feeds √ρ of itself; what a prediction explains shrinks by ρ and by the
+    trust in the scores it rests on. This approximates the filter with varying gains, and it is predictable,
     which is all that validity needs.
 
     Parameters

@@ -72,7 +72,7 @@ class Scorer:
         scores.reliability[part][at[known]] = reliability[known]
 
     def _ranked(self, block: RunBlock, part: slice) -> tuple[IntArray, FloatArray, IntArray, FloatArray]:
-        """Give positions, the values ranked, codes of the sets they are ranked in, and each one's own share."""
+        """Give positions, the values ranked, codes of the sets they rank in, and each one's own share."""
         values = block.values[part]
         at = np.flatnonzero(np.isfinite(values))
         values = values[at]

@@ -41,9 +41,9 @@ class SeedBlockBuilder:
 
     Runs of one seed share its luck, so that single runs are dependent by design. Blocks are independent of
     each other: their means are exchangeable, whatever the law. Contrasts of one cell are exchangeable over
-    blocks; those of different cells in one block are independent of each other and of the mean when errors are
-    Gaussian with one variance (Helmert's contrasts), otherwise only uncorrelated, so that the error rate is
-    then close to the stated one and not bound by it.
+    blocks; those of different cells in one block are independent of each other and of the mean when errors
+    are Gaussian with one variance (Helmert's contrasts), otherwise only uncorrelated, so that the error rate
+    is then close to the stated one and not bound by it.
 
     Parameters
     ----------

@@ -19,8 +19,8 @@ def cells_within_stages(cells: object, stages: object, *, drawn_at_random: bool 
     ----------
     cells, stages : labels, one a run.
     drawn_at_random : the order of the stage's runs was drawn at random over all its cells, and hosts were
-        given by that order alone. Then all runs of a stage are scored against each other, whatever their cells;
-        differences between cells only blunt the scores.
+        given by that order alone. Then all runs of a stage are scored against each other, whatever their
+        cells; differences between cells only blunt the scores.
 
     Returns
     -------
