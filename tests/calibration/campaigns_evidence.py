@@ -8,7 +8,8 @@ from scipy.signal import lfilter
 
 @dataclass(frozen=True, kw_only=True)
 class Campaign:
-    """Runs whose two cells do not differ, and the half-width of the interval that knows the truth (normal quantile)."""
+    """Runs whose two cells do not differ, and the half-width of the interval that knows the truth (normal
+    quantile)."""
 
     values: np.ndarray
     cells: np.ndarray
@@ -43,7 +44,8 @@ def serial(rng, n, phi, order):
 
 
 def hosts(rng, n, n_hosts, icc, interaction, crossing):
-    """Two cells over hosts, crossed evenly or unevenly, in a randomised order; unit variance apart from the interaction."""
+    """Two cells over hosts, crossed evenly or unevenly, in a randomised order; unit variance apart from the
+    interaction."""
     if crossing == "even":
         host, cells = np.arange(n) % n_hosts, (np.arange(n) // n_hosts) % 2
     else:
@@ -76,7 +78,8 @@ def known_half_hosts(host, cells, error, icc, interaction):
 
 
 def paired(rng, n, rho, phi, order):
-    """n/2 seed blocks of two runs, correlation ρ within a block, AR(1) in the rest; known_half is the paired t interval's."""
+    """n/2 seed blocks of two runs, correlation ρ within a block, AR(1) in the rest; known_half is the
+    paired t interval's."""
     from scipy.stats import t
 
     half = n // 2

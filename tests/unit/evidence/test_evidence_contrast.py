@@ -138,7 +138,8 @@ def test_one_run_a_host_is_said_and_not_called_nested(rng):
 
 
 def test_a_host_that_every_cell_met_is_a_block(rng):
-    """A large host effect crossed with the cells costs nothing: the interval is far narrower than the naive one."""
+    """A large host effect crossed with the cells costs nothing: the interval is far narrower than the naive
+    one."""
     host = np.arange(240) % 6
     cells = (np.arange(240) // 6) % 2
     values = rng.standard_normal(240) + 20 * rng.standard_normal(6)[host]
@@ -180,7 +181,8 @@ def test_hosts_with_differences_of_their_own_widen_the_interval(rng):
 
 
 def test_lists_are_matched_and_weigh_equally(rng):
-    """A side of two cells is their equally weighted mean, whatever the cells' sizes; a pair without runs is left out."""
+    """A side of two cells is their equally weighted mean, whatever the cells' sizes; a pair without runs is
+    left out."""
     cells = np.array(["a1"] * 40 + ["a2"] * 10 + ["b1"] * 10 + ["b2"] * 40)
     level = {"a1": 0.0, "a2": 10.0, "b1": 2.0, "b2": 14.0}
     values = np.array([level[c] for c in cells]) + 0.01 * rng.standard_normal(100)

@@ -129,7 +129,8 @@ def test_one_run_a_host_is_said_to_be_unknown(rng):
 
 
 def test_a_step_on_one_host_is_not_called_autocorrelation(rng):
-    """One of three hosts changes by ten standard deviations: a step is counted, and the rest is not autocorrelated."""
+    """One of three hosts changes by ten standard deviations: a step is counted, and the rest is not
+    autocorrelated."""
     host = np.arange(900) % 3
     values = rng.standard_normal(900) + 10.0 * ((host == 1) & (np.arange(900) > 300))
     found = effective_number(values, cells=[0] * 900, nuisance={"host": host})
@@ -146,7 +147,8 @@ def test_autocorrelation_alone_is_not_called_a_step(rng):
 
 
 def test_autocorrelation_costs_less_where_cells_take_turns_at_random(rng):
-    """The cells' means share runs of a wander: two cells in random order lose less than one cell, more than nothing."""
+    """The cells' means share runs of a wander: two cells in random order lose less than one cell, more than
+    nothing."""
     values = lfilter([1.0], [1.0, -0.6], rng.standard_normal(4000))
     one = effective_number(values, cells=[0] * 4000).n_effective
     two = effective_number(values, cells=rng.integers(0, 2, 4000)).n_effective

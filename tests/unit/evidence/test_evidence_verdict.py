@@ -43,7 +43,8 @@ def test_a_comparison_that_cannot_be_estimated_is_undecided():
 
 
 def test_runs_needed_follow_the_square_of_the_width():
-    """Half the distance to the margin needs four times the runs; decided needs none; on the margin no number helps."""
+    """Half the distance to the margin needs four times the runs; decided needs none; on the margin no
+    number helps."""
     assert runs_needed(made(3.0, 2.0), 2.0) == 300
     assert runs_needed(made(5.0, 2.0), 2.5) == 0
     assert runs_needed(made(2.0, 2.0), 2.0) is None
