@@ -46,7 +46,9 @@ class Crossing:
     one : all runs of a row (at least 20) are in one column, while by the other rows' shares at least 14 of
         them would be expected elsewhere. It stands until 5 runs, and 5 % of the row's, are elsewhere.
     partial : Cramér's V, corrected for its bias (Bergsma 2013, Journal of the Korean Statistical Society 42,
-        323-328), is at least 0.5, with at least 20 runs in each of two rows and columns.
+        323-328), is at least 0.5, with at least 20 runs in each of two rows and columns, and chi-squared
+        beyond what chance reaches with probability exp(−14) (Laurent & Massart 2000, Annals of Statistics
+        28, lemma 1).
 
     Each needs two rows and two columns.
     """
@@ -81,7 +83,7 @@ class Crossing:
             grave = [verdict for verdict in alone if verdict is not None]
         if not partial or (grave and "partial" not in stood):
             return grave
-        return grave + self._partial(PARTIAL_WITHDRAWN if "partial" in stood else PARTIAL_RAISED)
+        return grave + self._partial(stood="partial" in stood)
 
     def _apart(self) -> list[Verdict]:
         blocks = self._blocks()
@@ -139,28 +141,31 @@ class Crossing:
             "one", f"row{row}", (row,), (column,), 1 - n_elsewhere / n, n_elsewhere, n_beside, n_needed
         )
 
-    def _partial(self, bar: float) -> list[Verdict]:
+    def _partial(self, *, stood: bool) -> list[Verdict]:
         rows = [row for row, counts in self.rows.items() if sum(counts.values()) >= MIN_N_LEVEL]
         columns = [column for column, n in self.columns.items() if n >= MIN_N_LEVEL]
         if len(rows) < 2 or len(columns) < 2:
             return []
-        strength = self._cramers_v(rows, columns)
-        if strength < bar:
+        chi2, strength = self._cramers_v(rows, columns)
+        df = (len(rows) - 1) * (len(columns) - 1)
+        by_chance = df + 2 * math.sqrt(df * N_EXPECTED) + 2 * N_EXPECTED
+        if strength < (PARTIAL_WITHDRAWN if stood else PARTIAL_RAISED) or (not stood and chi2 < by_chance):
             return []
         n_needed = math.ceil(self.n * (1 - PARTIAL_WITHDRAWN / strength))
         return [Verdict("partial", "partial", tuple(rows), tuple(columns), strength, n_needed=n_needed)]
 
-    def _cramers_v(self, rows: list[int], columns: list[int]) -> float:
-        """Return the bias-corrected V of the table's well-filled part."""
+    def _cramers_v(self, rows: list[int], columns: list[int]) -> tuple[float, float]:
+        """Return chi-squared and the bias-corrected V of the table's well-filled part."""
         table = [[self.rows[row].get(column, 0) for column in columns] for row in rows]
         by_row = [sum(line) for line in table]
         by_column = [sum(line) for line in zip(*table, strict=True)]
         n = sum(by_row)
         r, k = len(rows), len(columns)
         if n < 2 or 0 in by_row or 0 in by_column:
-            return 0.0
+            return 0.0, 0.0
         pairs = ((table[i][j], by_row[i] * by_column[j] / n) for i in range(r) for j in range(k))
         phi2 = sum((seen - expected) ** 2 / expected for seen, expected in pairs) / n
+        chi2 = n * phi2
         phi2 = max(0.0, phi2 - (r - 1) * (k - 1) / (n - 1))
         free = min(r - (r - 1) ** 2 / (n - 1), k - (k - 1) ** 2 / (n - 1)) - 1
-        return min(1.0, math.sqrt(phi2 / free)) if free > 0 else 0.0
+        return chi2, (min(1.0, math.sqrt(phi2 / free)) if free > 0 else 0.0)

@@ -98,13 +98,22 @@ def test_partial_aliasing_is_told_by_cramers_v(make_plan, make_run, tell):
     assert found.share == pytest.approx(0.8, abs=0.12)
 
 
+def test_partial_aliasing_stands_down_to_a_lower_bar():
+    """V = 0.45 does not raise it, and does not withdraw it once it stands."""
+    table = Crossing()
+    for row, column, n in ((0, 0, 290), (0, 1, 110), (1, 0, 110), (1, 1, 290)):
+        table.count(row, column, n)
+    assert not table.verdicts(set())
+    assert [verdict.kind for verdict in table.verdicts({"partial"})] == ["partial"]
+
+
 def test_corrected_v_agrees_with_a_published_formula_on_a_known_table():
     """Bergsma (2013), worked by hand for the table 30 10 / 10 30: V² = (.25 - 1/79) / (1 - 1/79)."""
     table = Crossing()
     for row, column, n in ((0, 0, 30), (0, 1, 10), (1, 0, 10), (1, 1, 30)):
         table.count(row, column, n)
     by_hand = ((0.25 - 1 / 79) / (1 - 1 / 79)) ** 0.5
-    assert table._cramers_v([0, 1], [0, 1]) == pytest.approx(by_hand, abs=1e-12)
+    assert table._cramers_v([0, 1], [0, 1]) == pytest.approx((20.0, by_hand), abs=1e-12)
 
 
 def test_blocks_agree_with_the_rank_of_the_design():
