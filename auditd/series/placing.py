@@ -94,7 +94,6 @@ class Placer:
 
     def ready(self) -> Placed:
         """Return who enters now by the rule."""
-        self._set_late_apart()
         entered = []
         while self._waiting and self._may_enter(self._waiting[0]):
             entered.append(self._pop())
@@ -102,7 +101,6 @@ class Placer:
 
     def flush(self) -> Placed:
         """Let in all that wait, in order."""
-        self._set_late_apart()
         entered = []
         while self._waiting:
             entered.append(self._pop())
@@ -144,11 +142,6 @@ class Placer:
     def _take_late(self) -> tuple[StoredRun, ...]:
         late, self._late = tuple(self._late), []
         return late
-
-    def _set_late_apart(self) -> None:
-        """Take out restored runs whose place had passed when the process ended before it could say so."""
-        while self._waiting and self._last is not None and self._waiting[0][0] <= self._last:
-            self._late.append(heapq.heappop(self._waiting)[2])
 
     def _may_enter(self, first: tuple[Key, int, StoredRun]) -> bool:
         if self.by == "arrival":
