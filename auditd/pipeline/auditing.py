@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from sqlalchemy import Connection
 
 from auditd.pipeline.budget import epoch_budget, shares
+from auditd.pipeline.evidence_paths import PathRecorder
 from auditd.plan import AUTO_RESPONSES, Plan
 from auditd.records import NOT_STATED, Run, cell_label, level_label
 from auditd.sequential import Alarm, Auditor, Options
@@ -61,6 +62,7 @@ class Audit:
             for name in self.responses
             if set(self.withheld) < {*ORDER_KINDS, "spread", "batch", "lineage"}
         }
+        self.recorders = {name: PathRecorder() for name in self.auditors}
         self._refer(connection)
         self.caught_up = self._catch_up(connection, next_position)
 
@@ -136,6 +138,7 @@ class Audit:
                 parents=parents if self.plan.record.parent else None,
                 design=design,
             )
+            self.recorders[name].take(advanced)
             found += [
                 Raised(
                     response=name,

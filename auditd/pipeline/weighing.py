@@ -8,6 +8,7 @@ from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
+from sqlalchemy import Connection
 
 from auditd.checks.duplicates import duplicate_groups
 from auditd.errors import BadInput, NotTestable
@@ -15,6 +16,7 @@ from auditd.pipeline.asking import Document
 from auditd.pipeline.auditing import ORDER_KINDS, Audit
 from auditd.pipeline.circumstances import circumstances
 from auditd.pipeline.comparing import compare_document, losses, planned_questions
+from auditd.pipeline.evidence_paths import paths_document
 from auditd.pipeline.session import Session
 from auditd.plan import Plan
 from auditd.series.load import load_table
@@ -99,7 +101,13 @@ def refresh(session: Session) -> None:
     with session.campaign.engine.begin() as connection:
         save_display(connection, "status", now_us(), status)
         save_display(connection, "evidence", now_us(), evidence)
+        save_display(connection, "paths", now_us(), _paths(connection, session.audit))
         session.raiser.regrade(connection, table)
+
+
+def _paths(connection: Connection, audit: Audit) -> Document:
+    recorders = {name: (audit.recorders[name], auditor) for name, auditor in audit.auditors.items()}
+    return paths_document(connection, audit.epoch.epoch, audit.epoch.from_position, recorders)
 
 
 def weigh(table: RunTable, plan: Plan, response: str) -> Document | None:

@@ -1,0 +1,125 @@
+"""`report`: one self-contained page of a campaign, written whole or not at all."""
+
+from __future__ import annotations
+
+import contextlib
+import logging
+import os
+import tempfile
+import time
+from datetime import UTC, datetime
+from pathlib import Path
+
+import msgspec
+from sqlalchemy.exc import DBAPIError
+
+from auditd.errors import AuditdError, CannotCreate
+from auditd.pipeline.campaign import Campaign
+from auditd.pipeline.session import Session
+from auditd.plan import duration_s
+
+log = logging.getLogger("auditd")
+
+BUSY_SHARE = 0.05
+"""The daemon spends at most this share of its time on the page; runs are taken in between."""
+
+
+class Written(msgspec.Struct, frozen=True, kw_only=True):
+    """A page that was written."""
+
+    path: Path
+    n_bytes: int
+    took_s: float
+
+
+def report_html(campaign: Campaign, now: datetime) -> str:
+    """Return the page; the same store and the same `now` give the same bytes."""
+    from auditd.pipeline.report_facts import report_facts
+    from auditd.pipeline.report_page import content_of
+    from auditd.report.page import page_html
+
+    return page_html(content_of(report_facts(campaign, now)))
+
+
+def write_report(campaign: Campaign, path: Path, now: datetime) -> Written:
+    """Write the page, atomically: a reader sees the old page or the new one.
+
+    Raises
+    ------
+    CannotCreate
+        The file cannot be written there.
+    """
+    began = time.monotonic()
+    _writable(path)
+    data = report_html(campaign, now).encode("utf-8", "backslashreplace")
+    replace_file(path, data)
+    return Written(path=path, n_bytes=len(data), took_s=time.monotonic() - began)
+
+
+def clock_now() -> datetime:
+    """Return the clock's time, or that of SOURCE_DATE_EPOCH where a page is to be made again."""
+    stated = os.environ.get("SOURCE_DATE_EPOCH")
+    if stated is not None and stated.isascii() and stated.isdigit():
+        return datetime.fromtimestamp(int(stated), UTC)
+    return datetime.now(UTC).replace(microsecond=0)
+
+
+def _writable(path: Path) -> None:
+    """Complain before the work is done, not after."""
+    folder = path.parent
+    if path.is_dir():
+        raise CannotCreate(f"{path} is a folder; name a file with -o")
+    if not folder.is_dir():
+        raise CannotCreate(f"{path}: there is no folder {folder}; make it first")
+
+
+def replace_file(path: Path, data: bytes) -> None:
+    """Write a file beside its place, then put it in place."""
+    name = None
+    try:
+        handle, name = tempfile.mkstemp(prefix=f".{path.name}.", suffix=".part", dir=path.parent)
+        with os.fdopen(handle, "wb") as stream:
+            stream.write(data)
+            stream.flush()
+            os.fsync(stream.fileno())
+        os.chmod(name, 0o644)
+        os.replace(name, path)
+    except OSError as error:
+        if name is not None:
+            with contextlib.suppress(OSError):
+                os.unlink(name)
+        raise CannotCreate(f"{path} cannot be written: {error.strerror or error}") from error
+
+
+class ReportKeeper:
+    """Keeps the page fresh where the plan has a `[report]` section.
+
+    Parameters
+    ----------
+    session : whose campaign is reported.
+    """
+
+    def __init__(self, session: Session) -> None:
+        self._session = session
+        stated = session.plan.report
+        self._every_s = None if stated is None else duration_s(stated.every, "report.every")
+        self._path = None if stated is None else session.plan.folder / stated.path
+        self._due_at = 0.0
+        self._n_shown = -1
+
+    def refresh_if_due(self, now: float) -> bool:
+        """Write the page if it is due and runs have come; `now` is POSIX seconds. A failure is said, not raised."""
+        if self._every_s is None or self._path is None or now < self._due_at:
+            return False
+        if self._session.n_arrived == self._n_shown:
+            return False
+        began = time.monotonic()
+        try:
+            write_report(self._session.campaign, self._path, datetime.fromtimestamp(now, UTC).replace(microsecond=0))
+        except (AuditdError, DBAPIError, OSError) as error:
+            log.warning("the report was not written, it is tried again later: %s", error)
+        else:
+            self._n_shown = self._session.n_arrived
+        took_s = time.monotonic() - began
+        self._due_at = now + max(self._every_s, took_s / BUSY_SHARE)
+        return True
