@@ -103,33 +103,6 @@ def takes_over(newcomer: Key, leader: Key) -> bool:
     return newcomer[0] == "clock" and leader[0] in MEAN_KINDS - {"clock"}
 
 
-LEAD_BONUS: Final = {"drift": -0.15, "spread": -0.3, "batch": 0.2}
-LEAD_BONUS_SHARED: Final = {"serial": 0.4, "drift": -1.4}
-LEAD_BONUS_ALONE: Final = {"serial": 1.8, "drift": 0.0}
-"""Nats that a kind is given beyond its log e-value when a leader is chosen; 0 where none is named. The kind
-with fewer moving parts leads when it is close: a constant for each level (`batch`) before a path for each
-level (`drift` shared by levels), but not before a path of one level alone. Fitted by simulation to name the planted
-kind as evenly as possible over the kinds of tests/calibration; the alarm itself does not depend on it."""
-
-
-def choose_leader(log_e: Mapping[Key, float], shared: Mapping[Key, bool]) -> Key:
-    """Name the family that leads a first alarm.
-
-    Parameters
-    ----------
-    log_e : log e-values at the alarm.
-    shared : for `serial` and `drift` along a nuisance, whether all levels together show more than one alone.
-    """
-
-    def standing(key: Key) -> float:
-        if key not in shared:
-            return log_e[key] + LEAD_BONUS.get(key[0], 0.0)
-        bonus = LEAD_BONUS_SHARED if shared[key] else LEAD_BONUS_ALONE
-        return log_e[key] + bonus.get(key[0], 0.0)
-
-    return max(log_e, key=standing)
-
-
 def crossings(
     log_e: Mapping[Key, FloatArray],
     log_mean: FloatArray,
@@ -137,11 +110,11 @@ def crossings(
     threshold_first: float,
     threshold_own: float,
     raised: frozenset[Key],
-    shared_at: Callable[[int], Mapping[Key, bool]],
+    leader_at: Callable[[int], Key],
 ) -> list[Crossing]:
     """Find the alarms of a block, in order.
 
-    Before any alarm the mean of all decides; from there on each family by its own.
+    Before any alarm the mean of all decides, and `leader_at` names the family; from there on each by its own.
     """
     found: list[Crossing] = []
     begin = 0
@@ -150,7 +123,7 @@ def crossings(
         if first.size == 0:
             return []
         begin = int(first[0])
-        leader = choose_leader({key: float(path[begin]) for key, path in log_e.items()}, shared_at(begin))
+        leader = leader_at(begin)
         found.append(Crossing(at=begin, key=leader, threshold=threshold_first, first=True))
         raised = frozenset({leader})
     for key, path in log_e.items():

@@ -13,6 +13,7 @@ from auditd.sequential.alarm import Alarm, Crossing, Key, crossings
 from auditd.sequential.alarm_report import describe
 from auditd.sequential.audit_dump import AuditDump, dump_bytes, dump_from
 from auditd.sequential.book import Book
+from auditd.sequential.naming import choose_leader, shift_evidence
 from auditd.sequential.options import Options
 from auditd.sequential.run_block import RunBlock, run_block
 from auditd.sequential.scored_series import ScoredSeries
@@ -279,9 +280,14 @@ class Auditor:
             threshold_first=self.threshold_first,
             threshold_own=self.threshold_own,
             raised=frozenset(alarm.key for alarm in self._alarms),
-            shared_at=self._book.shared,
+            leader_at=lambda at: self._leader(scored_paths, at),
         )
         return paths, [self._raise(crossing, scored_paths) for crossing in found]
+
+    def _leader(self, paths: FloatArray, at: int) -> Key:
+        n_scored = self._series.n_scored - paths.shape[1] + at + 1
+        log_e = dict(zip(self.keys, paths[:, at].tolist(), strict=True))
+        return choose_leader(log_e, self._book.shared(at), shift_evidence(self._series, n_scored))
 
     def _raise(self, crossing: Crossing, paths: FloatArray) -> Alarm:
         n_scored = self._series.n_scored - paths.shape[1] + crossing.at + 1

@@ -33,7 +33,7 @@ def scored(z, *, code=None, times=None, parent_z=None):
 
 @pytest.mark.parametrize("decimals", [None, 1, 0])
 def test_scores_equal_a_direct_count_of_earlier_runs(decimals):
-    """Smoothed ranks by the definition, O(n²) (Vovk, Gammerman & Shafer 2005, section 2.2), also with ties."""
+    """Smoothed ranks by the definition, O(n²), also with ties (Vovk et al. 2005, section 2.2)."""
     rng = np.random.default_rng(3)
     n = 700
     y = rng.normal(size=n)
@@ -53,7 +53,7 @@ def test_scores_equal_a_direct_count_of_earlier_runs(decimals):
 
 @pytest.mark.parametrize(("phi", "share"), [(0.6, 1.0), (-0.4, 0.5), (0.97, 0.1), (0.997, 0.03)])
 def test_predictions_equal_statsmodels_state_space_filter(phi, share):
-    """Log densities of AR(1) plus noise against statsmodels' exact Kalman filter (SARIMAX with measurement error)."""
+    """AR(1) plus noise against statsmodels' exact Kalman filter (SARIMAX with measurement error)."""
     from statsmodels.tsa.statespace.sarimax import SARIMAX
 
     z = np.random.default_rng(5).normal(size=400)
@@ -86,7 +86,7 @@ def test_gains_are_steady_where_the_table_ends():
 
 
 def test_batch_bets_are_the_conditional_densities_of_a_multivariate_normal():
-    """Two levels' random effects: scipy's multivariate normal, conditioned run by run; the slow level taken off."""
+    """Two levels' random effects: a multivariate normal conditioned run by run, the slow level taken off."""
     rng = np.random.default_rng(6)
     z, code = rng.normal(size=12), np.tile([0, 1, 1], 4)
     bets = BatchEffects("host")
@@ -136,7 +136,7 @@ def test_spread_and_lineage_bets_are_scipy_densities():
 
 
 def test_every_bet_is_a_density_also_with_unreliable_scores():
-    """exp(log L) times the normal density integrates to 1 over the next score, whatever came before (Gauss–Hermite)."""
+    """exp(log L) times the normal density integrates to 1 over the next score (Gauss–Hermite)."""
     nodes, weights = np.polynomial.hermite_e.hermegauss(80)
     weights = weights / weights.sum()
     rng = np.random.default_rng(9)
@@ -152,7 +152,7 @@ def test_every_bet_is_a_density_also_with_unreliable_scores():
 
 
 def test_the_start_weights_sum_to_no_more_than_one():
-    """Σ 1/((t+1) ln²(t+2)) for t ≥ 1, by summation and the integral test, is below the constant that divides it."""
+    """Σ 1/((t+1) ln²(t+2)), t ≥ 1, by summation and the integral test, is below the constant dividing it."""
     t = np.arange(1.0, 2e6)
     partial = np.sum(1.0 / ((t + 1) * np.log(t + 2) ** 2))
     upper = partial + 1.0 / np.log(2e6)  # ∫ dx/(x ln² x) from 2e6 on bounds what is left
@@ -161,7 +161,7 @@ def test_the_start_weights_sum_to_no_more_than_one():
 
 
 def test_ville_bounds_the_largest_e_value_of_exchangeable_runs():
-    """Ville (1939): the mean of the e-processes ever reaches 1/α with probability at most α (binomial bound, seeded)."""
+    """Ville (1939): the mean ever reaches 1/α with probability at most α (binomial bound, seeded)."""
     reached = 0
     campaigns, alpha = 300, 0.2
     for seed in range(campaigns):

@@ -48,7 +48,7 @@ def test_intraclass_correlation_agrees_with_pingouin(rng):
     [("shift", 1.0), ("lag", 0.5), ("icc", 0.3), ("spread", 1.6), ("amplitude", 0.7), ("lineage", 0.6)],
 )
 def test_intervals_cover_what_was_planted(name, truth):
-    """200 seeded samples of 150 runs: coverage of the 95 % intervals is not below what chance allows, 0.89."""
+    """200 samples of 150 runs: coverage of the 95 % intervals is not below what chance allows, 0.89."""
     covered = 0
     for seed in range(200):
         rng = np.random.default_rng([6, seed])
