@@ -90,7 +90,7 @@ def append(folder, runs, name="runs.ndjson"):
 def runaudit(plan, *arguments, **options):
     """Run the command and return what it did."""
     return subprocess.run(
-        [sys.executable, "-m", "auditd", "--plan", str(plan), *arguments],
+        [sys.executable, "-P", "-m", "auditd", "--plan", str(plan), *arguments],
         capture_output=True,
         text=True,
         check=False,
@@ -103,7 +103,7 @@ def runaudit(plan, *arguments, **options):
 def start_daemon(plan, log):
     """Start the daemon beside the test; the caller ends it."""
     return subprocess.Popen(
-        [sys.executable, "-m", "auditd", "--plan", str(plan), "watch"],
+        [sys.executable, "-P", "-m", "auditd", "--plan", str(plan), "watch"],
         stdin=subprocess.DEVNULL,
         stdout=log,
         stderr=log,

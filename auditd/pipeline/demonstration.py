@@ -82,7 +82,7 @@ def _daemon(folder: Path) -> Iterator[subprocess.Popen[bytes]]:
     environment = os.environ | {"RUNAUDIT_KEY": KEY}
     with (folder / "daemon.log").open("wb") as log:
         process = subprocess.Popen(
-            [sys.executable, "-m", "auditd", "--plan", str(folder / "plan.toml"), "watch"],
+            [sys.executable, "-P", "-m", "auditd", "--plan", str(folder / "plan.toml"), "watch"],
             stdin=subprocess.DEVNULL,
             stdout=log,
             stderr=log,

@@ -12,7 +12,7 @@ pytestmark = [pytest.mark.slow, pytest.mark.timeout(240)]
 
 def demo(edition, keep):
     return subprocess.run(
-        [sys.executable, "-m", "auditd", "demo", "--edition", edition, "--keep", str(keep)],
+        [sys.executable, "-P", "-m", "auditd", "demo", "--edition", edition, "--keep", str(keep)],
         capture_output=True,
         text=True,
         check=False,
