@@ -36,6 +36,10 @@ class Landing:
     fails to commit, break off the iteration, and the next scan gives the batch again. A batch without
     items only moves a source: the file was renamed, touched or put back.
 
+    A file that was truncated, rotated or rewritten is given once more from its beginning. Runs that are
+    stored under the same id with the same digest are then no news; the same id with another digest is a
+    `rewrite`. Offsets are those of the file as it is now, so an offset alone never identifies a run.
+
     Parameters
     ----------
     plan : Plan

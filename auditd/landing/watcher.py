@@ -102,6 +102,7 @@ class Watcher:
         elif not self._alive():
             return self._restart()
         elif self._roots != self._present_roots():
+            self._landing.area.mounts.refresh()
             self._landing.distrust()
             return self._restart(counted=False)
         return True
