@@ -148,7 +148,7 @@ class RepeatFact(Quiet):
         n_since = tally.n - tally.n_first
         share = tally.n_repeats / max(1, n_since)
         if share >= IGNORED_SHARE:
-            some = "all" if tally.n_repeats == n_since else f"{tally.n_repeats + 1} of"
+            some = "all of" if tally.n_repeats == n_since else f"{tally.n_repeats + 1} of"
             message = (
                 f"{some} the last {counted(n_since + 1, 'run')} of cell {label} are equal to the last "
                 f"digit {self._seeds}, since {tally.first}: an ignored seed in one configuration"
