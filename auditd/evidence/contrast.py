@@ -31,7 +31,7 @@ from auditd.evidence.result import Contrast
 from auditd.evidence.solution import solve
 
 MIN_SIDE_RUNS = 2
-NO_MEMORY = 0.5  # prior probability that differences of seed blocks do not depend on each other
+NO_MEMORY = 0.55  # prior probability that differences of seed blocks do not depend on each other
 MIN_RESIDUAL_DF = 3  # runs beyond the fitted columns
 
 

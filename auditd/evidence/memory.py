@@ -21,6 +21,8 @@ MIN_LEVEL_RUNS = (
     8.0  # runs a level, on average, for time to be asked where runs of one level follow each other
 )
 MIN_HIGHER_RUNS = 50.0  # runs a level, on average, for more than an AR(1): removed means bias further lags
+MIN_FREE_RUNS = 5  # runs beyond the means, for time to be asked
+SMALLEST = 1e-24  # variance (of residuals on a scale of 1) below which only rounding is left
 MAX_STEP_CHAINS = 200  # chains that are searched for steps, the longest first
 
 
@@ -77,7 +79,7 @@ def remember(residual: Floats, level: Ints, nuisances: Mapping[str, Codes]) -> T
         higher=_higher(rest, chains, posterior)
         if len(rest) >= MIN_HIGHER_RUNS * (int(level.max()) + 1)
         else None,
-        variance=float(rest @ rest) / max(len(rest) - n_fixed, 1),
+        variance=max(float(rest @ rest) / max(len(rest) - n_fixed, 1), SMALLEST),
     )
 
 
@@ -133,7 +135,8 @@ def _fit(residual: Floats, level: Ints, steps: Steps, chains: Stretches) -> tupl
     segment, n_segments, n_levels = steps.segment, steps.n_segments, int(level.max()) + 1
     n_fixed = n_levels + steps.df
     same = level[chains.child] == level[chains.parent]
-    if len(level) < MIN_LEVEL_RUNS * n_levels and 2 * int(same.sum()) > len(same):
+    crowded = len(level) < MIN_LEVEL_RUNS * n_levels and 2 * int(same.sum()) > len(same)
+    if crowded or len(level) - n_fixed < MIN_FREE_RUNS or float(residual @ residual) <= SMALLEST:
         return none_found(), n_fixed
     many = n_levels > MAX_COLUMNS
     columns = 1 if many else n_levels

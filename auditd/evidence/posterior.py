@@ -4,7 +4,7 @@ A plug-in coefficient makes intervals too short where few effective runs are lef
 averaged over the restricted likelihood of φ (and of a random effect's share) times a prior. The priors were
 chosen for coverage and width, not for belief: φ has density ∝ (1 − φ)^(−1/5), uniform in t = ((1 −
 φ)/2)^(4/5); the share B = σ² / (σ² + m·σ²_level) of a random effect has density ∝ B^(−1/2), uniform in √B.
-For block differences, half the prior mass is on φ = 0: a mean of few differences would else pay for
+For block differences, 0.55 of the prior mass is on φ = 0: a mean of few differences would else pay for
 correlations that nothing speaks for.
 """
 

@@ -65,10 +65,11 @@ def test_coverage_under_host_effects(n_hosts, icc, interaction, crossing, level)
 @pytest.mark.parametrize("rho", [0.2, 0.8])
 def test_seed_blocks_give_the_width_that_pairing_deserves(n, rho):
     """Coverage as above, mean width within 10 % of the paired t interval."""
+    n_campaigns = 800 if n == 60 else N  # at 30 blocks the mean width needs more campaigns
     covered, width, *_ = measure(
-        lambda rng: paired(rng, n, rho, 0.0, "randomised"), N, [103, n, int(10 * rho)]
+        lambda rng: paired(rng, n, rho, 0.0, "randomised"), n_campaigns, [103, n, int(10 * rho)]
     )
-    assert covered >= least(N, 0.92 if n == 60 else 0.93)
+    assert covered >= least(n_campaigns, 0.92 if n == 60 else 0.93)
     assert 0.9 <= width <= 1.1
 
 
