@@ -1,7 +1,10 @@
 """The sequential audit: scores, bets, wealth and alarms over arrays, valid however often one looks."""
 
+from auditd.sequential.advance import Advanced, EarlierRuns
 from auditd.sequential.alarm import Alarm, Explained
-from auditd.sequential.auditor import Advanced, Auditor, EarlierRuns
+from auditd.sequential.auditor import Auditor
+from auditd.sequential.effect import Effect
+from auditd.sequential.effect_after import effect_after
 from auditd.sequential.level_order_e import LevelOrder
 from auditd.sequential.options import Options
 from auditd.sequential.rate_e import RateConcentration
@@ -14,6 +17,7 @@ __all__ = [
     "Alarm",
     "Auditor",
     "EarlierRuns",
+    "Effect",
     "Explained",
     "LevelOrder",
     "Options",
@@ -22,6 +26,7 @@ __all__ = [
     "SeedBlockBuilder",
     "SeedBlocks",
     "cells_within_stages",
+    "effect_after",
     "replay",
     "seed_blocks",
 ]

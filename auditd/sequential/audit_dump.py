@@ -26,6 +26,7 @@ class AuditDump(msgspec.Struct, kw_only=True):
     version: int = VERSION
     options: Options
     n_runs: int
+    n_primed: int
     n_scored: int
     levels: dict[str, list[str]]
     latest: list[float]

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
 
 from auditd.errors import BadInput
+from auditd.sequential.advance import Advanced, EarlierRuns
 from auditd.sequential.alarm import Alarm, Crossing, Key, crossings
 from auditd.sequential.alarm_report import describe
 from auditd.sequential.audit_dump import AuditDump, dump_bytes, dump_from
@@ -25,39 +25,6 @@ IntArray = npt.NDArray[np.int64]
 
 N_RUNS_AT_ONCE = 2048
 """Runs bet on at once: the arrays of a grid stay within a core's cache."""
-
-
-@dataclass(frozen=True, kw_only=True)
-class Advanced:
-    """What the audit says of a block of runs.
-
-    Attributes
-    ----------
-    first : index of the block's first run in the epoch.
-    scores : (n,) z, NaN where a run is not scored.
-    log_e : log e-value after each run, by (kind, along).
-    log_mean : (n,) log of the sum of the families' e-values over K: below the mean of all K of the epoch.
-    alarms : alarms raised in the block.
-    """
-
-    first: int
-    scores: FloatArray
-    log_e: dict[Key, FloatArray]
-    log_mean: FloatArray
-    alarms: tuple[Alarm, ...]
-
-
-@dataclass(frozen=True, kw_only=True)
-class EarlierRuns:
-    """Stored runs of an epoch, in order, as `Auditor.advance` takes them."""
-
-    values: npt.ArrayLike
-    cells: object
-    ids: object
-    nuisance: Mapping[str, object]
-    times: object = None
-    parents: object = None
-    design: object = None
 
 
 class Auditor:
@@ -78,6 +45,7 @@ class Auditor:
         self._book = Book(options)
         self._scorer = Scorer(options)
         self._series = ScoredSeries(options)
+        self._n_primed = 0
         self._latest = np.zeros(len(self.keys))
         self._alarms: list[Alarm] = []
 
@@ -192,6 +160,7 @@ class Auditor:
             AuditDump(
                 options=self.options,
                 n_runs=self._series.n_runs,
+                n_primed=self._n_primed,
                 n_scored=self._series.n_scored,
                 levels=self._levels_seen(),
                 latest=self._latest.tolist(),
@@ -220,7 +189,7 @@ class Auditor:
         if n_given != dump.n_runs:
             raise BadInput(f"the state covers {dump.n_runs} runs, got {n_given}")
         if runs is not None and n_given:
-            auditor._rebuild(runs)
+            auditor._rebuild(runs, dump.n_primed)
         if auditor.n_scored != dump.n_scored or auditor._levels_seen() != dump.levels:
             raise BadInput("these runs are not the ones that the state covers: scored runs or levels differ")
         auditor._latest = np.array(dump.latest)
@@ -228,10 +197,22 @@ class Auditor:
         auditor._book.restore(dump.parts)
         return auditor
 
+    @classmethod
+    def primed(cls, options: Options, runs: EarlierRuns) -> Auditor:
+        """Open an audit that bets from the next run on, with earlier runs as reference only.
+
+        For an epoch that follows an absorbed effect: earlier values are given as corrected by it, the wealth
+        starts afresh and no cell has to warm up again. Indices go on counting from the first of `runs`.
+        Values of runs that shall not be a reference are given as NaN.
+        """
+        auditor = cls(options)
+        auditor._rebuild(runs, n_primed=np.asarray(runs.values).size)
+        return auditor
+
     def _levels_seen(self) -> dict[str, list[str]]:
         return {name: list(codes) for name, codes in self._series.levels.items()}
 
-    def _rebuild(self, runs: EarlierRuns) -> None:
+    def _rebuild(self, runs: EarlierRuns, n_primed: int) -> None:
         """Rebuild reference, scores and labels from stored runs, without betting."""
         block = self._checked(
             run_block(
@@ -244,7 +225,12 @@ class Auditor:
                 design=runs.design,
             )
         )
-        self._series.take(block, self._scorer.score(block), slice(0, block.values.size))
+        scores = self._scorer.score(block)
+        if n_primed:
+            self._series.take(block, scores, slice(0, n_primed))
+            self._series.forget_scored()
+        self._series.take(block, scores, slice(n_primed, block.values.size))
+        self._n_primed = n_primed
 
     def _checked(self, block: RunBlock) -> RunBlock:
         options = self.options

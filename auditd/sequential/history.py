@@ -28,6 +28,10 @@ class Column:
         self._held[self._n : end] = values
         self._n = end
 
+    def clear(self) -> None:
+        """Hold nothing."""
+        self._n = 0
+
     @property
     def values(self) -> npt.NDArray[np.generic]:
         """What is held, as a view."""
@@ -67,6 +71,17 @@ class History:
         self._parent_reliability.extend(scored.parent_reliability)
         for name, column in self._codes.items():
             column.extend(scored.groups[name].code)
+
+    def forget_scored(self) -> None:
+        """Drop what dating looks at; the scores of all runs stay, for parents."""
+        for column in (
+            self._index,
+            self._times,
+            self._parent_z,
+            self._parent_reliability,
+            *self._codes.values(),
+        ):
+            column.clear()
 
     @property
     def z(self) -> FloatArray:

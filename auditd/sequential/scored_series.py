@@ -57,6 +57,14 @@ class ScoredSeries:
         self.history.add_scored(index, scored)
         return at, scored
 
+    def forget_scored(self) -> None:
+        """Count scored runs and levels from here on: what came before serves as reference only."""
+        self.n_scored = 0
+        for name, codes in self.levels.items():
+            codes.clear()
+            self._n_in_level[name] = np.zeros(0, dtype=np.int64)
+        self.history.forget_scored()
+
     def _group(self, name: str, block: RunBlock, at: IntArray) -> Grouping:
         labels = block.nuisance[name]
         code = self.levels[name].encode([labels[i] for i in at.tolist()])
