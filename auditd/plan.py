@@ -14,11 +14,13 @@ from typing import Annotated, Any, Literal
 import msgspec
 
 from auditd.errors import PlanError
-from auditd.records import Grade, Level
+from auditd.records import Grade, Level, level_label, normal_level
 
 AUTO_RESPONSES = ("duration", "completed")
 """Responses that are added by themselves when their fields exist."""
 _DURATION = re.compile(r"(?P<count>\d+(?:\.\d+)?)\s*(?P<unit>ms|s|m|h|d|w)")
+DURATION_MAX_S = 3652 * 86400.0
+"""Ten years: longer than any campaign, and short enough for every clock's arithmetic."""
 _UNIT_S = {"ms": 0.001, "s": 1.0, "m": 60.0, "h": 3600.0, "d": 86400.0, "w": 604800.0}
 FREE_SECTIONS = ("landing", "alerts", "silence", "store", "report", "schedule")
 """Sections that may change without an amendment; they decide nothing about the verdict."""
@@ -213,9 +215,18 @@ def duration_s(text: str, key: str = "duration") -> float:
     match = _DURATION.fullmatch(text.strip())
     if match is None:
         raise PlanError(f"{key}: {text!r} is not a duration; write a number and ms, s, m, h, d or w")
-    return float(match["count"]) * _UNIT_S[match["unit"]]
+    seconds = float(match["count"]) * _UNIT_S[match["unit"]]
+    if seconds > DURATION_MAX_S:
+        raise PlanError(f"{key}: {text!r} is longer than ten years; write a shorter one")
+    return seconds
 
 
 def cells_matching(group: dict[str, Level], cell: dict[str, Level]) -> bool:
-    """Whether a cell belongs to a comparison's group: every factor that the group names agrees."""
-    return all(cell.get(name) == level for name, level in group.items())
+    """Whether a cell belongs to a comparison's group: every factor that the group names agrees.
+
+    Levels are compared as JSON values: 1 and 1.0 are one, `true` and `"1"` others.
+    """
+    return all(
+        name in cell and level_label(normal_level(level)) == level_label(cell[name])
+        for name, level in group.items()
+    )

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import math
 import os
 import re
 import tomllib
@@ -151,8 +152,8 @@ def _name_complaints(plan: Plan) -> typing.Iterator[str]:
                 yield f"{section}.{name}: this name is the tool's own; choose another"
             seen[name] = section
     for name, response in plan.responses.items():
-        if response.margin is not None and response.margin <= 0:
-            yield f"responses.{name}.margin is {response.margin}; a margin is larger than 0"
+        if response.margin is not None and not 0 < response.margin < math.inf:
+            yield f"responses.{name}.margin is {response.margin}; a margin is a number larger than 0"
 
 
 def _reference_complaints(plan: Plan) -> typing.Iterator[str]:
