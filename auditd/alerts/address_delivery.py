@@ -43,15 +43,18 @@ def tell_address(
     except PlanError as error:
         return failed(str(error))
     posting = Posting(address=address, title=message.title, text=message.text)
-    ended = run_child(
-        [sys.executable, "-I", "-m", "auditd.alerts.posting"],
-        given=msgspec.json.encode(posting),
-        environ=clean_environment(environ, _KEPT),
-        folder=folder,
-        timeout_s=timeout_s,
-        stop=stop,
-        merge_errors=False,
-    )
+    try:
+        ended = run_child(
+            [sys.executable, "-I", "-m", "auditd.alerts.posting"],
+            given=msgspec.json.encode(posting),
+            environ=clean_environment(environ, _KEPT),
+            folder=folder,
+            timeout_s=timeout_s,
+            stop=stop,
+            merge_errors=False,
+        )
+    except OSError as error:
+        return failed(f"the sending process cannot be started: {error.strerror}")
     if ended.how == "stop":
         return STOPPED
     if ended.how == "limit":

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import os
+import re
 from pathlib import Path
 
 from sqlalchemy.engine import URL, make_url
@@ -17,6 +18,8 @@ NETWORK_FILESYSTEMS = frozenset(
     | {"fuse.sshfs", "fuse.glusterfs", "fuse.ceph", "ocfs2", "orangefs", "pvfs2"}
 )
 """Filesystems on which SQLite's shared memory does not hold between machines (sqlite.org/wal.html)."""
+_ESCAPED = re.compile(r"\\([0-7]{3})")
+"""How mountinfo writes blanks, tabs, line breaks and backslashes (proc(5))."""
 
 
 def store_url(plan: Plan) -> URL:
@@ -44,7 +47,7 @@ def store_url(plan: Plan) -> URL:
             f"store.url: {url.drivername!r} is not known; write sqlite:///audit.sqlite or postgresql+psycopg://…"
         )
     file = plan.folder / url.database
-    kind = filesystem_of(file.parent)
+    kind = filesystem_of(Path(os.path.realpath(file)).parent)
     if kind in NETWORK_FILESYSTEMS:
         raise StoreError(
             f"the store {file} is on a network filesystem ({kind}), where SQLite loses data; "
@@ -63,7 +66,7 @@ def filesystem_of(folder: Path) -> str:
     best, found = -1, "unknown"
     for line in lines:
         head, _, tail = line.partition(" - ")
-        mount = head.split()[4].replace("\\040", " ")
+        mount = _ESCAPED.sub(lambda match: chr(int(match[1], 8)), head.split()[4])
         inside = str(folder) == mount or str(folder).startswith(mount.rstrip("/") + "/")
         if inside and len(mount) >= best:
             best, found = len(mount), tail.split()[0]
