@@ -13,6 +13,13 @@ from auditd.sequential.start_weights import log_start_weight, log_unstarted
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
+N_RUNS_AT_ONCE = 256
+"""Runs whose wealths are summed as plain numbers: few enough that their logarithms span little."""
+
+LARGEST_LOG_RANGE = 600.0
+"""Nats that one sum of plain numbers may span: exp(−745) is float64's smallest number. Wider spans are summed
+in logarithms."""
+
 
 def grow_wealth(
     log_wealth: FloatArray, log_l: FloatArray, log_start: FloatArray, log_late: FloatArray
@@ -37,14 +44,32 @@ def grow_wealth(
     if log_start.size == 1:
         single: FloatArray = np.logaddexp(log_wealth[:, None], log_start + log_late) + log_l
         return single
+    path = np.empty_like(log_l)
+    for begin in range(0, log_start.size, N_RUNS_AT_ONCE):
+        part = slice(begin, begin + N_RUNS_AT_ONCE)
+        path[:, part] = _grow(log_wealth, log_l[:, part], log_start[part] + log_late)
+        log_wealth = path[:, part][:, -1]
+    return path
+
+
+def _grow(log_wealth: FloatArray, log_l: FloatArray, log_start: FloatArray) -> FloatArray:
+    """Follow the wealths over few runs: S_t = Π_{v ≤ t} L_v · (S_0 + Σ_{u ≤ t} π_u / Π_{v < u} L_v)."""
     total = np.cumsum(log_l, axis=1)
     started = np.empty((log_l.shape[0], log_l.shape[1] + 1))
     started[:, 0] = log_wealth
-    started[:, 1:] = log_start + log_late
+    started[:, 1:] = log_start
     started[:, 2:] -= total[:, :-1]
-    path: FloatArray = np.logaddexp.accumulate(started, axis=1)[:, 1:]
-    path += total
-    return path
+    top = started.max(axis=1, keepdims=True)
+    if float((top[:, 0] - started.min(axis=1)).max()) > LARGEST_LOG_RANGE:
+        grown: FloatArray = np.logaddexp.accumulate(started, axis=1)[:, 1:]
+        grown += total
+        return grown
+    started -= top
+    summed = np.cumsum(np.exp(started, out=started), axis=1)[:, 1:]
+    np.log(summed, out=summed)
+    summed += top
+    summed += total
+    return summed
 
 
 def log_sum(paths: FloatArray) -> FloatArray:
