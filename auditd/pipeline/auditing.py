@@ -2,250 +2,195 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Iterable, Iterator, Sequence
 from itertools import islice
 
-import msgspec
-import numpy as np
-from numpy.typing import NDArray
-from sqlalchemy import Connection
+from sqlalchemy import Connection, func, select
 
 from auditd.pipeline.budget import epoch_budget, shares
-from auditd.pipeline.evidence_paths import PathRecorder
+from auditd.pipeline.entries import Entries
+from auditd.pipeline.seed_tracks import SeedTracks, seed_cells
+from auditd.pipeline.tracks import Raised, Track
 from auditd.plan import AUTO_RESPONSES, Plan
-from auditd.records import NOT_STATED, Run, cell_label, level_label
-from auditd.sequential import Alarm, Auditor, Options
-from auditd.series.design import design_rows
+from auditd.sequential import Options
 from auditd.series.load import response_names
-from auditd.series.scales import to_scale
-from auditd.store.answers import Answer, stored_answers
+from auditd.store.answers import stored_answers
 from auditd.store.plans import Epoch, stored_epochs
 from auditd.store.runs import StoredRun, count_runs, stored_runs
-from auditd.store.states import Checkpoint, save_checkpoint
+from auditd.store.states import save_checkpoint, stored_checkpoint
 from auditd.store.tables import answers, runs
 
 N_RUNS_A_BLOCK = 20_000
 """Runs read from the store and audited at once, to bound memory."""
 ORDER_KINDS = ("serial", "drift", "clock")
 """Kinds that rest on the order of the runs; withheld where none can be established."""
-
-
-class Raised(msgspec.Struct, frozen=True, kw_only=True):
-    """An alarm of one response's audit, at a position of the campaign."""
-
-    response: str
-    epoch: int
-    first_position: int
-    alarm: Alarm
+EVERY_KIND = (*ORDER_KINDS, "spread", "batch", "lineage")
 
 
 class Audit:
-    """The auditors of one epoch, one a response.
+    """The audit of one epoch: a track a response, or two where seeds come in blocks.
 
     Parameters
     ----------
     plan, connection : the plan in use and its store.
     next_position : runs before it are in the store and are audited again, silently.
+    from_checkpoint : begin from the saved states, and audit again only what came after them.
     """
 
-    def __init__(self, plan: Plan, connection: Connection, next_position: int) -> None:
+    def __init__(
+        self, plan: Plan, connection: Connection, next_position: int, *, from_checkpoint: bool = True
+    ) -> None:
         self.plan = plan
-        self.epochs = stored_epochs(connection)
-        self.epoch = self.epochs[-1]
+        epochs = stored_epochs(connection)
+        self.epoch = epochs[-1]
+        in_blocks = plan.seeds.role == "block"
+        self.first_position = self.epoch.from_position if in_blocks else _first_position(epochs)
         self.withheld = withheld(plan, ordered=_is_ordered(connection))
         self.responses = response_names(plan)
-        self._asides = stored_answers(connection, answers.c.action == "set-aside")
-        self._index: dict[str, int] = {}
-        self.auditors = {
-            name: Auditor(_options(plan, self.epoch, name, self.withheld))
-            for name in self.responses
-            if set(self.withheld) < {*ORDER_KINDS, "spread", "batch", "lineage"}
-        }
-        self.recorders = {name: PathRecorder() for name in self.auditors}
-        self._refer(connection)
-        self.caught_up = self._catch_up(connection, next_position)
+        asides = stored_answers(connection, answers.c.action == "set-aside")
+        self._entries = Entries(plan, epochs, asides, self.first_position)
+        self.tracks = self._open_tracks()
+        self.seed_tracks = SeedTracks(plan, self.first_position) if in_blocks and self.tracks else None
+        covered = self._resume(connection, next_position) if from_checkpoint else self.first_position
+        if covered == self.first_position and self.epoch.scope and not in_blocks:
+            covered = self._prime(connection)
+        self.caught_up = self._catch_up(connection, covered, next_position)
 
-    def advance(self, _connection: Connection, entered: Sequence[StoredRun]) -> list[Raised]:
+    def advance(self, entered: Sequence[StoredRun]) -> list[Raised]:
         """Audit the runs that entered, in their order, and return the alarms."""
         found: list[Raised] = []
         for start in range(0, len(entered), N_RUNS_A_BLOCK):
             found += self._advance_block(entered[start : start + N_RUNS_A_BLOCK])
-        return sorted(found, key=lambda raised: (raised.alarm.index, self.responses.index(raised.response)))
+        return sorted(found, key=lambda raised: (raised.index, self.responses.index(raised.response)))
 
     def n_scored(self) -> int:
         """Return how many runs have been scored, of the response with the most."""
-        return max((auditor.n_scored for auditor in self.auditors.values()), default=0)
+        return max((track.auditor.n_scored for track in self.tracks), default=0)
+
+    def track_of(self, response: str) -> Track | None:
+        """Return the first track of a response, or None where it is not audited."""
+        return next((track for track in self.tracks if track.response == response), None)
+
+    def raised_so_far(self) -> Iterator[tuple[Track, Raised]]:
+        """Yield every alarm of the epoch with its track."""
+        for track in self.tracks:
+            for alarm in track.auditor.alarms:
+                raised = track.raised(alarm, self.epoch.epoch, self.first_position)
+                yield track, self.seed_tracks.placed(track, raised) if self.seed_tracks else raised
 
     def save(self, connection: Connection) -> None:
-        """Save the state of every auditor with the runs that it covers."""
-        for name, auditor in self.auditors.items():
-            position = self.epoch.from_position + auditor.n_runs
-            save_checkpoint(
-                connection,
-                f"audit:{name}",
-                Checkpoint(epoch=self.epoch.epoch, position=position, body=auditor.dump()),
-            )
-
-    def _refer(self, connection: Connection) -> None:
-        """Let an epoch that restarted one level only rank its runs among the earlier ones of the others."""
-        if not self.epoch.scope:
+        """Save the state of every track with the runs that it covers; seed blocks are made anew instead."""
+        if self.seed_tracks is not None:
             return
-        since = max(epoch.from_position for epoch in self.epochs if not epoch.scope)
-        earlier = stored_runs(
-            connection,
-            runs.c.position >= since,
-            runs.c.position < self.epoch.from_position,
-            order=runs.c.position,
-        )
-        for block in _blocks(earlier):
-            for name, auditor in self.auditors.items():
-                auditor.refer(
-                    self._values(block, name),
-                    self._cells(block),
-                    ids=[stored.run.id for stored in block],
-                    design=self._design(block),
-                )
+        for track in self.tracks:
+            save_checkpoint(connection, track.name, track.checkpoint(self.epoch.epoch, self.first_position))
 
-    def _catch_up(self, connection: Connection, next_position: int) -> list[Raised]:
-        placed = stored_runs(
-            connection,
-            runs.c.position >= self.epoch.from_position,
-            runs.c.position < next_position,
-            order=runs.c.position,
-        )
+    def _open_tracks(self) -> list[Track]:
+        if set(self.withheld) >= set(EVERY_KIND):
+            return []
+        parts: tuple[str, ...] = ("",)
+        if self.plan.seeds.role == "block":
+            parts = ("block means", "within blocks") if seed_cells(self.plan) else ()
+        return [
+            Track(name, part, _options(self.plan, self.epoch, name, part, self.withheld, len(parts)))
+            for name in self.responses
+            for part in parts
+        ]
+
+    def _resume(self, connection: Connection, next_position: int) -> int:
+        """Continue from saved states if all are of this epoch and one position; return what they cover."""
+        saved = [stored_checkpoint(connection, track.name) for track in self.tracks]
+        if not saved or self.seed_tracks is not None:
+            return self.first_position
+        positions = {one.position for one in saved if one is not None and one.epoch == self.epoch.epoch}
+        if None in saved or len(positions) != 1 or max(positions) > next_position:
+            return self.first_position
+        (covered,) = positions
+        if covered <= self.first_position:
+            return self.first_position
+        earlier = self._collect(connection, self.first_position, covered)
+        for track, one in zip(self.tracks, saved, strict=True):
+            if one is None or not track.resume(one, earlier.of(track.response, self.plan)):
+                self.tracks = self._open_tracks()
+                self._entries.restart()
+                return self.first_position
+        return covered
+
+    def _prime(self, connection: Connection) -> int:
+        """Let an epoch that restarted one level rank its runs among the earlier ones of the others."""
+        earlier = self._collect(connection, self.first_position, self.epoch.from_position)
+        for track in self.tracks:
+            track.prime(earlier.of(track.response, self.plan))
+        return self.epoch.from_position
+
+    def _collect(self, connection: Connection, first: int, until: int) -> Entries:
+        for block in _blocks(_placed(connection, first, until)):
+            self._entries.take(block, keep=True)
+        return self._entries
+
+    def _catch_up(self, connection: Connection, covered: int, next_position: int) -> list[Raised]:
+        self._entries.forget()
+        placed = _placed(connection, covered, next_position)
         return [raised for block in _blocks(placed) for raised in self._advance_block(block)]
 
     def _advance_block(self, block: Sequence[StoredRun]) -> list[Raised]:
-        if not block:
+        if not block or not self.tracks:
             return []
-        for stored in block:
-            self._index[stored.run.id] = (stored.position or 0) - self.epoch.from_position
-        cells = self._cells(block)
-        labels = {name: _labels(block, name) for name in self.plan.nuisance}
-        times = _times(block)
-        parents = np.array([self._index.get(stored.run.parent or "", -1) for stored in block])
-        design = self._design(block)
-        ids = [stored.run.id for stored in block]
+        entries = self._entries.take(block)
         found: list[Raised] = []
-        for name, auditor in self.auditors.items():
-            advanced = auditor.advance(
-                self._values(block, name),
-                cells,
-                ids=ids,
-                nuisance=labels,
-                times=times,
-                parents=parents if self.plan.record.parent else None,
-                design=design,
-            )
-            self.recorders[name].take(advanced)
-            found += [
-                Raised(
-                    response=name,
-                    epoch=self.epoch.epoch,
-                    first_position=self.epoch.from_position,
-                    alarm=alarm,
-                )
-                for alarm in advanced.alarms
-            ]
+        for track in self.tracks:
+            runs_of = entries.of(track.response, self.plan)
+            if self.seed_tracks is not None:
+                found += self.seed_tracks.advance(track, runs_of, block, self.epoch.epoch)
+            else:
+                found += track.advance(runs_of, self.epoch.epoch, self.first_position)
         return found
-
-    def _values(self, block: Sequence[StoredRun], response: str) -> NDArray[np.float64]:
-        """Return a response on its audited scale; NaN for runs that are not audited."""
-        raw = np.array([_audited(stored.run, response) for stored in block])
-        for k, stored in enumerate(block):
-            if self._asides and self._is_aside(stored):
-                raw[k] = np.nan
-        scale = self.plan.responses[response].scale if response in self.plan.responses else "linear"
-        return to_scale(raw, scale)
-
-    def _is_aside(self, stored: StoredRun) -> bool:
-        return any(
-            answer.from_position is not None
-            and (stored.position or 0) >= answer.from_position
-            and _in_scope(stored.run, answer)
-            for answer in self._asides
-        )
-
-    def _cells(self, block: Sequence[StoredRun]) -> list[str]:
-        """Return the labels within which runs are ranked; a restarted or absorbed level has its own."""
-        found = []
-        for stored in block:
-            run = stored.run
-            name = cell_label(run.cell)
-            if self.plan.design.allocation == "outcome":
-                name += f" @{run.stage}"
-            for epoch in self.epochs[1:]:
-                if (stored.position or 0) >= epoch.from_position and _matches(run, epoch.scope):
-                    name += f" #{epoch.epoch}"
-            found.append(name)
-        return found
-
-    def _design(self, block: Sequence[StoredRun]) -> NDArray[np.float64] | None:
-        if self.plan.baseline.kind != "formula":
-            return None
-        return design_rows(self.plan, [stored.run.cell for stored in block])
 
 
 def replayed_alarms(plan: Plan, connection: Connection) -> list[Raised]:
     """Return the alarms of the epoch in force, from its stored runs alone."""
-    return Audit(plan, connection, count_runs(connection).next_position).caught_up
+    return Audit(plan, connection, count_runs(connection).next_position, from_checkpoint=False).caught_up
 
 
 def withheld(plan: Plan, *, ordered: bool) -> tuple[str, ...]:
     """Return the kinds that cannot be asked honestly under a plan."""
     if plan.design.allocation == "outcome" and plan.design.stage is None:
-        return (*ORDER_KINDS, "spread", "batch", "lineage")
+        return EVERY_KIND
     return () if ordered else ORDER_KINDS
 
 
-def _options(plan: Plan, epoch: Epoch, response: str, left_out: tuple[str, ...]) -> Options:
-    parts = shares(plan)
+def _first_position(epochs: Sequence[Epoch]) -> int:
+    """Return where the runs begin that the epoch in force ranks among: its own, or a whole restart's."""
+    return max(epoch.from_position for epoch in epochs if not epoch.scope)
+
+
+def _options(
+    plan: Plan, epoch: Epoch, response: str, part: str, left_out: tuple[str, ...], n_parts: int
+) -> Options:
+    budget = shares(plan)
     added = response in AUTO_RESPONSES
-    share = parts.added if added else parts.responses
-    names = response_names(plan)
-    n_sharing = sum((name in AUTO_RESPONSES) == added for name in names)
+    n_sharing = sum((name in AUTO_RESPONSES) == added for name in response_names(plan))
+    in_blocks = bool(part)
     return Options(
-        nuisances=tuple(plan.nuisance),
-        baseline=plan.baseline.kind,
+        nuisances=() if part == "block means" else tuple(plan.nuisance),
+        baseline="cells" if in_blocks else plan.baseline.kind,
         has_times=plan.record.started is not None or plan.record.finished is not None,
-        has_parents=plan.record.parent is not None,
-        alarm_budget=epoch_budget(share, epoch.epoch),
-        n_responses=n_sharing,
-        response=response,
+        has_parents=plan.record.parent is not None and not in_blocks,
+        alarm_budget=epoch_budget(budget.added if added else budget.responses, epoch.epoch),
+        n_responses=n_sharing * n_parts,
+        response=f"{response} {part}".strip(),
         key=epoch.key,
         withheld=left_out,
     )
 
 
-def _audited(run: Run, response: str) -> float:
-    if response != "completed" and not run.completed:
-        return math.nan
-    return run.responses.get(response, math.nan)
-
-
-def _labels(block: Sequence[StoredRun], name: str) -> list[str]:
-    return [level_label(stored.run.nuisance.get(name, NOT_STATED)) for stored in block]
-
-
-def _times(block: Sequence[StoredRun]) -> NDArray[np.float64]:
-    stated = [stored.run.started or stored.run.finished for stored in block]
-    return np.array([math.nan if at is None else at.timestamp() for at in stated])
-
-
-def _matches(run: Run, scope: dict[str, str]) -> bool:
-    return all(level_label(run.nuisance.get(name, NOT_STATED)) == level for name, level in scope.items())
-
-
-def _in_scope(run: Run, answer: Answer) -> bool:
-    scope = {name: level for name, level in answer.scope.items() if name not in {"from", "to"}}
-    return "to" not in answer.scope and _matches(run, scope)
-
-
 def _is_ordered(connection: Connection) -> bool:
     """Whether an order can be established for the runs that are in the store."""
-    unordered = connection.execute(runs.select().where(~runs.c.ordered).limit(1)).first()
-    return unordered is None
+    return connection.execute(select(func.count()).where(~runs.c.ordered)).scalar_one() == 0
+
+
+def _placed(connection: Connection, first: int, until: int) -> Iterator[StoredRun]:
+    return stored_runs(connection, runs.c.position >= first, runs.c.position < until, order=runs.c.position)
 
 
 def _blocks(found: Iterable[StoredRun]) -> Iterator[list[StoredRun]]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from auditd.errors import BadInput, NotTestable
 from auditd.pipeline.circumstances import circumstances
-from auditd.pipeline.comparing import losses, planned_questions, touches
+from auditd.pipeline.comparing import Question, losses, planned_questions, touches
 from auditd.plan import Plan
 from auditd.records import Finding, Grade
 from auditd.series.table import RunTable
@@ -57,7 +57,7 @@ def grade_of(finding: Finding, table: RunTable, plan: Plan, loss_low: float | No
     planned = planned_questions(plan)
     if finding.response is not None:
         planned = [one for one in planned if one.response == finding.response]
-    touched = [one for one in planned if not finding.cells or touches(one, finding.cells, table)]
+    touched = [one for one in planned if _is_touched(one, finding, table, plan)]
     estimable = True
     if finding.kind in {*BY_LOSS, "confound"}:
         for response in {one.response for one in touched}:
@@ -70,6 +70,13 @@ def grade_of(finding: Finding, table: RunTable, plan: Plan, loss_low: float | No
         estimable=estimable,
         beyond_margin=_beyond_margin(finding, plan),
     )
+
+
+def _is_touched(question: Question, finding: Finding, table: RunTable, plan: Plan) -> bool:
+    """Whether a finding is about a comparison: by its cells, else by the factor that it is along."""
+    if finding.cells:
+        return touches(question, finding.cells, table)
+    return finding.along not in plan.factors or finding.along in {*question.a, *question.b}
 
 
 def _beyond_margin(finding: Finding, plan: Plan) -> bool:

@@ -50,6 +50,21 @@ class PathRecorder:
         self._highest[:, here] = np.maximum(self._highest[:, here], highest)
         self.n_runs += n
 
+    @property
+    def names(self) -> tuple[str, ...]:
+        """The mean of all, and the families, a row each."""
+        return self._names
+
+    @property
+    def highest(self) -> Paths:
+        """The highest log e-value of each stretch, shape (rows, stretches)."""
+        return self._highest
+
+    def restore(self, width: int, n_runs: int, names: tuple[str, ...], highest: bytes) -> None:
+        """Continue from what was kept."""
+        self.width, self.n_runs, self._names = width, n_runs, names
+        self._highest = np.frombuffer(highest, dtype=np.float64).reshape(len(names), -1).copy()
+
     def _widen(self) -> None:
         merged = np.maximum(self._highest[:, ::2], self._highest[:, 1::2])
         self._highest = np.full_like(self._highest, -np.inf)

@@ -10,10 +10,11 @@ from sqlalchemy import Connection
 
 from auditd.alerts.targets import targets_for
 from auditd.pipeline.asking import caution_document
-from auditd.pipeline.auditing import Raised
+from auditd.pipeline.auditing import Audit
 from auditd.pipeline.consequences import consequence_of, grade_of
 from auditd.pipeline.dates import changes, dated
 from auditd.pipeline.effects import effect_of
+from auditd.pipeline.tracks import Raised
 from auditd.plan import Plan
 from auditd.records import GRADES, Caution, Finding, Listed
 from auditd.series.load import load_table
@@ -98,8 +99,8 @@ class Raiser:
                 finding = msgspec.structs.replace(one.finding, holds=False, message=message)
                 self._store(connection, msgspec.structs.replace(one, finding=finding, state="withdrawn"))
 
-    def regrade(self, connection: Connection, table: RunTable) -> None:
-        """Store facts that have grown; estimate dependences anew from the runs after their alarms."""
+    def regrade(self, connection: Connection, table: RunTable, audit: Audit) -> None:
+        """Store facts that have grown; name and estimate dependences anew from the runs since their alarms."""
         for one in stored_cautions(connection):
             self._cautions[one.id] = one
         for finding in self._grown.values():
@@ -110,7 +111,29 @@ class Raiser:
                 continue
             n_after = int((table.positions > one.finding.index).sum())
             if n_after >= N_REGRADE:
-                self._regrade_one(connection, one, table)
+                self._regrade_one(connection, self._named_anew(one, audit, table), table)
+
+    def _named_anew(self, one: Caution, audit: Audit, table: RunTable) -> Caution:
+        """Let the family that has gathered the most evidence by now lead, among those of one cause.
+
+        At the first alarm a step on a host may look like resemblance of neighbours; later runs tell. The
+        warning keeps its id and key, and the former leader is listed.
+        """
+        best: tuple[float, Raised] | None = None
+        for track, raised in audit.raised_so_far():
+            if self._of_key.get(key_of(raised, *raised.alarm.key)) != one.id:
+                continue
+            evidence = track.auditor.log_e[raised.alarm.key]
+            if best is None or evidence > best[0]:
+                best = (evidence, raised)
+        if best is None or best[1].alarm.key == (one.finding.kind, one.finding.along):
+            return one
+        found = finding_of(best[1], table, self._plan)
+        explains = _distinct((_listed(one.finding), *one.finding.explains, *found.explains))
+        kept = tuple(other for other in explains if (other.kind, other.along) != best[1].alarm.key)
+        return msgspec.structs.replace(
+            one, finding=msgspec.structs.replace(found, key=one.finding.key, explains=kept)
+        )
 
     def _regrade_one(self, connection: Connection, one: Caution, table: RunTable) -> None:
         effect = effect_of(one.finding, table, self._plan)
@@ -169,19 +192,19 @@ class Raiser:
     def _leader(self, raised: Raised) -> Caution | None:
         if raised.alarm.under is None:
             return None
-        known = self._of_key.get(key_of(raised.epoch, raised.response, *raised.alarm.under))
+        known = self._of_key.get(key_of(raised, *raised.alarm.under))
         return None if known is None else self._cautions[known]
 
     def _take_over(self, connection: Connection, raised: Raised, finding: Finding, table: RunTable) -> bool:
         """Let a better name lead a standing warning, which keeps its id and lists the former leader."""
         kind, along = raised.alarm.replaces or ("", "")
-        known = self._of_key.get(key_of(raised.epoch, raised.response, kind, along))
+        known = self._of_key.get(key_of(raised, kind, along))
         if known is None:
             return False
         former = self._cautions[known]
         listed = (_listed(former.finding), *former.finding.explains)
         finding = msgspec.structs.replace(finding, key=former.finding.key, explains=_distinct(listed))
-        self._of_key[key_of(raised.epoch, raised.response, raised.alarm.kind, raised.alarm.along)] = known
+        self._of_key[key_of(raised, *raised.alarm.key)] = known
         self._renew(connection, former, finding, table)
         return True
 
@@ -240,28 +263,28 @@ class Raiser:
             )
 
 
-def key_of(epoch: int, response: str, kind: str, along: str) -> str:
-    """Return the key of a sequential condition: a family of one response in one epoch."""
-    return f"audit:{epoch}:{response}:{kind}:{along}"
+def key_of(raised: Raised, kind: str, along: str) -> str:
+    """Return the key of a sequential condition: a family of one response, or part of it, in one epoch."""
+    return f"audit:{raised.epoch}:{raised.response}:{raised.part}:{kind}:{along}"
 
 
 def finding_of(raised: Raised, table: RunTable, plan: Plan) -> Finding:
     """Return the finding that an alarm is, with positions of the campaign and an effect."""
-    alarm, first = raised.alarm, raised.first_position
-    at = table.ids[table.positions == first + alarm.index]
+    alarm = raised.alarm
+    at = table.ids[table.positions == raised.index]
     finding = Finding(
-        key=key_of(raised.epoch, raised.response, alarm.kind, alarm.along),
+        key=key_of(raised, *alarm.key),
         kind=alarm.kind,  # type: ignore[arg-type] # the audit's kinds are among the records'
         message="",
         along=alarm.along,
         level=alarm.level,
         response=raised.response,
         run=str(at[0]) if len(at) else None,
-        index=first + alarm.index,
+        index=raised.index,
         n=alarm.n_scored,
-        since=first + alarm.since,
-        since_low=first + alarm.since_low,
-        since_high=first + alarm.since_high,
+        since=raised.since,
+        since_low=raised.since_low,
+        since_high=raised.since_high,
         log_e=round(alarm.log_e, N_DIGITS_LOG_E),
         threshold=round(alarm.threshold, N_DIGITS_LOG_E),
         explains=tuple(

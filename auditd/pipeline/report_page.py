@@ -51,7 +51,19 @@ def content_of(facts: ReportFacts) -> Content:
 
 def _findings(findings: list[Answer]) -> DataTable:
     return DataTable(
-        headers=("response", "check", "along", "verdict", "adjusted p", "p", "effect", "runs", "null", "assumes", "source"),
+        headers=(
+            "response",
+            "check",
+            "along",
+            "verdict",
+            "adjusted p",
+            "p",
+            "effect",
+            "runs",
+            "null",
+            "assumes",
+            "source",
+        ),
         rows=tuple(_finding_row(one) for one in findings),
     )
 

@@ -66,7 +66,9 @@ def accounting_notes(facts: ReportFacts) -> tuple[str, ...]:
         f"{facts.n_runs:,} runs = {facts.n_placed:,} with a place in the order + {facts.n_late:,} late + {waiting:,} waiting.",
     ]
     if facts.n_runs != facts.table.n:
-        found.append(f"{facts.n_runs - facts.table.n:,} runs are stored but not taken up by the auditor yet; they are in no table here.")
+        found.append(
+            f"{facts.n_runs - facts.table.n:,} runs are stored but not taken up by the auditor yet; they are in no table here."
+        )
     no_time = int(np.isnan(facts.table.started).sum())
     if facts.table.n and facts.plan.record.started is None:
         found.append("No run states when it started, so nothing here is told by time.")
@@ -116,7 +118,9 @@ def _warning(one: Caution, facts: ReportFacts) -> WarningShown:
 def _answer(reply: Answer) -> str:
     scope = " ".join(f"{name}={level}" for name, level in reply.scope.items())
     begin = "" if reply.from_position is None else f", from place {reply.from_position}"
-    return f"{rfc3339(reply.answered_at)} ({reply.action}{f' {scope}' if scope else ''}{begin}): {reply.reason}"
+    return (
+        f"{rfc3339(reply.answered_at)} ({reply.action}{f' {scope}' if scope else ''}{begin}): {reply.reason}"
+    )
 
 
 def deviation_sentences(facts: ReportFacts) -> tuple[str, ...]:
@@ -126,7 +130,9 @@ def deviation_sentences(facts: ReportFacts) -> tuple[str, ...]:
         for one in facts.versions[1:]
     ]
     found += [
-        f"W{reply.caution}, {reply.action}: {_answer(reply)}" for reply in facts.answers if reply.action != "noted"
+        f"W{reply.caution}, {reply.action}: {_answer(reply)}"
+        for reply in facts.answers
+        if reply.action != "noted"
     ]
     found += [
         f"Epoch {one.epoch}, {rfc3339(one.opened_at)}, from place {one.from_position}: {one.reason}."
@@ -159,7 +165,11 @@ def _seen(body: object) -> str:
         return ""
     return "; ".join(
         f"{one.get('response')}, {one.get('b')} less {one.get('a')}: "
-        + (f"{figures(one['estimate'])} ({span(one['low'], one['high'])})" if one.get("estimable") else "not estimable")
+        + (
+            f"{figures(one['estimate'])} ({span(one['low'], one['high'])})"
+            if one.get("estimable")
+            else "not estimable"
+        )
         for one in body[:8]
     )
 
@@ -187,7 +197,15 @@ def plans_shown(facts: ReportFacts) -> list[PlanShown]:
 def epochs_table(facts: ReportFacts) -> DataTable:
     """Return the epochs with their keys, from which the audit can be made anew."""
     return DataTable(
-        headers=("epoch", "opened", "from place", "plan version", "scope", "reason", "key of the randomisers"),
+        headers=(
+            "epoch",
+            "opened",
+            "from place",
+            "plan version",
+            "scope",
+            "reason",
+            "key of the randomisers",
+        ),
         rows=tuple(
             (
                 str(one.epoch),
@@ -210,7 +228,10 @@ def repeat_lines(facts: ReportFacts) -> tuple[tuple[str, str], ...]:
         ("made by", f"auditd {__version__} on Python {platform.python_version()}"),
         ("libraries", versions),
         ("plan", facts.versions[-1].hash if facts.versions else "none taken into use yet"),
-        ("seeds", f"epochs' keys as listed; quantile envelope {SEED}; those of permutations and of sampled slopes are fixed in the release"),
+        (
+            "seeds",
+            f"epochs' keys as listed; quantile envelope {SEED}; those of permutations and of sampled slopes are fixed in the release",
+        ),
         ("audit anew", "runaudit store verify"),
         ("comparisons", "runaudit compare"),
         ("this page", f"SOURCE_DATE_EPOCH={int(facts.now.timestamp())} runaudit report"),

@@ -45,7 +45,9 @@ def _section(facts: ReportFacts, number: int, name: str) -> ResponseSection:
         sentences += [f"{remark}." for remark in weighed["remarks"]]
     sentences += _beyond_scale(facts, name)
     if len(facts.plan.nuisance) > N_NUISANCES:
-        sentences.append(f"Batch plots are drawn for the first {N_NUISANCES} of {len(facts.plan.nuisance)} nuisances.")
+        sentences.append(
+            f"Batch plots are drawn for the first {N_NUISANCES} of {len(facts.plan.nuisance)} nuisances."
+        )
     return ResponseSection(
         key=key,
         name=name,
@@ -152,7 +154,9 @@ def _path(epoch: int, stored: dict[str, Any]) -> EvidencePath:
 def _compared(facts: ReportFacts, name: str) -> Sequence[Document]:
     own = [one for one in facts.compared if one["response"] == name]
     beside = [
-        one | {"b": f"{one['b']} (with set-aside runs)"} for one in facts.compared_with_aside if one["response"] == name
+        one | {"b": f"{one['b']} (with set-aside runs)"}
+        for one in facts.compared_with_aside
+        if one["response"] == name
     ]
     return [*own, *beside]
 
@@ -162,7 +166,8 @@ def _cells(weighed: Document) -> DataTable:
     return DataTable(
         headers=("cell", "runs", "worth"),
         rows=tuple(
-            (visible(cell_label(one["cell"])), f"{one['n']:,}", figures(one["n_effective"])) for one in cells[:N_CELLS]
+            (visible(cell_label(one["cell"])), f"{one['n']:,}", figures(one["n_effective"]))
+            for one in cells[:N_CELLS]
         ),
         note=f"The first {N_CELLS} of {len(cells):,} cells." if len(cells) > N_CELLS else "",
     )

@@ -71,8 +71,14 @@ def worth_sentence(name: str, weighed: Document | None) -> str:
     """Return what a response's runs are worth."""
     if weighed is None:
         return f"{name}: too few completed runs, or results that do not vary, to say what they are worth."
-    causes = [f"{cause} (factor {figures(factor, 2)})" for cause, factor in weighed["parts"].items() if factor < 0.995]
-    lost = f"; {share(max(weighed['loss'], 0.0))} of the evidence is lost" if causes else "; no loss was found"
+    causes = [
+        f"{cause} (factor {figures(factor, 2)})"
+        for cause, factor in weighed["parts"].items()
+        if factor < 0.995
+    ]
+    lost = (
+        f"; {share(max(weighed['loss'], 0.0))} of the evidence is lost" if causes else "; no loss was found"
+    )
     by = f", to {listed(causes)}" if causes else ""
     return (
         f"{name}: {weighed['n']:,} analysed runs are worth {figures(weighed['n_effective'])} independent ones{lost}{by} "
@@ -204,7 +210,9 @@ def _evidence_paragraph(facts: ReportFacts) -> str:
             f"{'was' if len(planned) == 1 else 'were'} estimated by generalised least squares under the dependence found, with joint {level} % "
             f"intervals (Bonferroni); the comparisons were looked at {_times(len(facts.looks))} by command before this report."
         )
-    parts.append("No evidence of dependence is not proof of independence; what was not checked is listed with the results.")
+    parts.append(
+        "No evidence of dependence is not proof of independence; what was not checked is listed with the results."
+    )
     return " ".join(parts)
 
 

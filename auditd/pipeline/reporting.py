@@ -7,8 +7,10 @@ import logging
 import os
 import tempfile
 import time
+from collections.abc import Iterator
 from datetime import UTC, datetime
 from pathlib import Path
+from typing import IO
 
 import msgspec
 from sqlalchemy.exc import DBAPIError
@@ -52,7 +54,8 @@ def write_report(campaign: Campaign, path: Path, now: datetime) -> Written:
     began = time.monotonic()
     _writable(path)
     data = report_html(campaign, now).encode("utf-8", "backslashreplace")
-    replace_file(path, data)
+    with replaced_file(path) as stream:
+        stream.write(data)
     return Written(path=path, n_bytes=len(data), took_s=time.monotonic() - began)
 
 
@@ -73,22 +76,32 @@ def _writable(path: Path) -> None:
         raise CannotCreate(f"{path}: there is no folder {folder}; make it first")
 
 
-def replace_file(path: Path, data: bytes) -> None:
-    """Write a file beside its place, then put it in place."""
+@contextlib.contextmanager
+def replaced_file(path: Path) -> Iterator[IO[bytes]]:
+    """Open a file beside a place, and put it there when it is complete; after an error nothing has changed.
+
+    Raises
+    ------
+    CannotCreate
+        It cannot be written.
+    """
+    _writable(path)
     name = None
     try:
         handle, name = tempfile.mkstemp(prefix=f".{path.name}.", suffix=".part", dir=path.parent)
         with os.fdopen(handle, "wb") as stream:
-            stream.write(data)
+            yield stream
             stream.flush()
             os.fsync(stream.fileno())
         os.chmod(name, 0o644)
         os.replace(name, path)
+        name = None
     except OSError as error:
+        raise CannotCreate(f"{path} cannot be written: {error.strerror or error}") from error
+    finally:
         if name is not None:
             with contextlib.suppress(OSError):
                 os.unlink(name)
-        raise CannotCreate(f"{path} cannot be written: {error.strerror or error}") from error
 
 
 class ReportKeeper:
@@ -115,7 +128,9 @@ class ReportKeeper:
             return False
         began = time.monotonic()
         try:
-            write_report(self._session.campaign, self._path, datetime.fromtimestamp(now, UTC).replace(microsecond=0))
+            write_report(
+                self._session.campaign, self._path, datetime.fromtimestamp(now, UTC).replace(microsecond=0)
+            )
         except (AuditdError, DBAPIError, OSError) as error:
             log.warning("the report was not written, it is tried again later: %s", error)
         else:

@@ -220,7 +220,7 @@ class Session:
             findings += self.facts.placed(stored.run, stored.position or 0)
         findings += self.facts.standing()
         self.totals.n_raised += self.raiser.raise_facts(connection, findings)
-        alarms = self.audit.advance(connection, entered)
+        alarms = self.audit.advance(entered)
         self.totals.n_raised += self.raiser.raise_alarms(connection, alarms)
         self._n_since_checkpoint += len(entered)
         due = time.monotonic() - self._checkpoint_at > CHECKPOINT_EVERY_S

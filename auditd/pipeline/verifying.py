@@ -45,16 +45,17 @@ def _compare_alarms(connection: Connection, plan: Plan) -> list[str]:
     epoch = stored_epochs(connection)[-1].epoch
     anew = {}
     for alarm in replayed_alarms(plan, connection):
-        key = key_of(alarm.epoch, alarm.response, alarm.alarm.kind, alarm.alarm.along)
+        key = key_of(alarm, *alarm.alarm.key)
         anew[key] = alarm
         stored = raised.get(key)
         if stored is None or stored.kind != alarm.alarm.kind or stored.log_e is None:
             continue
-        index = alarm.first_position + alarm.alarm.index
-        if stored.index != index or not math.isclose(stored.log_e, alarm.alarm.log_e, abs_tol=TOLERANCE):
+        if stored.index != alarm.index or not math.isclose(
+            stored.log_e, alarm.alarm.log_e, abs_tol=TOLERANCE
+        ):
             complaints.append(
                 f"{key}: raised at position {stored.index} with log e {stored.log_e:.6f}, "
-                f"but the stored runs give position {index} with {alarm.alarm.log_e:.6f}"
+                f"but the stored runs give position {alarm.index} with {alarm.alarm.log_e:.6f}"
             )
     complaints += [
         f"{key}: raised, but the stored runs do not give it"

@@ -102,11 +102,11 @@ def refresh(session: Session) -> None:
         save_display(connection, "status", now_us(), status)
         save_display(connection, "evidence", now_us(), evidence)
         save_display(connection, "paths", now_us(), _paths(connection, session.audit))
-        session.raiser.regrade(connection, table)
+        session.raiser.regrade(connection, table, session.audit)
 
 
 def _paths(connection: Connection, audit: Audit) -> Document:
-    recorders = {name: (audit.recorders[name], auditor) for name, auditor in audit.auditors.items()}
+    recorders = {track.title: (track.recorder, track.auditor) for track in audit.tracks}
     return paths_document(connection, audit.epoch.epoch, audit.epoch.from_position, recorders)
 
 
@@ -168,9 +168,10 @@ def _would_see(table: RunTable, plan: Plan, response: str, audit: Audit) -> dict
     """Return the smallest effects that this design would have shown by now with probability 0.8."""
     from auditd.schedule import would_see
 
-    auditor = audit.auditors.get(response)
-    if auditor is None or auditor.n_scored == 0:
+    track = audit.track_of(response)
+    if track is None or track.auditor.n_scored == 0:
         return None
+    auditor = track.auditor
     series = table.series(plan, response)
     return would_see(
         auditor.n_scored,
