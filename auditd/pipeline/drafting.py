@@ -66,7 +66,8 @@ def draft(landing: Path, folder: Path) -> Drafted:
             readable = texts
     if not readable:
         raise BadInput(
-            f"{landing}: no result file found among {len(files)} files; known are .json, .ndjson, .jsonl, .csv, .tsv, "
+            f"{landing}: no result file found among {len(files)} files; known are .json, .ndjson, .jsonl, "
+            ".csv, .tsv, "
             ".parquet, and text lines of name=value"
         )
     landed, raws, n_unreadable = _read_all(readable, reading)
@@ -75,7 +76,8 @@ def draft(landing: Path, folder: Path) -> Drafted:
     found = judge(landed)
     if not found.circumstances.responses:
         raise BadInput(
-            f"{landing}: no column looks like a measured outcome among {', '.join(one.key for one in landed.columns[:12])}"
+            f"{landing}: no column looks like a measured outcome among "
+            f"{', '.join(one.key for one in landed.columns[:12])}"
         )
     place = _place(landing, folder, readable, files, pattern, n_unreadable, landed)
     text = plan_text(found, place)

@@ -100,7 +100,7 @@ class Raiser:
                 self._store(connection, msgspec.structs.replace(one, finding=finding, state="withdrawn"))
 
     def regrade(self, connection: Connection, table: RunTable, audit: Audit) -> None:
-        """Store facts that have grown; name and estimate dependences anew from the runs since their alarms."""
+        """Store facts that have grown; name and estimate dependences anew from runs since their alarms."""
         for one in stored_cautions(connection):
             self._cautions[one.id] = one
         for finding in self._grown.values():

@@ -62,12 +62,15 @@ def accounting_notes(facts: ReportFacts) -> tuple[str, ...]:
     kinds = ", ".join(f"{kind} {count:,}" for kind, count in facts.refused.items())
     waiting = facts.n_runs - facts.n_placed - facts.n_late
     found = [
-        f"{facts.n_runs + n_refused:,} records read = {facts.n_runs:,} runs + {n_refused:,} refused{f' ({kinds})' if kinds else ''}.",
-        f"{facts.n_runs:,} runs = {facts.n_placed:,} with a place in the order + {facts.n_late:,} late + {waiting:,} waiting.",
+        f"{facts.n_runs + n_refused:,} records read = {facts.n_runs:,} runs + {n_refused:,} "
+        f"refused{f' ({kinds})' if kinds else ''}.",
+        f"{facts.n_runs:,} runs = {facts.n_placed:,} with a place in the order + {facts.n_late:,} late + "
+        f"{waiting:,} waiting.",
     ]
     if facts.n_runs != facts.table.n:
         found.append(
-            f"{facts.n_runs - facts.table.n:,} runs are stored but not taken up by the auditor yet; they are in no table here."
+            f"{facts.n_runs - facts.table.n:,} runs are stored but not taken up by the auditor yet; they "
+            "are in no table here."
         )
     no_time = int(np.isnan(facts.table.started).sum())
     if facts.table.n and facts.plan.record.started is None:
@@ -91,13 +94,15 @@ def warnings_shown(facts: ReportFacts) -> list[WarningShown]:
 def _warning(one: Caution, facts: ReportFacts) -> WarningShown:
     finding = one.finding
     where = " ".join(part for part in (finding.along, finding.level) if part)
-    headline = f"{one.id}: {finding.kind}{f' {where}' if where else ''}{f' in {finding.response}' if finding.response else ''}"
+    headline = f"{one.id}: "
+        f"{finding.kind}{f' {where}' if where else ''}{f' in {finding.response}' if finding.response else ''}"
     effect = finding.effect
     known = (
         ("state", one.state),
         ("raised", f"{rfc3339(one.raised_at)}, at run {finding.run} (place {finding.index})" if finding.run else rfc3339(one.raised_at) or ""),
         ("since", f"place {finding.since}; not excluded: {finding.since_low} to {finding.since_high}" if finding.since is not None else ""),
-        ("evidence", f"natural log of the e-value {figures(finding.log_e)}, threshold {figures(finding.threshold)}" if finding.log_e is not None else ""),
+        ("evidence", f"natural log of the e-value {figures(finding.log_e)}, threshold "
+            f"{figures(finding.threshold)}" if finding.log_e is not None else ""),
         ("effect", f"{effect.name} {figures(effect.value)} ({span(effect.low, effect.high)})" if effect is not None else ""),
         ("evidence lost", share(one.evidence_loss) if one.evidence_loss is not None else ""),
         ("explains also", ", ".join(" ".join(part for part in (also.kind, also.along, also.level) if part) for also in finding.explains)),
@@ -126,7 +131,8 @@ def _answer(reply: Answer) -> str:
 def deviation_sentences(facts: ReportFacts) -> tuple[str, ...]:
     """Return what was done otherwise than planned, or decided while the campaign ran."""
     found = [
-        f"Plan version {one.version}, {rfc3339(one.taken_at)}, from place {one.from_position}: {one.reason or 'no reason is stored'}."
+        f"Plan version {one.version}, {rfc3339(one.taken_at)}, from place {one.from_position}: "
+        f"{one.reason or 'no reason is stored'}."
         for one in facts.versions[1:]
     ]
     found += [
@@ -141,7 +147,8 @@ def deviation_sentences(facts: ReportFacts) -> tuple[str, ...]:
     let_in = [one for one in facts.flushes if one[3] != "gather ended"]
     if let_in:
         found.append(
-            f"{sum(one[2] for one in let_in):,} runs were let into the order without waiting longer for earlier ones, at {len(let_in):,} moments."
+            f"{sum(one[2] for one in let_in):,} runs were let into the order without waiting longer for "
+            f"earlier ones, at {len(let_in):,} moments."
         )
     if facts.n_late:
         found.append(f"{facts.n_late:,} runs came after their place had passed and were never bet on.")
@@ -185,7 +192,8 @@ def plans_shown(facts: ReportFacts) -> list[PlanShown]:
         found.append(
             PlanShown(
                 version=one.version,
-                line=f"Version {one.version}, {rfc3339(one.taken_at)}, from place {one.from_position}, hash {one.hash}{reason}",
+                line=f"Version {one.version}, {rfc3339(one.taken_at)}, from place {one.from_position}, "
+                    f"hash {one.hash}{reason}",
                 changes=changes,
                 text=one.text,
             )
@@ -230,7 +238,8 @@ def repeat_lines(facts: ReportFacts) -> tuple[tuple[str, str], ...]:
         ("plan", facts.versions[-1].hash if facts.versions else "none taken into use yet"),
         (
             "seeds",
-            f"epochs' keys as listed; quantile envelope {SEED}; those of permutations and of sampled slopes are fixed in the release",
+            f"epochs' keys as listed; quantile envelope {SEED}; those of permutations and of sampled "
+            "slopes are fixed in the release",
         ),
         ("audit anew", "runaudit store verify"),
         ("comparisons", "runaudit compare"),

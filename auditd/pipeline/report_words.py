@@ -21,7 +21,8 @@ _ORDERS = {
 }
 _BASELINES = {
     "cells": "ranked within its cell among the earlier runs of that cell",
-    "pooled": "taken as its deviation from the mean of the earlier runs of its cell, and ranked among all earlier ones",
+    "pooled": "taken as its deviation from the mean of the earlier runs of its cell, and ranked among all "
+    "earlier ones",
     "formula": "taken as its recursive least-squares residual, and ranked among all earlier ones",
 }
 
@@ -81,8 +82,10 @@ def worth_sentence(name: str, weighed: Document | None) -> str:
     )
     by = f", to {listed(causes)}" if causes else ""
     return (
-        f"{name}: {weighed['n']:,} analysed runs are worth {figures(weighed['n_effective'])} independent ones{lost}{by} "
-        f"(95 % interval of the loss {100 * max(weighed['loss_low'], 0):.0f} to {100 * weighed['loss_high']:.0f} %)."
+        f"{name}: {weighed['n']:,} analysed runs are worth {figures(weighed['n_effective'])} independent "
+        f"ones{lost}{by} "
+        f"(95 % interval of the loss {100 * max(weighed['loss_low'], 0):.0f} to "
+        f"{100 * weighed['loss_high']:.0f} %)."
     )
 
 
@@ -127,7 +130,8 @@ def unchecked_sentences(facts: ReportFacts) -> tuple[str, ...]:
             ]
             if seen:
                 found.append(
-                    f"{name}: smaller effects than these may have stayed unseen, with probability 0.2 at these: {listed(seen)}"
+                    f"{name}: smaller effects than these may have stayed unseen, with probability 0.2 at "
+                    f"these: {listed(seen)}"
                 )
     return tuple(one if one.endswith(".") else f"{one}." for one in found)
 
@@ -150,7 +154,8 @@ def _runs_paragraph(facts: ReportFacts) -> str:
     ]
     if plan.factors:
         parts.append(
-            f"Varied on purpose: {listed(list(plan.factors), n_most=20)} ({_count(len(table.cell_values), 'cell')} with runs)."
+            f"Varied on purpose: {listed(list(plan.factors), n_most=20)} "
+            f"({_count(len(table.cell_values), 'cell')} with runs)."
         )
     if plan.nuisance:
         parts.append(f"Recorded as circumstances: {listed(list(plan.nuisance), n_most=20)}.")
@@ -159,7 +164,8 @@ def _runs_paragraph(facts: ReportFacts) -> str:
         parts.append(f"{_count(n_failed, 'run')} did not complete and entered no mean.")
     aside = int(table.set_aside.sum())
     parts.append(
-        f"{_count(aside, 'run')} were set aside for stated reasons; results with and without them are reported."
+        f"{_count(aside, 'run')} were set aside for stated reasons; results with and without them are "
+        "reported."
         if aside
         else "No run was set aside."
     )
@@ -181,11 +187,16 @@ def _audit_paragraph(facts: ReportFacts) -> str:
     kept = [one for one in facts.cautions if one.state != "withdrawn"]
     raised = f"{_count(len(kept), 'warning')} stand or were answered" if kept else "No warning was raised"
     return (
-        f"Independence was audited while the runs were made. In the order of {_ORDERS[order_of(plan)]}, each response was "
-        f"{_BASELINES[plan.baseline.kind]} (conformal ranks; Vovk, Gammerman & Shafer 2005). Bets against exchangeability "
-        f"asked for {listed(asked)}; their e-processes raised a warning when the mean of all reached the inverse of the alarm "
-        f"budget. If runs were exchangeable within cells, the probability of any such warning over the whole campaign was at most "
-        f"{figures(plan.campaign.alarm_budget)}, however often results were inspected (Ville 1939; Ramdas et al. 2023). "
+        f"Independence was audited while the runs were made. In the order of {_ORDERS[order_of(plan)]}, "
+        "each response was "
+        f"{_BASELINES[plan.baseline.kind]} (conformal ranks; Vovk, Gammerman & Shafer 2005). Bets against "
+        "exchangeability "
+        f"asked for {listed(asked)}; their e-processes raised a warning when the mean of all reached the "
+        "inverse of the alarm "
+        "budget. If runs were exchangeable within cells, the probability of any such warning over the "
+        "whole campaign was at most "
+        f"{figures(plan.campaign.alarm_budget)}, however often results were inspected (Ville 1939; Ramdas "
+        "et al. 2023). "
         f"{raised}{_graded(kept)}."
     )
 
@@ -200,18 +211,22 @@ def _evidence_paragraph(facts: ReportFacts) -> str:
     if worth:
         parts.append(
             "The number of independent runs that would give the cells' means as exactly was "
-            f"{listed(worth, n_most=12)}, after repeated results, lineage, batch effects and serial dependence."
+            f"{listed(worth, n_most=12)}, after repeated results, lineage, batch effects and serial "
+            "dependence."
         )
     planned = facts.compared
     if planned:
         level = figures(100 * facts.plan.campaign.confidence)
         parts.append(
             f"{_count(len(planned), 'comparison')} planned beforehand "
-            f"{'was' if len(planned) == 1 else 'were'} estimated by generalised least squares under the dependence found, with joint {level} % "
-            f"intervals (Bonferroni); the comparisons were looked at {_times(len(facts.looks))} by command before this report."
+            f"{'was' if len(planned) == 1 else 'were'} estimated by generalised least squares under the "
+            f"dependence found, with joint {level} % "
+            f"intervals (Bonferroni); the comparisons were looked at {_times(len(facts.looks))} by command "
+            "before this report."
         )
     parts.append(
-        "No evidence of dependence is not proof of independence; what was not checked is listed with the results."
+        "No evidence of dependence is not proof of independence; what was not checked is listed with the "
+        "results."
     )
     return " ".join(parts)
 

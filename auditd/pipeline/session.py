@@ -22,7 +22,7 @@ from auditd.records import Batch, Finding, Refusal, Run
 from auditd.series.placing import Placed, Placer
 from auditd.store.clock import now_us
 from auditd.store.plans import plan_versions
-from auditd.store.refusals import save_refusals, take_up_refusals
+from auditd.store.refusals import save_refusals, stored_refusals, take_up_refusals
 from auditd.store.runs import (
     ConfigRows,
     StoredRun,
@@ -97,6 +97,8 @@ class Session:
                 placed.append(stored)
         for stored in sorted(placed, key=lambda run: run.position or 0):
             findings += self.facts.placed(stored.run, stored.position or 0)
+        for kept in stored_refusals(connection, oldest_first=True):
+            findings += self.facts.refused(kept.refusal)
         return findings + self.facts.standing()
 
     def take(self, batch: Batch, *, at_once: bool = True) -> None:

@@ -17,6 +17,7 @@ from auditd.pipeline.auditing import ORDER_KINDS, Audit
 from auditd.pipeline.circumstances import circumstances
 from auditd.pipeline.comparing import compare_document, losses, planned_questions
 from auditd.pipeline.evidence_paths import paths_document
+from auditd.pipeline.order_watch import order_findings
 from auditd.pipeline.session import Session
 from auditd.plan import Plan
 from auditd.series.load import load_table
@@ -102,6 +103,7 @@ def refresh(session: Session) -> None:
         save_display(connection, "status", now_us(), status)
         save_display(connection, "evidence", now_us(), evidence)
         save_display(connection, "paths", now_us(), _paths(connection, session.audit))
+        session.raiser.raise_facts(connection, order_findings(table, plan))
         session.raiser.regrade(connection, table, session.audit)
 
 

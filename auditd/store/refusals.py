@@ -66,9 +66,12 @@ def take_up_refusals(connection: Connection) -> list[Refusal]:
     return [_refusal(row) for row in new]
 
 
-def stored_refusals(connection: Connection, limit: int | None = None) -> list[StoredRefusal]:
-    """Return refusals, the newest first."""
-    query = select(refusals).order_by(refusals.c.row.desc()).limit(limit)
+def stored_refusals(
+    connection: Connection, limit: int | None = None, *, oldest_first: bool = False
+) -> list[StoredRefusal]:
+    """Return refusals that an auditor has seen or not, the newest first unless said otherwise."""
+    row = refusals.c.row
+    query = select(refusals).order_by(row if oldest_first else row.desc()).limit(limit)
     return [
         StoredRefusal(refusal=_refusal(row), at=from_us(row.refused_us)) for row in connection.execute(query)
     ]
