@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import os
 import sys
 import traceback
@@ -15,8 +16,10 @@ from auditd.cli import (
     audit,
     compare,
     demo,
+    draft,
     evidence,
     explain,
+    export,
     gather,
     rehearse,
     report,
@@ -64,6 +67,7 @@ def main(context: click.Context, plan: str | None) -> None:
 
 
 COMMANDS = (
+    draft.draft,
     schedule.schedule,
     rehearse.rehearse,
     watch.watch,
@@ -79,6 +83,7 @@ COMMANDS = (
     compare.compare,
     explain.explain,
     report.report,
+    export.export,
     service.service,
     store.store,
     demo.demo,
@@ -116,7 +121,7 @@ def _code_of(error: BaseException) -> int:
             return EXIT_USAGE
         case click.Abort() | KeyboardInterrupt():
             return EXIT_INTERRUPTED
-        case BrokenPipeError():
+        case BrokenPipeError() | SystemExit() if _is_closed_pipe(error):
             _close_quietly()
             return 0
         case AuditdError():
@@ -124,6 +129,11 @@ def _code_of(error: BaseException) -> int:
             return error.exit_code
         case _:
             return _unexpected(error)
+
+
+def _is_closed_pipe(error: BaseException) -> bool:
+    """Whether whoever read our output has gone; click turns that into an end of its own."""
+    return isinstance(error, BrokenPipeError) or getattr(error.__context__, "errno", None) == errno.EPIPE
 
 
 def _unexpected(error: BaseException) -> int:

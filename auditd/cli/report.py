@@ -12,9 +12,14 @@ from auditd.cli.output import message
 
 @click.command(epilog="Example: runaudit report -o report.html")
 @click.option(
-    "-o", "--output", "output", type=click.Path(path_type=Path), default=Path("report.html"), show_default=True,
+    "-o",
+    "--output",
+    "output",
+    type=click.Path(path_type=Path),
+    default=Path("report.html"),
+    show_default=True,
     help="Where the page is written; an older one is replaced at once.",
-)  # fmt: skip
+)
 @click.pass_context
 def report(context: click.Context, output: Path) -> None:
     """Write one self-contained page: what the runs are worth, with every picture and its numbers."""

@@ -151,7 +151,7 @@ def _records(path: Path, reading: Plan) -> Iterator[Raw | Refusal]:
 
 
 def _pattern_of(path: Path) -> str | None:
-    """Return a regular expression for lines of `name=value` pairs, made from the names of the first such line."""
+    """Return a pattern for lines of `name=value` pairs, made from the names of the first such line."""
     try:
         with path.open(encoding="utf-8", errors="replace") as stream:
             lines = [line.rstrip("\n") for _, line in zip(range(N_LINES_TRIED), stream, strict=False)]

@@ -1,4 +1,4 @@
-"""Rows as CSV, JSON or Parquet. Numbers are exact in all of them: the shortest text that reads back the same."""
+"""Rows as CSV, JSON or Parquet. Numbers are exact: the shortest text that reads back the same."""
 
 from __future__ import annotations
 
@@ -122,9 +122,13 @@ def write_parquet(_what: str, table: Table, sink: Sink) -> int:
             "Parquet needs pyarrow: pip install 'auditd[parquet]', or choose csv or json"
         ) from error
     kinds = {
-        "text": pa.string(), "level": pa.string(), "integer": pa.int64(), "number": pa.float64(), "flag": pa.bool_(),
+        "text": pa.string(),
+        "level": pa.string(),
+        "integer": pa.int64(),
+        "number": pa.float64(),
+        "flag": pa.bool_(),
         "time": pa.timestamp("us", tz="UTC"),
-    }  # fmt: skip
+    }
     schema = pa.schema([(column.name, kinds[column.kind]) for column in table.columns])
     n = 0
     rows = iter(table.rows)

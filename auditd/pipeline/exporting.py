@@ -83,7 +83,7 @@ def _run_row(stored: StoredRun, plan: Plan, names: tuple[str, ...]) -> list[Any]
 
 
 def series_table(connection: Connection, plan: Plan) -> Table:
-    """Return each response in order, on its audited scale, with what is left when the cells' means are taken off."""
+    """Return each response in order, on its audited scale, and what is left less the cells' means."""
     table = load_table(connection, plan)
     columns = [
         Column("response", "text"),
@@ -129,7 +129,8 @@ def warnings_table(connection: Connection, _plan: Plan) -> Table:
         "id": "text", "kind": "text", "along": "text", "level": "text", "response": "text", "grade": "text",
         "state": "text", "raised_at": "text", "run": "text", "index": "integer", "n": "integer",
         "since": "integer", "since_low": "integer", "since_high": "integer", "log_e": "number",
-        "threshold": "number", "evidence_loss": "number", "message": "text", "remedy": "text", "answer": "text",
+        "threshold": "number", "evidence_loss": "number", "message": "text", "remedy": "text",
+        "answer": "text",
     }  # fmt: skip
     effect = ("name", "value", "low", "high")
     columns = [Column(name, kind) for name, kind in kinds.items()]

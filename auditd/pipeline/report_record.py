@@ -1,8 +1,9 @@
-"""The report's record: runs accounted for, warnings, deviations, looks, plans, epochs, and how to repeat it."""
+"""The report's record: runs accounted for, warnings, deviations, looks, plans, epochs, and its repetition."""
 
 from __future__ import annotations
 
 import platform
+from collections.abc import Iterator
 from importlib import metadata
 
 import numpy as np
@@ -61,11 +62,10 @@ def accounting_notes(facts: ReportFacts) -> tuple[str, ...]:
     n_refused = sum(facts.refused.values())
     kinds = ", ".join(f"{kind} {count:,}" for kind, count in facts.refused.items())
     waiting = facts.n_runs - facts.n_placed - facts.n_late
+    n, refused = facts.n_runs, f"{n_refused:,} refused{f' ({kinds})' if kinds else ''}"
     found = [
-        f"{facts.n_runs + n_refused:,} records read = {facts.n_runs:,} runs + {n_refused:,} "
-        f"refused{f' ({kinds})' if kinds else ''}.",
-        f"{facts.n_runs:,} runs = {facts.n_placed:,} with a place in the order + {facts.n_late:,} late + "
-        f"{waiting:,} waiting.",
+        f"{n + n_refused:,} records read = {n:,} runs + {refused}.",
+        f"{n:,} runs = {facts.n_placed:,} placed in the order + {facts.n_late:,} late + {waiting:,} waiting.",
     ]
     if facts.n_runs != facts.table.n:
         found.append(
@@ -82,8 +82,11 @@ def accounting_notes(facts: ReportFacts) -> tuple[str, ...]:
 
 def _scored(facts: ReportFacts, name: str) -> int | None:
     newest = max(facts.paths, key=int, default=None)
-    one = None if newest is None else facts.paths[newest].get(name)
-    return None if one is None else int(one["n_scored"])
+    kept = {} if newest is None else facts.paths[newest]
+    return max(
+        (one["n_scored"] for title, one in kept.items() if title in {name} or title.startswith(f"{name} (")),
+        default=None,
+    )
 
 
 def warnings_shown(facts: ReportFacts) -> list[WarningShown]:
@@ -94,30 +97,47 @@ def warnings_shown(facts: ReportFacts) -> list[WarningShown]:
 def _warning(one: Caution, facts: ReportFacts) -> WarningShown:
     finding = one.finding
     where = " ".join(part for part in (finding.along, finding.level) if part)
-    headline = f"{one.id}: "
-        f"{finding.kind}{f' {where}' if where else ''}{f' in {finding.response}' if finding.response else ''}"
-    effect = finding.effect
-    known = (
-        ("state", one.state),
-        ("raised", f"{rfc3339(one.raised_at)}, at run {finding.run} (place {finding.index})" if finding.run else rfc3339(one.raised_at) or ""),
-        ("since", f"place {finding.since}; not excluded: {finding.since_low} to {finding.since_high}" if finding.since is not None else ""),
-        ("evidence", f"natural log of the e-value {figures(finding.log_e)}, threshold "
-            f"{figures(finding.threshold)}" if finding.log_e is not None else ""),
-        ("effect", f"{effect.name} {figures(effect.value)} ({span(effect.low, effect.high)})" if effect is not None else ""),
-        ("evidence lost", share(one.evidence_loss) if one.evidence_loss is not None else ""),
-        ("explains also", ", ".join(" ".join(part for part in (also.kind, also.along, also.level) if part) for also in finding.explains)),
-    )  # fmt: skip
+    of = f" in {finding.response}" if finding.response else ""
     number = caution_number(one.id)
     return WarningShown(
         id=one.id,
         grade=one.grade,
         state=one.state,
-        headline=headline,
+        headline=f"{one.id}: {finding.kind}{f' {where}' if where else ''}{of}",
         message=f"{finding.message}.",
         remedy=one.remedy,
-        facts=tuple((name, text) for name, text in known if text),
+        facts=tuple((name, text) for name, text in _known(one) if text),
         answers=tuple(_answer(reply) for reply in facts.answers if reply.caution == number),
     )
+
+
+def _known(one: Caution) -> Iterator[tuple[str, str]]:
+    """Yield what is known of a warning, by name; empty where it does not apply."""
+    finding = one.finding
+    effect = finding.effect
+    yield "state", one.state
+    at = f", at run {finding.run}{_at(finding.index)}" if finding.run else ""
+    yield "raised", f"{rfc3339(one.raised_at)}{at}"
+    if finding.since is not None:
+        yield "since", f"place {finding.since}; not excluded: {finding.since_low} to {finding.since_high}"
+    if finding.log_e is not None:
+        threshold = figures(finding.threshold)
+        yield "evidence", f"natural log of the e-value {figures(finding.log_e)}, threshold {threshold}"
+    if effect is not None:
+        yield "effect", f"{effect.name} {figures(effect.value)} ({span(effect.low, effect.high)})"
+    if one.evidence_loss is not None:
+        yield "evidence lost", share(one.evidence_loss)
+    yield (
+        "explains also",
+        ", ".join(
+            " ".join(part for part in (also.kind, also.along, also.level) if part)
+            for also in finding.explains
+        ),
+    )
+
+
+def _at(index: int | None) -> str:
+    return "" if index is None else f" (place {index})"
 
 
 def _answer(reply: Answer) -> str:
@@ -193,7 +213,7 @@ def plans_shown(facts: ReportFacts) -> list[PlanShown]:
             PlanShown(
                 version=one.version,
                 line=f"Version {one.version}, {rfc3339(one.taken_at)}, from place {one.from_position}, "
-                    f"hash {one.hash}{reason}",
+                f"hash {one.hash}{reason}",
                 changes=changes,
                 text=one.text,
             )
@@ -236,11 +256,7 @@ def repeat_lines(facts: ReportFacts) -> tuple[tuple[str, str], ...]:
         ("made by", f"auditd {__version__} on Python {platform.python_version()}"),
         ("libraries", versions),
         ("plan", facts.versions[-1].hash if facts.versions else "none taken into use yet"),
-        (
-            "seeds",
-            f"epochs' keys as listed; quantile envelope {SEED}; those of permutations and of sampled "
-            "slopes are fixed in the release",
-        ),
+        ("seeds", f"epochs' keys as listed; quantile envelope {SEED}; all others are fixed in the release"),
         ("audit anew", "runaudit store verify"),
         ("comparisons", "runaudit compare"),
         ("this page", f"SOURCE_DATE_EPOCH={int(facts.now.timestamp())} runaudit report"),

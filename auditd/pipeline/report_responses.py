@@ -71,7 +71,7 @@ def _pictures(facts: ReportFacts, name: str, observed: Observed | None) -> list[
     along = next(iter(facts.plan.nuisance), None)
     found = [
         run_chart(observed, along),
-        evidence_chart(name, observed.key, _paths(facts, name), observed.marks),
+        *_evidence(facts, name, observed),
     ]
     if name != "completed":
         found += [autocorrelation_chart(observed), lag_chart(observed), quantile_chart(observed)]
@@ -130,11 +130,29 @@ def _mark(facts: ReportFacts, one: Caution) -> Mark:
     )
 
 
-def _paths(facts: ReportFacts, name: str) -> list[EvidencePath]:
+def _evidence(facts: ReportFacts, name: str, observed: Observed) -> list[Picture]:
+    """Return the e-processes of a response, and of its parts where it is audited in parts."""
+    titles = {title: None for epoch in facts.paths.values() for title in epoch if _belongs(title, name)}
     return [
-        _path(int(epoch), facts.paths[epoch][name])
+        evidence_chart(
+            title,
+            observed.key if number == 0 else f"{observed.key}-part-{number}",
+            _paths(facts, title),
+            observed.marks,
+        )
+        for number, title in enumerate(titles or {name: None})
+    ]
+
+
+def _belongs(title: str, name: str) -> bool:
+    return title == name or title.startswith(f"{name} (")
+
+
+def _paths(facts: ReportFacts, title: str) -> list[EvidencePath]:
+    return [
+        _path(int(epoch), facts.paths[epoch][title])
         for epoch in sorted(facts.paths, key=int)
-        if name in facts.paths[epoch]
+        if title in facts.paths[epoch]
     ]
 
 

@@ -1,4 +1,4 @@
-"""The report's sentences: the answer, what stands in the way, what was not checked, and a methods paragraph."""
+"""The report's sentences: the answer, what stands in the way, what was not checked, what was done."""
 
 from __future__ import annotations
 
@@ -19,6 +19,11 @@ _ORDERS = {
     "started": "their start",
     "arrival": "their arrival",
 }
+_EFFECTS = (
+    ("drift", "a drift", " standard deviations"),
+    ("icc", "an intraclass correlation", ""),
+    ("ar", "a lag-1 correlation", ""),
+)
 _BASELINES = {
     "cells": "ranked within its cell among the earlier runs of that cell",
     "pooled": "taken as its deviation from the mean of the earlier runs of its cell, and ranked among all "
@@ -116,24 +121,31 @@ def unchecked_sentences(facts: ReportFacts) -> tuple[str, ...]:
     """Return what was not checked, and what would not have been seen."""
     found = list(facts.evidence.get("not_checked") or ["nothing has been weighed yet; run `runaudit gather`"])
     found += [sentence for sentence in facts.not_asked if sentence not in found]
+    return tuple(_sentence(one) for one in [*found, *_unseen(facts)])
+
+
+def _unseen(facts: ReportFacts) -> list[str]:
+    """Return the effects that would have stayed unseen with probability 0.2, responses alike together."""
+    alike: dict[str, list[str]] = {}
     for name, shown in (facts.status.get("responses") or {}).items():
-        would = shown.get("would_see")
-        if would:
-            seen = [
-                f"{words} of {figures(would.get(key))}"
-                for key, words in (
-                    ("drift", "a drift, in standard deviations,"),
-                    ("icc", "an intraclass correlation"),
-                    ("ar", "a lag-1 correlation"),
-                )
-                if would.get(key) is not None
-            ]
-            if seen:
-                found.append(
-                    f"{name}: smaller effects than these may have stayed unseen, with probability 0.2 at "
-                    f"these: {listed(seen)}"
-                )
-    return tuple(one if one.endswith(".") else f"{one}." for one in found)
+        would = shown.get("would_see") or {}
+        effects = [
+            f"{words} of {figures(would[key], 2)}{unit}"
+            for key, words, unit in _EFFECTS
+            if would.get(key) is not None
+        ]
+        if effects:
+            alike.setdefault(listed(effects), []).append(name)
+    return [
+        f"{listed(names)}: smaller effects may have stayed unseen. With probability 0.8 this design would "
+        f"have shown {effects}"
+        for effects, names in alike.items()
+    ]
+
+
+def _sentence(text: str) -> str:
+    """Return a text with a full stop; a name at its beginning stays as it is written."""
+    return text if text.endswith((".", "!", "?")) else f"{text}."
 
 
 def methods_paragraphs(facts: ReportFacts) -> tuple[str, ...]:

@@ -121,7 +121,10 @@ class ReportKeeper:
         self._n_shown = -1
 
     def refresh_if_due(self, now: float) -> bool:
-        """Write the page if it is due and runs have come; `now` is POSIX seconds. A failure is said, not raised."""
+        """Write the page if it is due and runs have come; a failure is said, not raised.
+
+        `now` is POSIX seconds.
+        """
         if self._every_s is None or self._path is None or now < self._due_at:
             return False
         if self._session.n_arrived == self._n_shown:

@@ -46,7 +46,8 @@ def autocorrelation_chart(observed: Observed) -> Picture:
         title="Autocorrelation",
         finding=finding,
         caption=(
-            "Correlation of runs with the runs so many places before. Dashed: ± 1.96/√n, between which 19 of 20 "
+            "Correlation of runs with the runs so many places before. Dashed: ± 1.96/√n, between which 19 "
+            "of 20 "
             "lags of independent runs lie (each lag by itself). Source: Bartlett (1946)."
         ),
         svg=drawn(
@@ -58,7 +59,12 @@ def autocorrelation_chart(observed: Observed) -> Picture:
         table=DataTable(
             headers=("lag", "correlation", "lower limit", "upper limit"),
             rows=tuple(
-                (str(k), figures(float(found.r[k])), figures(float(found.low[k])), figures(float(found.high[k])))
+                (
+                    str(k),
+                    figures(float(found.r[k])),
+                    figures(float(found.low[k])),
+                    figures(float(found.high[k])),
+                )
                 for k in range(1, lags + 1)
             ),
             note="Limits: Bartlett's, of the true correlation at each lag by itself.",

@@ -39,7 +39,9 @@ def batch_chart(observed: Observed, nuisance: str) -> Picture:
     if observed.is_constant:
         return undrawn(name, title, "the results are constant within every cell")
     if len(present) < 2:
-        return undrawn(name, title, f"all runs have one level of {visible(nuisance)}; its effect cannot be seen")
+        return undrawn(
+            name, title, f"all runs have one level of {visible(nuisance)}; its effect cannot be seen"
+        )
     levels = _levels(y, codes, coded.levels)
     try:
         found = one_way(y, codes)
@@ -52,9 +54,11 @@ def batch_chart(observed: Observed, nuisance: str) -> Picture:
         title=title,
         finding=finding,
         caption=(
-            "Bars: lowest to highest run; boxes: middle half; points: means, less the cells' own levels. ICC: one-way analysis of "
+            "Bars: lowest to highest run; boxes: middle half; points: means, less the cells' own levels. "
+            "ICC: one-way analysis of "
             "variance; where cells and levels do not meet, it mixes both."
-            + ("" if len(some) == len(levels) else f" {len(some)} of {len(levels):,} levels: lowest and highest means.")
+            + ("" if len(some) == len(levels) else f" {len(some)} of {len(levels):,} levels: lowest and "
+                "highest means.")
         ),
         svg=drawn(
             lambda axes: _draw(axes, some, observed),
@@ -63,7 +67,9 @@ def batch_chart(observed: Observed, nuisance: str) -> Picture:
             finding=finding,
         ),
         table=DataTable(
-            headers=(visible(nuisance), "runs", "mean", "lowest", "lower quartile", "upper quartile", "highest"),
+            headers=(
+                visible(nuisance), "runs", "mean", "lowest", "lower quartile", "upper quartile", "highest",
+            ),
             rows=tuple(
                 (
                     visible(level), f"{n:,}", figures(float(five[2])), figures(float(five[0])),
@@ -98,8 +104,10 @@ def _finding(found: OneWay, levels: list[Level], nuisance: str) -> str:
     low = min(levels, key=lambda level: float(level[2][2]))
     high = max(levels, key=lambda level: float(level[2][2]))
     return (
-        f"Intraclass correlation {figures(found.icc)} (95 % interval {span(found.icc_low, found.icc_high)}) over "
-        f"{len(levels):,} levels of {visible(nuisance)}. Lowest mean: {short(low[0])} at {figures(float(low[2][2]))} "
+        f"Intraclass correlation {figures(found.icc)} (95 % interval "
+        f"{span(found.icc_low, found.icc_high)}) over "
+        f"{len(levels):,} levels of {visible(nuisance)}. Lowest mean: {short(low[0])} at "
+        f"{figures(float(low[2][2]))} "
         f"({low[1]:,} runs); highest: {short(high[0])} at {figures(float(high[2][2]))} ({high[1]:,} runs)."
     )
 

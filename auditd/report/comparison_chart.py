@@ -37,7 +37,8 @@ def comparison_chart(name: str, key: str, compared: Sequence[Compared]) -> Pictu
         title=title,
         finding=visible(finding),
         caption=(
-            "Naive: as if all runs were independent. Honest: under the dependence found, for one planned look. At any look: holds "
+            "Naive: as if all runs were independent. Honest: under the dependence found, for one planned "
+            "look. At any look: holds "
             "however often anyone looks. Shaded: the margin within which a difference does not matter."
         ),
         svg=drawn(
@@ -69,20 +70,27 @@ def _draw(axes: Axes, shown: Sequence[Compared]) -> None:
             middle = (one[low] + one[high]) / 2 if words == "naive" else one["estimate"]
             axes.plot(middle, y, marker, color=colour, ms=5, label=words if k == 0 else None)
     axes.set_yticks(
-        [-k for k in range(len(shown))], [f"{short(one['b'], 30)}\nless {short(one['a'], 26)}" for one in shown]
+        [-k for k in range(len(shown))],
+        [f"{short(one['b'], 30)}\nless {short(one['a'], 26)}" for one in shown],
     )
     axes.tick_params(axis="y", length=0, labelsize=9.5)
     axes.set_ylim(-len(shown) + 0.5, 0.5)
     axes.set_xlabel("difference on the audited scale")
     axes.legend(
-        loc="lower left", bbox_to_anchor=(-0.01, 1.0), ncols=3, borderaxespad=0.2, handletextpad=0.3, columnspacing=1.2
+        loc="lower left",
+        bbox_to_anchor=(-0.01, 1.0),
+        ncols=3,
+        borderaxespad=0.2,
+        handletextpad=0.3,
+        columnspacing=1.2,
     )
 
 
 def _table(compared: Sequence[Compared]) -> DataTable:
     return DataTable(
         headers=(
-            "comparison", "", "estimate", "honest interval", "at any look", "naive interval", "confidence", "runs",
+            "comparison", "", "estimate", "honest interval", "at any look", "naive interval", "confidence",
+            "runs",
             "worth", "Hedges' g", "margin", "verdict",
         ),
         rows=tuple(_row(one) for one in compared),
@@ -98,10 +106,16 @@ def _row(one: Compared) -> tuple[str, ...]:
         span(one["low"], one["high"], 4),
         span(one["low_any"], one["high_any"], 4),
         span(one["naive_low"], one["naive_high"], 4),
-        "–" if one["confidence"] is None else share(one["confidence"]) if one["confidence"] in {0.9, 0.95, 0.99} else f"{100 * one['confidence']:.2f} %",
+        "–"
+        if one["confidence"] is None
+        else share(one["confidence"])
+        if one["confidence"] in {0.9, 0.95, 0.99}
+        else f"{100 * one['confidence']:.2f} %",
         "–" if one["n"] is None else f"{one['n']:,}",
         figures(one["n_effective"]),
-        f"{figures(one['hedges_g'])} ({span(one['g_low'], one['g_high'])})" if one["hedges_g"] is not None else "–",
+        f"{figures(one['hedges_g'])} ({span(one['g_low'], one['g_high'])})"
+        if one["hedges_g"] is not None
+        else "–",
         figures(one["margin"]),
         "cannot be estimated" if not one["estimable"] else one["verdict"] or "no margin stated",
     )

@@ -49,7 +49,9 @@ def evidence_chart(name: str, key: str, paths: Sequence[EvidencePath], marks: Se
     title = "Evidence over the campaign"
     drawn_paths = [path for path in paths if path.mean]
     if not drawn_paths:
-        return undrawn(f"{key}-evidence", title, "no run has been scored, or this is withheld (see what was not checked)")
+        return undrawn(
+            f"{key}-evidence", title, "no run has been scored, or this is withheld (see what was not checked)"
+        )
     leaders = _leaders(drawn_paths)
     finding = _finding(drawn_paths, leaders)
     return Picture(
@@ -57,9 +59,12 @@ def evidence_chart(name: str, key: str, paths: Sequence[EvidencePath], marks: Se
         title=title,
         finding=finding,
         caption=(
-            "Evidence against independence on a logarithmic scale: 2 means 100 to 1. Black: mean of all that is asked; the first "
-            "warning comes when it reaches the lower dashed line, further ones when a family reaches the upper. If runs were "
-            "exchangeable, the chance that it is ever reached is at most the alarm budget, however often anyone looks (Ville 1939). "
+            "Evidence against independence on a logarithmic scale: 2 means 100 to 1. Black: mean of all "
+            "that is asked; the first "
+            "warning comes when it reaches the lower dashed line, further ones when a family reaches the "
+            "upper. If runs were "
+            "exchangeable, the chance that it is ever reached is at most the alarm budget, however often "
+            "anyone looks (Ville 1939). "
             "Each point is the highest value of its stretch."
         ),
         svg=drawn(
@@ -90,13 +95,15 @@ def _finding(paths: Sequence[EvidencePath], leaders: list[str]) -> str:
         top = max(path.mean)
         if reached is None:
             parts.append(
-                f"{epoch} mean evidence never reached its threshold of {figures(path.threshold_first / LN_10, 2)}; "
+                f"{epoch} mean evidence never reached its threshold of "
+                f"{figures(path.threshold_first / LN_10, 2)}; "
                 f"its highest value was {figures(top / LN_10, 2)}."
             )
         else:
             begin = path.first + reached * path.width
             parts.append(
-                f"{epoch} mean evidence reached its threshold of {figures(path.threshold_first / LN_10, 2)} between places "
+                f"{epoch} mean evidence reached its threshold of "
+                f"{figures(path.threshold_first / LN_10, 2)} between places "
                 f"{begin} and {begin + path.width - 1}, and rose to {figures(top / LN_10, 3)}."
             )
     if leaders:
@@ -117,15 +124,24 @@ def _draw(axes: Axes, paths: Sequence[EvidencePath], leaders: list[str], marks: 
                     linestyle=DASHES[k % len(DASHES)],
                     label=short(family, 26) if number == 0 else None,
                 )
-        axes.plot(ends, [value / LN_10 for value in path.mean], color=INK, lw=2.0, label="mean of all" if number == 0 else None)
+        axes.plot(
+            ends,
+            [value / LN_10 for value in path.mean],
+            color=INK,
+            lw=2.0,
+            label="mean of all" if number == 0 else None,
+        )
         for threshold in (path.threshold_first, path.threshold_own):
-            axes.plot([path.first, ends[-1]], [threshold / LN_10] * 2, color=ORANGE, lw=1.2, linestyle=(0, (4, 3)))
+            axes.plot(
+                [path.first, ends[-1]], [threshold / LN_10] * 2, color=ORANGE, lw=1.2, linestyle=(0, (4, 3))
+            )
         if number:
             axes.axvline(path.first, color=INK, lw=0.8, linestyle=(0, (1, 2)))
     for mark in marks:
         if mark.raised is not None:
             axes.annotate(
-                short(mark.label, 6), (mark.raised, 0.97), xycoords=("data", "axes fraction"), ha="center", va="top",
+                short(mark.label, 6), (mark.raised, 0.97),
+                xycoords=("data", "axes fraction"), ha="center", va="top",
                 fontsize=9.5, fontweight="bold",
             )  # fmt: skip
     lowest = min(0.0, *(min(path.mean) / LN_10 for path in paths))

@@ -74,7 +74,7 @@ def drawn(
 
     width, height = size_pt or (WIDE_PT if wide else NARROW_PT)
     stream = io.StringIO()
-    with mpl.rc_context(_SETTINGS), _quiet():
+    with mpl.rc_context(_SETTINGS), _quiet():  # type: ignore[arg-type] # keys are the library's own
         figure = Figure(figsize=(width / POINTS_AN_INCH, height / POINTS_AN_INCH))
         axes = figure.add_axes(
             (left_pt / width, 44 / height, 1 - (left_pt + 12) / width, 1 - (44 + 26) / height)

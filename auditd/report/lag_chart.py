@@ -41,13 +41,15 @@ def lag_chart(observed: Observed) -> Picture:
     how = (
         "Each point is a pair of neighbours."
         if len(before) <= N_POINTS_MAX
-        else f"{len(before):,} pairs counted in squares; the area of a mark grows with its count, single pairs stay visible."
+        else f"{len(before):,} pairs counted in squares; the area of a mark grows with its count, single "
+        "pairs stay visible."
     )
     return Picture(
         name=name,
         title="Lag plot",
         finding=finding,
-        caption=f"{how} Line: mean of the next run by slices of the earlier one; flat when runs do not remember.",
+        caption=f"{how} Line: mean of the next run by slices of the earlier one; flat when runs do not "
+        "remember.",
         svg=drawn(
             lambda axes: _draw(axes, before, after, slices),
             name=name,
@@ -67,34 +69,34 @@ def lag_chart(observed: Observed) -> Picture:
 
 def _slices(before: Floats, after: Floats) -> list[tuple[float, int, float, float, float]]:
     order = np.argsort(before, kind="stable")
-    found = []
-    for part in np.array_split(order, min(N_SLICES, max(len(order) // 10, 2))):
-        found.append(
-            (
-                float(before[part].mean()),
-                len(part),
-                float(after[part].mean()),
-                float(after[part].min()),
-                float(after[part].max()),
-            )
+    return [
+        (
+            float(before[part].mean()),
+            len(part),
+            float(after[part].mean()),
+            float(after[part].min()),
+            float(after[part].max()),
         )
-    return found
+        for part in np.array_split(order, min(N_SLICES, max(len(order) // 10, 2)))
+    ]
 
 
 def _draw(
     axes: Axes, before: Floats, after: Floats, slices: list[tuple[float, int, float, float, float]]
 ) -> None:
     if len(before) <= N_POINTS_MAX:
-        axes.plot(before, after, "o", ms=2.6, markerfacecolor="none", markeredgecolor=BLUE, markeredgewidth=0.7)
+        axes.plot(
+            before, after, "o", ms=2.6, markerfacecolor="none", markeredgecolor=BLUE, markeredgewidth=0.7
+        )
     else:
         counts, xs, ys = np.histogram2d(before, after, bins=N_SQUARES)
         i, j = np.nonzero(counts)
-        size = 1.5 + 60.0 * counts[i, j] / counts.max()
+        size = 4.0 + 80.0 * counts[i, j] / counts.max()
         axes.scatter((xs[i] + xs[i + 1]) / 2, (ys[j] + ys[j + 1]) / 2, s=size, marker="s", color=BLUE, lw=0)
     axes.axhline(0.0, color=MUTED, lw=0.8)
     axes.axvline(0.0, color=MUTED, lw=0.8)
-    xs = [one[0] for one in slices]
-    axes.plot(xs, [one[2] for one in slices], color=INK, lw=3.2)
-    axes.plot(xs, [one[2] for one in slices], color=ORANGE, lw=1.8)
+    earlier = [one[0] for one in slices]
+    axes.plot(earlier, [one[2] for one in slices], color=INK, lw=3.2)
+    axes.plot(earlier, [one[2] for one in slices], color=ORANGE, lw=1.8)
     axes.set_xlabel("deviation of a run")
     axes.set_ylabel("deviation of the next run")

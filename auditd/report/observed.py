@@ -16,7 +16,7 @@ Flags = NDArray[np.bool_]
 
 @dataclass(frozen=True, kw_only=True)
 class Mark:
-    """A warning's place: since when, the first and last run that cannot be excluded, and when it was raised."""
+    """A warning's place: since when, the runs that cannot be excluded, and when it was raised."""
 
     label: str
     since: float | None
@@ -29,9 +29,9 @@ class Mark:
 class Observed:
     """A response over n runs in order.
 
-    `place` (n,) in the campaign's order, counted from 0; `deviation` (n,) from the cells' means, on the audited
-    scale, finite; `aside` (n,) marks runs that an answer set aside, which enter no mean; `worth` independent
-    runs a run, at most 1; `n_cells` cells with runs; `axis` names the deviation with scale and unit.
+    `place` (n,) in the campaign's order, counted from 0; `deviation` (n,) from the cells' means, on the
+    audited scale, finite; `aside` (n,) marks runs that an answer set aside, which enter no mean; `worth`
+    independent runs a run, at most 1; `n_cells` cells with runs; `axis` names the deviation with scale and unit.
     """
 
     name: str

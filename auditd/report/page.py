@@ -29,7 +29,7 @@ def page_html(content: Content) -> str:
         page=content,
         style=Markup(style),  # noqa: S704 - our own file
         policy=POLICY.format(digest=digest),
-        drawing=Markup,  # noqa: S704 - drawings made by svg_cleaning, in which all text is escaped
+        drawing=Markup,  # drawings made by svg_cleaning, in which all text is escaped
     )
 
 

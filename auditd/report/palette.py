@@ -1,4 +1,4 @@
-"""Colours as roles: a drawing names a role, the page's style sheet gives it its colour in light, dark and print.
+"""Colours as roles: a drawing names one, the page's style sheet gives it a colour in light, dark and print.
 
 The drawing library writes colours as hexadecimal numbers, so each role has a number that nobody would draw
 with; `svg_cleaning` turns it into a class. The hues are those of Okabe & Ito (2008), Color Universal Design,

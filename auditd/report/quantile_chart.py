@@ -40,10 +40,17 @@ def quantile_chart(observed: Observed) -> Picture:
         title=title,
         finding=finding,
         caption=(
-            "Ordered deviations from the cells' means against those of a normal law, in standard deviations judged by the "
-            "quartiles. Shaded: 19 of 20 normal samples stay inside everywhere (equal local levels; Aldor-Noiman "
-            "et al. 2013), if runs are independent and spread alike in all cells. The sequential audit does not rest on this."
-            + ("" if len(envelope.ranks) == n else f" {len(envelope.ranks)} of {n:,} order statistics, all extremes.")
+            "Ordered deviations from the cells' means against those of a normal law, in standard "
+            "deviations judged by the "
+            "quartiles. Shaded: 19 of 20 normal samples stay inside everywhere (equal local levels; "
+            "Aldor-Noiman "
+            "et al. 2013), if runs are independent and spread alike in all cells. The sequential audit "
+            "does not rest on this."
+            + (
+                ""
+                if len(envelope.ranks) == n
+                else f" {len(envelope.ranks)} of {n:,} order statistics, all extremes."
+            )
         ),
         svg=drawn(
             lambda axes: _draw(axes, envelope, units),
@@ -79,7 +86,13 @@ def _draw(axes: Axes, envelope: Envelope, units: Floats) -> None:
     ends = envelope.quantiles[[0, -1]]
     axes.plot(ends, ends, color=INK, lw=1.0)
     axes.plot(
-        envelope.quantiles, units, "o", ms=3, markerfacecolor="none", markeredgecolor=BLUE, markeredgewidth=0.9
+        envelope.quantiles,
+        units,
+        "o",
+        ms=3,
+        markerfacecolor="none",
+        markeredgecolor=BLUE,
+        markeredgewidth=0.9,
     )
     axes.set_xlabel("normal quantile")
     axes.set_ylabel("deviation (standard deviations)")

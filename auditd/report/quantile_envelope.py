@@ -92,7 +92,7 @@ def normal_envelope(n: int, confidence: float = 0.95) -> Envelope:
 
 
 def _extreme_rank(curves: Floats) -> Ints:
-    """Return for each curve the smallest of its ranks, from either end, over all points where curves differ."""
+    """Return each curve's smallest rank, from either end, over all points where curves differ."""
     ranks = np.argsort(np.argsort(curves, axis=0, kind="stable"), axis=0, kind="stable") + 1
     both = np.minimum(ranks, len(curves) + 1 - ranks)
     differ = np.ptp(curves, axis=0) > 0

@@ -10,7 +10,7 @@ import numpy as np
 from auditd.report.binning import Bins, Floats, binned
 from auditd.report.figure import drawn, legend_above
 from auditd.report.labels import figures, short, visible
-from auditd.report.observed import Observed
+from auditd.report.observed import Flags, Observed
 from auditd.report.palette import ACCENTS, BLUE, INK, MARKERS, MUTED, ORANGE
 from auditd.report.picture import DataTable, Picture
 from auditd.series.table import Coded
@@ -55,11 +55,13 @@ def run_chart(observed: Observed, along: str | None) -> Picture:
         if coded is not None and n <= N_POINTS_MAX
         else "Each point is a run. "
         if n <= N_POINTS_MAX
-        else f"{n:,} runs in {N_BINS} stretches of equal counts: bars reach from the lowest to the highest run "
+        else f"{n:,} runs in {N_BINS} stretches of equal counts: bars reach from the lowest to the highest "
+        "run "
         "of each, so no extreme is lost; the line joins their means. "
     )
     caption = (
-        f"{how}Thick steps: the level of each twelfth of the runs, with its 95 % interval at the worth of the runs "
+        f"{how}Thick steps: the level of each twelfth of the runs, with its 95 % interval at the worth of "
+        "the runs "
         "(not their number). W: warning raised; dashed: most probable first run, shaded: runs that cannot be "
         "excluded. Crosses: set aside."
     )
@@ -132,7 +134,9 @@ def _draw(
         bins, half = stretches
         for k in range(len(bins.n)):
             ends = [bins.first[k], bins.last[k]]
-            axes.fill_between(ends, bins.mean[k] - half[k], bins.mean[k] + half[k], color=INK, alpha=0.18, lw=0)
+            axes.fill_between(
+                ends, bins.mean[k] - half[k], bins.mean[k] + half[k], color=INK, alpha=0.18, lw=0
+            )
             axes.plot(ends, [bins.mean[k]] * 2, color=INK, lw=2.2, solid_capstyle="butt")
     _marks(axes, observed)
     axes.set_xlabel("place in the order")
@@ -142,7 +146,7 @@ def _draw(
         legend_above(axes, n_columns=min(len(labels), 9))
 
 
-def _groups(coded: Coded | None, n: int, n_most: int) -> list[tuple[str, Floats]]:
+def _groups(coded: Coded | None, n: int, n_most: int) -> list[tuple[str, Flags]]:
     """Return the levels with the most runs and their runs; the others together."""
     if coded is None or n == 0:
         return [("", np.ones(n, dtype=bool))]
@@ -172,7 +176,13 @@ def _points(axes: Axes, observed: Observed, coded: Coded | None) -> None:
     if observed.aside.any():
         aside = observed.aside
         axes.plot(
-            observed.place[aside], observed.deviation[aside], "x", color=MUTED, ms=3, mew=0.8, label="set aside"
+            observed.place[aside],
+            observed.deviation[aside],
+            "x",
+            color=MUTED,
+            ms=3,
+            mew=0.8,
+            label="set aside",
         )
 
 

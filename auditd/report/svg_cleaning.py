@@ -104,7 +104,12 @@ def _describe(root: ET.Element, name: str, title: str, finding: str) -> None:
     box = root.get("viewBox", "")
     root.attrib.clear()
     root.attrib.update(
-        {"viewBox": box, "role": "img", "aria-labelledby": f"{name}-title {name}-finding", "focusable": "false"}
+        {
+            "viewBox": box,
+            "role": "img",
+            "aria-labelledby": f"{name}-title {name}-finding",
+            "focusable": "false",
+        }
     )
     head = ET.Element("title", {"id": f"{name}-title"})
     head.text = title

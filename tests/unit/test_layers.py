@@ -14,6 +14,7 @@ LAYERS = (
     ("plan", "plan_reading"),
     ("stats", "sequential"),
     ("read",),
+    ("drafting",),
     ("landing",),
     ("store",),
     ("series",),
