@@ -28,6 +28,7 @@ class Server:
         self.account = _account()
         self.port = _free_port()
         self.n_databases = 0
+        self.free: list[URL] = []
 
     def run(self, *argv: str, check: bool = True) -> subprocess.CompletedProcess:
         """Run a program of the server as the server's user: initdb and postgres refuse root."""
@@ -81,13 +82,24 @@ class Server:
         )
 
     def new_database(self) -> URL:
-        """Make an empty database and return its address."""
+        """Return the address of an empty database; one that was given back is emptied, which is quicker."""
+        if self.free:
+            url = self.free.pop()
+            self._execute("postgres", _END_SESSIONS, name=url.database)
+            self._execute(url.database, "DROP SCHEMA public CASCADE; CREATE SCHEMA public")
+            return url
         self.n_databases += 1
         name = f"audit_{os.getpid()}_{self.n_databases}"
-        engine = create_engine(self.url("postgres"), isolation_level="AUTOCOMMIT", poolclass=NullPool)
-        with engine.connect() as connection:
-            connection.execute(text(f"CREATE DATABASE {name}"))
+        self._execute("postgres", f"CREATE DATABASE {name}")
         return self.url(name)
+
+    def _execute(self, database: str, statement: str, **values) -> None:
+        engine = create_engine(self.url(database), isolation_level="AUTOCOMMIT", poolclass=NullPool)
+        with engine.connect() as connection:
+            connection.execute(text(statement), values)
+
+
+_END_SESSIONS = "SELECT pg_terminate_backend(pid) FROM pg_stat_activity WHERE datname = :name"
 
 
 @pytest.fixture(scope="session")
@@ -117,7 +129,9 @@ def postgres_server():
 @pytest.fixture
 def postgres_url(postgres_server):
     """The address of an empty database."""
-    return postgres_server.new_database()
+    url = postgres_server.new_database()
+    yield url
+    postgres_server.free.append(url)
 
 
 def _account() -> int | None:

@@ -11,7 +11,7 @@ from pathlib import Path
 from types import TracebackType
 from typing import Self
 
-from sqlalchemy import Connection, Engine
+from sqlalchemy import Connection, Engine, PoolProxiedConnection
 from sqlalchemy.engine import URL
 from sqlalchemy.exc import DBAPIError, OperationalError
 
@@ -39,10 +39,12 @@ class Holder:
         self._engine = engine
         self._handle: int | None = None
         self._connection: Connection | None = None
+        self._open: PoolProxiedConnection | None = None
 
     def __enter__(self) -> Self:
         if self._url.get_backend_name() == "sqlite":
             self._lock_file(Path(f"{os.path.realpath(self._url.database or '')}.lock"))
+            self._keep_open()
         else:
             self._lock_server()
         return self
@@ -54,6 +56,9 @@ class Holder:
 
     def release(self) -> None:
         """Give the right back."""
+        if self._open is not None:
+            self._open.close()
+            self._open = None
         if self._handle is not None:
             os.close(self._handle)
             self._handle = None
@@ -97,6 +102,17 @@ class Holder:
         os.ftruncate(handle, 0)
         os.pwrite(handle, f"process {os.getpid()} on {socket.gethostname()}\n".encode(), 0)
         self._handle = handle
+
+    def _keep_open(self) -> None:
+        """Keep the log between transactions: the last connection to close folds it in and removes it."""
+        if self._engine is None:
+            return
+        try:
+            self._open = self._engine.raw_connection()
+            self._open.cursor().execute("SELECT count(*) FROM sqlite_master").fetchone()
+        except BaseException:
+            self.release()
+            raise
 
     def _lock_server(self) -> None:
         if self._engine is None:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import os
 import sqlite3
-from contextlib import closing
+from contextlib import closing, suppress
 from pathlib import Path
 from typing import Literal
 
@@ -22,12 +22,12 @@ def connect_file(file: Path, *, read_only: bool, durable: bool = True) -> sqlite
     """Return a connection to an existing file, transactions left to the caller.
 
     A reader never writes to the file, nor checkpoints the log of another process into it. Where the reader
-    may not write at all and no log is there, so that no writer can be at work under this user, it reads the
-    file alone: SQLite could not make the shared memory that a log needs.
+    may not write and there is no log, which a holder keeps as long as it works, it reads the file alone:
+    SQLite could not make the shared memory that a log needs.
     """
     if not read_only:
         return _set_up_writer(_connect(file, "rw"), durable=durable)
-    alone = not _has_log(file) and not may_write(file)
+    alone = not os.path.exists(f"{file}-wal") and not may_write(file)
     raw = _connect(file, "ro", immutable=alone)
     raw.execute("PRAGMA query_only=ON")
     raw.execute("PRAGMA cache_size=-32000")
@@ -52,15 +52,8 @@ def file_revision(file: Path) -> str | None:
     _check_header(file)
     if not _has_log(file):
         # no log, hence nothing newer than the file: it is read without any lock or shared memory
-        try:
+        with suppress(sqlite3.Error):
             return _revision(_connect(file, "ro", immutable=True), file)
-        except sqlite3.Error:
-            if not _has_log(file):
-                return _revision_told(file)
-    return _revision_told(file)
-
-
-def _revision_told(file: Path) -> str | None:
     try:
         return _revision(_connect(file, "ro"), file)
     except sqlite3.DatabaseError as error:

@@ -5,6 +5,7 @@ import threading
 
 import pytest
 from sqlalchemy import select
+from sqlalchemy.engine import URL
 from sqlalchemy.exc import DBAPIError
 from store_records import START, make_caution, make_run
 
@@ -479,11 +480,11 @@ def test_a_newer_store_is_refused_for_reading_and_for_taking(engine, store_addre
             opening(store_address)
 
 
-def test_a_reader_cannot_write(engine, store_address):
-    """Queries open the store so that a mistake in them changes nothing (on a server the rights say that)."""
-    if store_address.get_backend_name() != "sqlite":
-        pytest.skip("a server's rights are its administrator's")
-    reading = open_engine(store_address, read_only=True)
+def test_a_reader_of_a_file_cannot_write(tmp_path):
+    """Queries open it so that a mistake in them changes nothing; a server's rights are its administrator's."""
+    address = URL.create("sqlite", database=str(tmp_path / "store.sqlite"))
+    open_or_make(address).dispose()
+    reading = open_engine(address, read_only=True)
     with pytest.raises(DBAPIError), reading.begin() as connection:
         insert(connection, [1])
 
