@@ -25,6 +25,7 @@ from auditd.landing import Landing, Watcher
 from auditd.notify import Notifier
 from auditd.pipeline.campaign import Campaign, open_for_taking
 from auditd.pipeline.delivering import Courier
+from auditd.pipeline.report_keeping import ReportKeeper
 from auditd.pipeline.session import Session
 from auditd.pipeline.silence import SilenceWatch
 from auditd.pipeline.weighing import Weigher
@@ -96,6 +97,7 @@ class Daemon:
         self._watcher = Watcher(self.landing, campaign.plan.landing.watch)
         self.watcher.start()
         self.weigher = Weigher(self.session)
+        self.report = ReportKeeper(self.session)
         self.silence = SilenceWatch(campaign.plan)
         self.courier = Courier(campaign)
         self.courier.start()
@@ -129,6 +131,7 @@ class Daemon:
         self.session.take_up_if_shared()
         self._advance(self._due_flush())
         self.weigher.refresh_if_due()
+        self.report.refresh_if_due(time.time())
         self.silence.look(self.session, time.time())
         self._beat()
 
@@ -245,6 +248,7 @@ class Daemon:
     def _close(self, *, final: bool = True) -> None:
         self.watcher.stop()
         self.courier.stop()
+        self.report.close()
         if not final:
             return
         self.notifier.stopping()

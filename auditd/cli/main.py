@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import errno
 import os
 import sys
 import traceback
@@ -121,7 +120,7 @@ def _code_of(error: BaseException) -> int:
             return EXIT_USAGE
         case click.Abort() | KeyboardInterrupt():
             return EXIT_INTERRUPTED
-        case BrokenPipeError() | SystemExit() if _is_closed_pipe(error):
+        case BrokenPipeError() | SystemExit():  # click makes SystemExit of a closed pipe, and of nothing else
             _close_quietly()
             return 0
         case AuditdError():
@@ -129,11 +128,6 @@ def _code_of(error: BaseException) -> int:
             return error.exit_code
         case _:
             return _unexpected(error)
-
-
-def _is_closed_pipe(error: BaseException) -> bool:
-    """Whether whoever read our output has gone; click turns that into an end of its own."""
-    return isinstance(error, BrokenPipeError) or getattr(error.__context__, "errno", None) == errno.EPIPE
 
 
 def _unexpected(error: BaseException) -> int:

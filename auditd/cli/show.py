@@ -50,7 +50,7 @@ def _print_warning(document: dict[str, Any]) -> None:  # the JSON document
             click.echo(f"    {name:9} {safe(text)}")
     for answer in document["answers"]:
         click.echo(safe(f"    answered  {answer['at']} ({answer['action']}): {answer['reason']}"))
-    for line in document["chart"]:
+    for line in [*document["chart"], *document["evidence_chart"]]:
         click.echo(line)
     click.echo("")
     text = f"What it asks: {document['explanation']} See `runaudit explain {one['kind']}`."

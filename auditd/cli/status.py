@@ -9,6 +9,7 @@ import click
 from auditd.cli.options import at_least_option, json_option, plan_path
 from auditd.cli.output import number, percent, print_json, print_table, safe
 from auditd.records import Grade
+from auditd.series.strip_line import NAME_WIDTH, shortened, strip_line
 
 
 @click.command(epilog="Example: runaudit status --json")
@@ -50,6 +51,7 @@ def _print(title: str, document: dict[str, Any]) -> None:  # the JSON document
             + (f"; last failure: {safe(alerts['last_error'])}" if alerts["last_error"] else "")
         )
     _print_responses(document["responses"])
+    _print_strips(document["strips"])
     standing = document["warnings"]
     grades = ", ".join(f"{count} {grade}" for grade, count in standing["by_grade"].items() if count)
     click.echo(f"  warnings  {grades + ' standing; see `runaudit warnings`' if grades else 'none standing'}")
@@ -57,6 +59,15 @@ def _print(title: str, document: dict[str, Any]) -> None:  # the JSON document
         click.echo(
             "            (no warning is not proof of independence; see what would have been seen above)"
         )
+
+
+def _print_strips(strips: dict[str, list[float]]) -> None:
+    lines = [(name, strip_line(means)) for name, means in strips.items() if means]
+    if not lines:
+        return
+    for name, line in lines:
+        click.echo(f"  {shortened(safe(name), NAME_WIDTH):<{NAME_WIDTH}} {line}")
+    click.echo("  (in order, less the cells' own levels: _ - below, o at them, + ^ above)\n")
 
 
 def _daemon(daemon: dict[str, Any]) -> str:  # part of the JSON document

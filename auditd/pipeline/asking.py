@@ -49,6 +49,7 @@ def status_document(campaign: Campaign, now: datetime) -> Document:
         "late": counts.n_late,
         "daemon": daemon_document(beat, now),
         "responses": shown.get("responses", {}),
+        "strips": {name: one["mean"] for name, one in shown.get("strips", {}).items()},
         "withheld": shown.get("withheld", []),
         "warnings": {"standing": sum(standing.values()), "worst": worst, "by_grade": standing},
         "alerts": {**letters, "last_error": trouble},

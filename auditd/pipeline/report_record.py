@@ -84,7 +84,7 @@ def _scored(facts: ReportFacts, name: str) -> int | None:
     newest = max(facts.paths, key=int, default=None)
     kept = {} if newest is None else facts.paths[newest]
     return max(
-        (one["n_scored"] for title, one in kept.items() if title in {name} or title.startswith(f"{name} (")),
+        (one["n_scored"] for title, one in kept.items() if title == name or title.startswith(f"{name} (")),
         default=None,
     )
 

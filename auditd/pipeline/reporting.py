@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import contextlib
-import logging
 import os
 import tempfile
 import time
@@ -13,17 +12,9 @@ from pathlib import Path
 from typing import IO
 
 import msgspec
-from sqlalchemy.exc import DBAPIError
 
-from auditd.errors import AuditdError, CannotCreate
+from auditd.errors import CannotCreate
 from auditd.pipeline.campaign import Campaign
-from auditd.pipeline.session import Session
-from auditd.plan import duration_s
-
-log = logging.getLogger("auditd")
-
-BUSY_SHARE = 0.05
-"""The daemon spends at most this share of its time on the page; runs are taken in between."""
 
 
 class Written(msgspec.Struct, frozen=True, kw_only=True):
@@ -102,42 +93,3 @@ def replaced_file(path: Path) -> Iterator[IO[bytes]]:
         if name is not None:
             with contextlib.suppress(OSError):
                 os.unlink(name)
-
-
-class ReportKeeper:
-    """Keeps the page fresh where the plan has a `[report]` section.
-
-    Parameters
-    ----------
-    session : whose campaign is reported.
-    """
-
-    def __init__(self, session: Session) -> None:
-        self._session = session
-        stated = session.plan.report
-        self._every_s = None if stated is None else duration_s(stated.every, "report.every")
-        self._path = None if stated is None else session.plan.folder / stated.path
-        self._due_at = 0.0
-        self._n_shown = -1
-
-    def refresh_if_due(self, now: float) -> bool:
-        """Write the page if it is due and runs have come; a failure is said, not raised.
-
-        `now` is POSIX seconds.
-        """
-        if self._every_s is None or self._path is None or now < self._due_at:
-            return False
-        if self._session.n_arrived == self._n_shown:
-            return False
-        began = time.monotonic()
-        try:
-            write_report(
-                self._session.campaign, self._path, datetime.fromtimestamp(now, UTC).replace(microsecond=0)
-            )
-        except (AuditdError, DBAPIError, OSError) as error:
-            log.warning("the report was not written, it is tried again later: %s", error)
-        else:
-            self._n_shown = self._session.n_arrived
-        took_s = time.monotonic() - began
-        self._due_at = now + max(self._every_s, took_s / BUSY_SHARE)
-        return True

@@ -6,6 +6,7 @@ from auditd.pipeline.asking import Document, caution_document, find_caution, fin
 from auditd.pipeline.campaign import Campaign
 from auditd.records import Caution
 from auditd.series.terminal_chart import chart_lines
+from auditd.series.terminal_evidence import evidence_lines
 from auditd.store.answers import stored_answers
 from auditd.store.cautions import caution_number, stored_cautions
 from auditd.store.clock import rfc3339
@@ -20,6 +21,7 @@ def warning_shown(campaign: Campaign, name: str) -> Document:
     with campaign.engine.connect() as connection:
         replies = stored_answers(connection, answers.c.caution == caution_number(found.id))
         shown = stored_display(connection, "status") or {}
+        paths = stored_display(connection, "paths") or {}
     return {
         "schema": 1,
         "warning": caution_document(found),
@@ -34,6 +36,7 @@ def warning_shown(campaign: Campaign, name: str) -> Document:
             for one in replies
         ],
         "chart": _chart(found, shown),
+        "evidence_chart": _evidence_chart(found, paths),
         "explanation": explain(found.finding.kind).asks,
     }
 
@@ -45,6 +48,23 @@ def _chart(found: Caution, shown: Document) -> list[str]:
         if not strip or not strip["n"]
         else chart_lines(strip, since=found.finding.since, raised=found.finding.index)
     )
+
+
+def _evidence_chart(found: Caution, paths: Document) -> list[str]:
+    """Return the e-process of the warning's family in its newest epoch; empty where it has none."""
+    finding = found.finding
+    family = f"{finding.kind} along {finding.along}"
+    for epoch in sorted(paths, key=int, reverse=True):
+        kept = paths[epoch].get(finding.response)
+        if kept is not None and finding.log_e is not None and family in kept["paths"]:
+            return evidence_lines(
+                kept["paths"][family],
+                first=kept["first"],
+                width=kept["width"],
+                threshold=kept["threshold_own"],
+                raised=finding.index,
+            )
+    return []
 
 
 def run_shown(campaign: Campaign, name: str) -> Document:

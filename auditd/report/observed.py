@@ -31,7 +31,7 @@ class Observed:
 
     `place` (n,) in the campaign's order, counted from 0; `deviation` (n,) from the cells' means, on the
     audited scale, finite; `aside` (n,) marks runs that an answer set aside, which enter no mean; `worth`
-    independent runs a run, at most 1; `n_cells` cells with runs; `axis` names the deviation with scale and unit.
+    independent runs a run, at most 1; `n_cells` cells with runs; `axis` names the deviation with unit.
     """
 
     name: str
