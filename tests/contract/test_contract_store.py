@@ -481,7 +481,7 @@ def test_a_newer_store_is_refused_for_reading_and_for_taking(engine, store_addre
 
 
 def test_a_reader_of_a_file_cannot_write(tmp_path):
-    """Queries open it so that a mistake in them changes nothing; a server's rights are its administrator's."""
+    """Queries open it so that a mistake in them changes nothing; a server has rights of its own."""
     address = URL.create("sqlite", database=str(tmp_path / "store.sqlite"))
     open_or_make(address).dispose()
     reading = open_engine(address, read_only=True)
