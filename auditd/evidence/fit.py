@@ -15,20 +15,33 @@ from auditd.evidence.problem import Columns, Problem, collect, lay_columns
 from auditd.evidence.restricted import FIXED_RIDGE, Fits, evaluate
 
 MIN_CHAIN_RUNS = 4.0  # mean length of a nuisance's chains below which dependence within them is not asked
+SLOPES_FOUND = 0.05  # p of the levels' own differences below which they stand in the model of the errors
 N_SHARES = 24  # grid points for one random effect's share alone
 SHARES = np.linspace(0.02, 1.0, N_SHARES) ** 2
 
 
 @dataclass(frozen=True, kw_only=True)
 class Model:
-    """Columns, sums and bookkeeping that every evaluation needs."""
+    """Columns, sums and bookkeeping that every evaluation needs.
+
+    base : columns of cells and levels. used : these, and the slopes of nuisances whose levels plainly
+        differ in their differences, with the penalties slope_penalty: left out, they would be taken for
+        autocorrelation.
+    """
 
     problem: Problem
     columns: Columns
     chains: Stretches
     moments: Moments
     base: Ints
+    used: Ints
+    slope_penalty: Floats
     n_fixed: int
+
+    def used_ridge(self, share: Floats, lead: int | None, others: dict[int, float]) -> Floats:
+        """As `ridge`, for the base columns and the slopes in use."""
+        slopes = np.broadcast_to(self.slope_penalty, (len(share), len(self.slope_penalty)))
+        return np.hstack((self.ridge(share, lead, others), slopes))
 
     def ridge(self, share: Floats, lead: int | None, others: dict[int, float]) -> Floats:
         """Penalty of each base column at each share of the random effect `lead`; `others` have theirs."""
@@ -42,9 +55,9 @@ class Model:
             parts.append(np.repeat(penalty[:, None], crossing.codes.n_levels, axis=1))
         return np.hstack(parts)
 
-    def contrast(self) -> Floats:
-        """The contrast on the base columns."""
-        return np.concatenate((self.problem.contrast, np.zeros(len(self.base) - len(self.problem.contrast))))
+    def contrast(self, columns: Ints) -> Floats:
+        """The contrast on the given columns, of which the cells come first."""
+        return np.concatenate((self.problem.contrast, np.zeros(len(columns) - len(self.problem.contrast))))
 
 
 def level_penalty(crossing: NuisanceCrossing, share: Floats, n: int) -> Floats:
@@ -59,8 +72,14 @@ def level_penalty(crossing: NuisanceCrossing, share: Floats, n: int) -> Floats:
 def build(problem: Problem) -> Model:
     """Lay the columns and choose the chains along which the errors look most dependent."""
     columns = lay_columns(problem)
-    chains = choose_chains(problem, columns)
     base = columns.base()
+    penalties = {place: plain_slope_penalty(problem, columns, base, place) for place in columns.slopes}
+    active = [place for place, penalty in penalties.items() if penalty is not None]
+    used = np.concatenate([base, *(columns.slopes[place] for place in active)])
+    slope_penalty = np.concatenate(
+        [np.zeros(0), *(np.full(len(columns.slopes[place]), penalties[place]) for place in active)]
+    )
+    chains = choose_chains(problem, columns, used)
     spent = [c.codes.n_levels - 1 for c in problem.crossings if c.kind == "block"]
     return Model(
         problem=problem,
@@ -68,11 +87,13 @@ def build(problem: Problem) -> Model:
         chains=chains,
         moments=collect(problem, columns, chains),
         base=base,
+        used=used,
+        slope_penalty=slope_penalty,
         n_fixed=problem.n_cells_spent + sum(spent),
     )
 
 
-def choose_chains(problem: Problem, columns: Columns) -> Stretches:
+def choose_chains(problem: Problem, columns: Columns, used: Ints) -> Stretches:
     """The order or a nuisance's levels: the larger lag-1 correlation of residuals, in standard errors."""
     n = len(problem.y)
     candidates: list[Stretches] = [along_order(n)]
@@ -81,7 +102,7 @@ def choose_chains(problem: Problem, columns: Columns) -> Stretches:
             candidates.append(within(crossing.codes, crossing.name))  # noqa: PERF401  (a typed list)
     if len(candidates) == 1:
         return candidates[0]
-    residual = plain_residuals(problem, columns)
+    residual = plain_residuals(problem, columns, used)
     size = float(residual @ residual) / n
     scores = [
         abs(float(residual[c.child] @ residual[c.parent])) / (max(size, 1e-300) * max(len(c.child), 1) ** 0.5)
@@ -90,9 +111,27 @@ def choose_chains(problem: Problem, columns: Columns) -> Stretches:
     return candidates[int(np.argmax(scores))]
 
 
-def plain_residuals(problem: Problem, columns: Columns) -> Floats:
-    """Residuals of ordinary least squares on cells and levels."""
-    table = columns.table[:, columns.base()]
+def plain_slope_penalty(problem: Problem, columns: Columns, base: Ints, place: int) -> float | None:
+    """Error variance ÷ variance of a nuisance's own differences; None where F does not find any."""
+    from scipy.special import fdtrc
+
+    slopes = columns.slopes[place]
+    n_own = len(slopes) - 1
+    df = len(problem.y) - len(base) - n_own
+    if df < 1:
+        return None
+    small = plain_residuals(problem, columns, base)
+    full = plain_residuals(problem, columns, np.concatenate((base, slopes)))
+    error = max(float(full @ full) / df, 1e-300)
+    f = (float(small @ small) - float(full @ full)) / n_own / error
+    if f <= 1 or float(fdtrc(n_own, df, f)) > SLOPES_FOUND:
+        return None
+    return max(len(problem.y) / (4 * len(slopes)) / (f - 1), 1e-6)
+
+
+def plain_residuals(problem: Problem, columns: Columns, used: Ints) -> Floats:
+    """Residuals of ordinary least squares on some of the columns."""
+    table = columns.table[:, used]
     count = np.bincount(columns.code)
     sums = np.bincount(columns.code, problem.y)
     gram = (table.T * count) @ table
@@ -104,24 +143,26 @@ def plain_residuals(problem: Problem, columns: Columns) -> Floats:
 def weigh_parameters(model: Model) -> tuple[Posterior, dict[int, float], int | None]:
     """Posterior over φ and the strongest partly crossed effect; other shares are set by likelihood."""
     random = [place for place, c in enumerate(model.problem.crossings) if c.kind == "random"]
-    moments, c = model.moments.select(model.base), model.contrast()
+    moments, c = model.moments.select(model.used), model.contrast(model.used)
     others: dict[int, float] = {}
     drops: dict[int, float] = {}
     for place in random:
-        fits = evaluate(moments, c, np.zeros(N_SHARES), model.ridge(SHARES, place, others), model.n_fixed)
+        fits = evaluate(
+            moments, c, np.zeros(N_SHARES), model.used_ridge(SHARES, place, others), model.n_fixed
+        )
         others[place] = float(SHARES[int(np.argmax(fits.loglik))])
         drops[place] = float(fits.loglik.max() - fits.loglik[-1])
     lead = max(random, key=drops.__getitem__) if random else None
 
     def fit(phi: Floats, share: Floats) -> Fits:
-        return evaluate(moments, c, phi, model.ridge(share, lead, others), model.n_fixed)
+        return evaluate(moments, c, phi, model.used_ridge(share, lead, others), model.n_fixed)
 
     return explore(fit, with_share=lead is not None, at_zero=model.problem.at_zero), others, lead
 
 
 def errors_of(model: Model, coefficients: Floats, leverage: Floats, phi: float) -> tuple[Floats, Floats]:
     """Innovations of the runs and each innovation's weight in the estimate."""
-    table = model.columns.table[:, model.base]
+    table = model.columns.table[:, model.used]
     residual = model.problem.y - (table @ coefficients)[model.columns.code]
     weight = (table @ leverage)[model.columns.code]
     return model.chains.innovations(residual, phi), model.chains.innovations(weight, phi)

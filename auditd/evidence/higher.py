@@ -29,6 +29,11 @@ class Autoregression:
 
     coefficients: Floats
 
+    @property
+    def order(self) -> int:
+        """Number of coefficients."""
+        return len(self.coefficients)
+
     def autocorrelations(self, n_lags: int) -> Floats:
         """Autocorrelations at lags 1 … n_lags."""
         p = len(self.coefficients)
@@ -78,20 +83,31 @@ def autocovariances(x: Floats, chains: Stretches, n_lags: int) -> Floats:
     return np.array(sums) / n
 
 
-def looks_white(error: Floats, chains: Stretches) -> bool:
-    """Ljung-Box test of innovations along the chains, one degree of freedom spent on the AR(1)."""
+def innovations_of(residual: Floats, chains: Stretches, model: Autoregression) -> Floats:
+    """Residuals less what the autoregression predicts; 0 for runs without all their ancestors."""
+    back = ancestors(chains, len(residual), model.order)
+    error = residual.copy()
+    for coefficient, index in zip(model.coefficients, back, strict=True):
+        error -= coefficient * np.where(index >= 0, residual[index], 0.0)
+    return np.where(back[-1] >= 0, error, 0.0)
+
+
+def looks_white(error: Floats, chains: Stretches, n_spent: int = 1) -> bool:
+    """Ljung-Box test of innovations along the chains, n_spent degrees of freedom spent on coefficients."""
     from scipy.special import chdtrc
 
     n = len(error)
     if n < MIN_RUNS:
         return True
-    n_lags = min(10, n // RUNS_A_LAG)
+    n_lags = min(10 + 2 * (n_spent - 1), n // RUNS_A_LAG)
+    if n_lags <= n_spent:
+        return True
     covariance = autocovariances(error, chains, n_lags)
     if covariance[0] <= 0:
         return True
     r = covariance[1:] / covariance[0]
     statistic = float(n * (n + 2) * (r**2 / (n - np.arange(1, n_lags + 1))).sum())
-    return float(chdtrc(n_lags - 1.0, statistic)) >= WHITE_LEVEL
+    return float(chdtrc(float(n_lags - n_spent), statistic)) >= WHITE_LEVEL
 
 
 def choose_order(residual: Floats, chains: Stretches) -> Autoregression | None:

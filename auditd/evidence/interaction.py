@@ -13,15 +13,18 @@ Hartung & Knapp (2001), Statistics in Medicine 20:3875-3889; Sidik & Jonkman (20
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 
 from auditd.evidence.fit import SHARES, Model
 from auditd.evidence.inputs import Floats
-from auditd.evidence.restricted import FIXED_RIDGE, evaluate
+from auditd.evidence.restricted import FIXED_RIDGE, Fits, evaluate
 
 PRIOR_DF = 0.5  # degrees of freedom given to "no interaction"; see above
+NO_SLOPES = 1e9  # penalty, in runs, that leaves no slopes
+N_FINE = 17  # grid points of the second search
 MIN_ERROR_DF = 3  # runs beyond one a level and side that are needed to tell interaction from error
 
 
@@ -51,29 +54,39 @@ def judge(model: Model, place: int, phi: float, ridge: Floats, base_estimate: fl
     df_full = model.moments.n - model.n_fixed - n_own
     if df_full < MIN_ERROR_DF:
         return None
-    contrast = np.concatenate((model.contrast(), np.zeros(len(slopes))))
+    contrast = np.concatenate((model.contrast(model.base), np.zeros(len(slopes))))
     mean_runs = model.moments.n / (4 * len(slopes))
-    inside = np.clip(SHARES, 1e-8, 1 - 1e-6)
-    penalties = np.concatenate(
-        (mean_runs * inside / (1 - inside), [FIXED_RIDGE * mean_runs, 1e9 * mean_runs])
-    )
-    grid = np.hstack(
-        (np.repeat(ridge[None, :], len(penalties), 0), np.repeat(penalties[:, None], len(slopes), 1))
-    )
-    fits = evaluate(moments, contrast, np.full(len(penalties), phi), grid, model.n_fixed)
-    df_base = model.moments.n - model.n_fixed
-    rss = fits.sigma2 * df_base
-    error = rss[-2] / df_full
-    f = max(float((rss[-1] - rss[-2]) / n_own / error), 0.0)
-    best = int(np.argmax(fits.loglik[:-2]))
-    plain = float(fits.unit[-1] * error)
-    found = float(fits.unit[best] * fits.sigma2[best]) if f > 1 else f * plain
-    moved = float(fits.estimate[best]) - base_estimate if f > 1 else 0.0
+
+    def fit(penalties: Floats) -> Fits:
+        grid = np.hstack(
+            (np.repeat(ridge[None], len(penalties), 0), np.repeat(penalties[:, None], len(slopes), 1))
+        )
+        return evaluate(moments, contrast, np.full(len(penalties), phi), grid, model.n_fixed)
+
+    ends = fit(np.array([FIXED_RIDGE * mean_runs, NO_SLOPES * mean_runs]))
+    rss = ends.sigma2 * (model.moments.n - model.n_fixed)
+    error = float(rss[0]) / df_full
+    f = max(float(rss[1] - rss[0]) / n_own / error, 0.0)
+    plain = float(ends.unit[1]) * error
+    found, estimate = f * plain, float(ends.estimate[1])
+    if f > 1:
+        found, estimate = _likeliest(fit, mean_runs)
     return Interaction(
         name=model.problem.crossings[place].name,
         variance=(n_own * found + PRIOR_DF * plain) / (n_own + PRIOR_DF),
         df=n_own + PRIOR_DF,
-        shift=moved,
+        shift=estimate - base_estimate,
         f=f,
         pvalue=float(fdtrc(n_own, df_full, f)),
     )
+
+
+def _likeliest(fit: Callable[[Floats], Fits], mean_runs: float) -> tuple[float, float]:
+    """Variance and estimate at the likeliest penalty, on a grid and on a finer one about its best."""
+    inside = np.clip(SHARES, 1e-8, 1 - 1e-6)
+    penalties = mean_runs * inside / (1 - inside)
+    best = int(np.argmax(fit(penalties).loglik))
+    low, high = penalties[max(best - 1, 0)], penalties[min(best + 1, len(penalties) - 1)]
+    fine = fit(np.geomspace(low, high, N_FINE))
+    place = int(np.argmax(fine.loglik))
+    return float(fine.unit[place] * fine.sigma2[place]), float(fine.estimate[place])

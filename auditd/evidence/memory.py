@@ -8,11 +8,12 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from auditd.evidence.chains import Stretches, along_order, within
-from auditd.evidence.higher import Autoregression, choose_order, looks_white
+from auditd.evidence.higher import Autoregression, choose_order, innovations_of, looks_white
 from auditd.evidence.inputs import Codes, Floats, Ints
 from auditd.evidence.moments import Moments, sum_moments
 from auditd.evidence.posterior import Posterior, explore, none_found
 from auditd.evidence.restricted import FIXED_RIDGE, Fits, evaluate
+from auditd.evidence.sequence import InitialSequence, initial_sequence
 from auditd.evidence.steps import MIN_CHAIN_RUNS, segments
 
 MIN_MEAN_CHAIN = 4.0  # runs a chain, on average, for dependence within a nuisance's levels to be asked
@@ -23,6 +24,7 @@ MIN_LEVEL_RUNS = (
 MIN_HIGHER_RUNS = 50.0  # runs a level, on average, for more than an AR(1): removed means bias further lags
 MIN_FREE_RUNS = 5  # runs beyond the means, for time to be asked
 SMALLEST = 1e-24  # variance (of residuals on a scale of 1) below which only rounding is left
+MAX_LAGS = 3000  # lags to which autocorrelations are summed
 MAX_STEP_CHAINS = 200  # chains that are searched for steps, the longest first
 
 
@@ -34,6 +36,7 @@ class Steps:
         the segments of a chain; df : segments beyond one a chain.
     """
 
+    along: str
     segment: Ints
     owner: Ints
     variance: float
@@ -57,7 +60,7 @@ class TimeDependence:
     chains: Stretches
     steps: Steps
     posterior: Posterior
-    higher: Autoregression | None
+    higher: Autoregression | InitialSequence | None
     variance: float
 
 
@@ -83,12 +86,17 @@ def remember(residual: Floats, level: Ints, nuisances: Mapping[str, Codes]) -> T
     )
 
 
-def _higher(rest: Floats, chains: Stretches, posterior: Posterior) -> Autoregression | None:
-    """An AR(p) if the AR(1) was fitted and does not whiten the residuals."""
+def _higher(rest: Floats, chains: Stretches, posterior: Posterior) -> Autoregression | InitialSequence | None:
+    """An AR(p) where the AR(1) does not whiten; the autocorrelations themselves where neither does."""
     if len(posterior.phi) == 1:
         return None
     error = chains.innovations(rest, posterior.quantile(posterior.phi, 0.5))
-    return None if looks_white(error, chains) else choose_order(rest, chains)
+    if looks_white(error, chains):
+        return None
+    model = choose_order(rest, chains)
+    if model is None or looks_white(innovations_of(rest, chains, model), chains, model.order):
+        return model
+    return initial_sequence(rest, chains, MAX_LAGS)
 
 
 def choose(residual: Floats, candidates: Sequence[Stretches]) -> Stretches:
@@ -111,11 +119,12 @@ def find_steps(residual: Floats, chains: Stretches) -> tuple[Steps, Floats]:
             segment[runs] = len(owner) + np.searchsorted(starts, np.arange(len(runs)), side="right") - 1
             owner += [chain] * len(starts)
     if not owner:
-        return Steps(segment=segment, owner=np.empty(0, dtype=np.int64), variance=0.0, df=0), residual
-    return _measure(residual, segment, np.unique(owner, return_inverse=True)[1])
+        nothing = np.empty(0, dtype=np.int64)
+        return Steps(along=chains.along, segment=segment, owner=nothing, variance=0.0, df=0), residual
+    return _measure(residual, chains.along, segment, np.unique(owner, return_inverse=True)[1])
 
 
-def _measure(residual: Floats, segment: Ints, owner: Ints) -> tuple[Steps, Floats]:
+def _measure(residual: Floats, along: str, segment: Ints, owner: Ints) -> tuple[Steps, Floats]:
     """Variance between the segments of a chain by the analysis of variance."""
     stepped = segment >= 0
     count = np.bincount(segment[stepped]).astype(float)
@@ -127,7 +136,7 @@ def _measure(residual: Floats, segment: Ints, owner: Ints) -> tuple[Steps, Float
     between = float(count @ (mean - grand[owner]) ** 2) / df
     rest = residual.copy()
     rest[stepped] -= mean[segment[stepped]]
-    return Steps(segment=segment, owner=owner, variance=between / typical, df=df), rest
+    return Steps(along=along, segment=segment, owner=owner, variance=between / typical, df=df), rest
 
 
 def _fit(residual: Floats, level: Ints, steps: Steps, chains: Stretches) -> tuple[Posterior, int]:

@@ -22,7 +22,7 @@ from auditd.evidence.inputs import (
     standardise,
 )
 from auditd.evidence.levels import LevelEffects, effects
-from auditd.evidence.memory import remember
+from auditd.evidence.memory import TimeDependence, remember
 from auditd.evidence.moments import sum_moments
 from auditd.evidence.persistence import lags_needed, same_cell_pairs
 from auditd.evidence.posterior import Posterior, explore
@@ -275,8 +275,18 @@ def _result(ledger: Ledger, n: int, rho: float, tail: float, remarks: tuple[str,
             "serial": _factor(n_serial, n_batch),
         },
         detail=_detail(ledger),
-        remarks=(*remarks, *((f"dependence in time: along {memory.chains.along}",) if dependent else ())),
+        remarks=(*remarks, *_in_time(memory, dependent=dependent)),
     )
+
+
+def _in_time(memory: TimeDependence, *, dependent: bool) -> tuple[str, ...]:
+    """What was found along time, in words."""
+    said = []
+    if memory.steps.df:
+        said.append(f"{memory.steps.df} steps of the level along {memory.steps.along}, taken out first")
+    if dependent:
+        said.append(f"dependence in time: along {memory.chains.along}")
+    return tuple(said)
 
 
 def _factor(after: float, before: float) -> float:
@@ -289,7 +299,7 @@ def _detail(ledger: Ledger) -> dict[str, float]:
     memory, posterior = ledger.memory, ledger.memory.posterior
     detail = {
         "phi": posterior.quantile(posterior.phi, 0.5),
-        "order": float(1 if memory.higher is None else len(memory.higher.coefficients)),
+        "order": float(1 if memory.higher is None else memory.higher.order),
         "steps": float(memory.steps.df),
     }
     if ledger.lineage is not None:

@@ -69,7 +69,7 @@ def solve(model: Model, confidence: float) -> Solution:
     uncertainty = _relative_variance(posterior, np.log(variances))
     df = 1 / (1 / spread.df + 0.5 * uncertainty)
     ridge = model.ridge(posterior.share[best : best + 1], lead, others)[0]
-    longer = _longer_memory(model, posterior, error, ridge)
+    longer = _longer_memory(model, posterior, error, np.concatenate((ridge, model.slope_penalty)))
     if longer is not None:
         centre += longer.shift
         half *= longer.factor**0.5
@@ -127,14 +127,14 @@ def _longer_memory(model: Model, posterior: Posterior, error: Floats, ridge: Flo
     if looks_white(error, model.chains):
         return None
     fits, best = posterior.fits, posterior.best
-    table = model.columns.table[:, model.base]
+    table = model.columns.table[:, model.used]
     code = model.columns.code
     residual = model.problem.y - (table @ fits.coefficients[best])[code]
     chosen = choose_order(residual, model.chains)
     if chosen is None:
         return None
     refit = whitened_fit(
-        model.problem.y, code, table, model.contrast(), ridge, model.chains, chosen, model.n_fixed
+        model.problem.y, code, table, model.contrast(model.used), ridge, model.chains, chosen, model.n_fixed
     )
     if refit is None:
         return None

@@ -8,13 +8,12 @@ import numpy as np
 
 from auditd.evidence.inputs import Floats, Ints
 from auditd.evidence.levels import LevelEffects
-from auditd.evidence.memory import TimeDependence
+from auditd.evidence.memory import MAX_LAGS, TimeDependence
 from auditd.evidence.persistence import inflation, inflation_by, lags_needed, same_cell_pairs
 from auditd.evidence.posterior import Posterior
 
 CONFIDENCE = 0.95
 TAIL = (1 - CONFIDENCE) / 2
-MAX_LAGS = 3000  # lags to which an AR(p) is summed
 N_DRAWS = 400  # points of a low-discrepancy sequence over the estimates' uncertainty
 
 

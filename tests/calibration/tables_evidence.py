@@ -46,7 +46,7 @@ def measure(draw, n_campaigns, seed):
 
 def serial_rows(n_campaigns):
     """A difference of two cells under AR(1) errors."""
-    yield "| n | φ | order | coverage | level | width ÷ known | true n_eff | level | ÷ naive | naive coverage |"
+    yield "| n | φ | order | coverage | level | width ÷ known | n_eff | level | ÷ naive | naive coverage |"
     yield "|---|---|---|---|---|---|---|---|---|---|"
     for n in (60, 200, 400):
         for phi in (0.0, 0.3, 0.6, 0.9):

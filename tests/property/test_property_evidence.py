@@ -1,10 +1,13 @@
 """Invariances of the evidence: units, names, sides and inputs that stay as they were."""
 
+import contextlib
+
 import numpy as np
 import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
+from auditd.errors import BadInput, NotTestable
 from auditd.evidence import contrast, effective_number
 
 SCALED = ("estimate", "low", "high", "low_any", "high_any", "naive_low", "naive_high")
@@ -122,3 +125,63 @@ def test_intervals_are_ordered(campaign):
     number = effective_number(values, cells=cells, nuisance={"host": host})
     assert number.n_effective > 0
     assert number.loss_low <= number.loss <= number.loss_high
+
+
+def hostile_values(rng, n, cells):
+    """Shapes of response that break careless code: ties, a lone outlier, one constant side, heavy tails, a
+    ramp, huge sizes."""
+    return {
+        "ties": rng.integers(0, 3, n).astype(float),
+        "outlier": np.r_[1.0, np.zeros(n - 1)],
+        "constant side": np.where(cells == 0, 1.0, rng.standard_normal(n)),
+        "heavy": rng.standard_cauchy(n),
+        "lognormal": np.exp(3 * rng.standard_normal(n)),
+        "ramp": np.arange(n) * 1.0,
+        "wander": np.cumsum(rng.standard_normal(n)),
+        "huge": 1e140 * rng.standard_normal(n),
+        "tiny": 1e-140 * rng.standard_normal(n),
+    }
+
+
+def hostile_nuisances(rng, n, cells):
+    """Levels at random, sorted, aliased with the cells, one run each, very many, in blocks of the order."""
+    return {
+        "random": rng.integers(0, 6, n),
+        "sorted": np.sort(rng.integers(0, 6, n)),
+        "aliased": cells % 3,
+        "unit": np.arange(n),
+        "many": rng.integers(0, 60, n),
+        "blocks": np.arange(n) * 5 // n,
+    }
+
+
+@settings(max_examples=150, deadline=None)
+@given(
+    st.integers(0, 2**32 - 1),
+    st.sampled_from([4, 5, 7, 10, 15, 30, 60, 150]),
+    st.sampled_from([2, 3, 6, 20, 100]),
+)
+def test_hostile_campaigns_get_an_answer_or_a_refusal(seed, n, n_cells):
+    """Whatever comes: finite numbers, or BadInput or NotTestable; never NaN, never a warning of numpy's
+    (pytest makes those errors)."""
+    rng = np.random.default_rng(seed)
+    cells = rng.integers(0, n_cells, n)
+    values = rng.choice(list(hostile_values(rng, n, cells).values()))
+    offered = hostile_nuisances(rng, n, cells)
+    nuisance = {
+        name: offered[name] for name in rng.choice(list(offered), int(rng.integers(0, 4)), replace=False)
+    }
+    blocks = None if rng.random() < 0.6 else rng.integers(0, max(n // 2, 1), n)
+    back = np.maximum(np.arange(n) - rng.integers(1, 5, n), -1)
+    with contextlib.suppress(BadInput, NotTestable):
+        found = contrast(values, cells=cells, a=[0, 2], b=[1, 3], nuisance=nuisance, blocks=blocks)
+        assert np.isfinite([x for x in vars(found).values() if isinstance(x, float)]).all()
+        assert found.estimable == (found.reason is None)
+    with contextlib.suppress(BadInput, NotTestable):
+        number = effective_number(
+            values, cells=cells, nuisance=nuisance, parents=back, duplicates=rng.integers(0, n, n)
+        )
+        assert np.isfinite(
+            [number.n_effective, number.loss_low, number.loss_high, *number.parts.values()]
+        ).all()
+        assert np.prod(list(number.parts.values())) == pytest.approx(number.n_effective / n, rel=1e-6)

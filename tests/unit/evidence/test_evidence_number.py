@@ -6,6 +6,9 @@ from scipy.signal import lfilter
 
 from auditd.errors import BadInput, NotTestable
 from auditd.evidence import effective_number, evidence_loss
+from auditd.evidence.chains import within
+from auditd.evidence.inputs import as_codes
+from auditd.evidence.sequence import initial_sequence
 
 
 @pytest.fixture
@@ -231,3 +234,22 @@ def test_one_side_without_the_other_is_refused(rng):
     """A comparison needs both sides."""
     with pytest.raises(BadInput, match="both"):
         evidence_loss(rng.standard_normal(10), cells=[0] * 10, a=0)
+
+
+def test_a_memory_that_no_autoregression_fits_is_read_off(rng):
+    """Means of forty neighbours: the variance of the mean is forty times that of independent runs."""
+    values = np.convolve(rng.standard_normal(20_039), np.ones(40), mode="valid")
+    found = effective_number(values, cells=[0] * 20_000)
+    assert found.n_effective == pytest.approx(500, rel=0.5)
+    assert found.detail["order"] > 1
+
+
+def test_the_initial_sequence_of_an_autoregression(rng):
+    """Geyer (1992): positive, falling in pairs, and φ^k at small lags; over two chains as over one."""
+    values = lfilter([1.0], [1.0, -0.7], rng.standard_normal((2, 20_000)))
+    codes = as_codes(np.repeat([0, 1], 20_000), 40_000, "chain")
+    found = initial_sequence(values.ravel() - values.mean(), within(codes, "chain"), 200)
+    assert found.autocorrelations(4) == pytest.approx(0.7 ** np.arange(1, 5), abs=0.04)
+    pairs = np.append(1.0, found.values)[: 2 * (found.order // 2) + 2].reshape(-1, 2).sum(axis=1)
+    assert (np.diff(pairs) <= 1e-12).all()
+    assert (found.autocorrelations(400)[250:] == 0).all()
