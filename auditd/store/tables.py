@@ -107,14 +107,6 @@ runs = Table(
     Column("digest", LargeBinary, nullable=False),
 )
 
-chunks = Table(
-    "chunks",
-    metadata,
-    Column("first_position", BigInteger, primary_key=True),
-    Column("n_runs", Integer, nullable=False),
-    Column("body", LargeBinary, nullable=False),
-)
-
 refusals = Table(
     "refusals",
     metadata,

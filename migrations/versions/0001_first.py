@@ -56,13 +56,6 @@ def upgrade() -> None:
         sa.PrimaryKeyConstraint("name"),
     )
     op.create_table(
-        "chunks",
-        sa.Column("first_position", sa.BigInteger(), nullable=False),
-        sa.Column("n_runs", sa.Integer(), nullable=False),
-        sa.Column("body", sa.LargeBinary(), nullable=False),
-        sa.PrimaryKeyConstraint("first_position"),
-    )
-    op.create_table(
         "configs",
         sa.Column(
             "row", sa.BigInteger().with_variant(sa.Integer(), "sqlite"), autoincrement=True, nullable=False
