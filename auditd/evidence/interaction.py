@@ -44,7 +44,9 @@ class Interaction:
     pvalue: float
 
 
-def judge(model: Model, place: int, phi: float, ridge: Floats, base_estimate: float) -> Interaction | None:
+def judge_slopes(
+    model: Model, place: int, phi: float, ridge: Floats, base_estimate: float
+) -> Interaction | None:
     """Fit the slopes of one nuisance at a given φ; None where runs are too few to tell them from error."""
     from scipy.special import fdtrc
 

@@ -9,10 +9,11 @@ import numpy as np
 from auditd.evidence.fit import Model, errors_of, weigh_parameters
 from auditd.evidence.higher import choose_order, looks_white, whitened_fit
 from auditd.evidence.inputs import Floats
-from auditd.evidence.interaction import Interaction, judge
+from auditd.evidence.interaction import Interaction, judge_slopes
 from auditd.evidence.mixture import half_width
 from auditd.evidence.posterior import Posterior
-from auditd.evidence.spread import by_side
+from auditd.evidence.restricted import Fits
+from auditd.evidence.spread import SideSpread, by_side
 
 ROBUST_T = 0.975  # where interactions of several nuisances are ranked by the width that they give
 
@@ -52,17 +53,8 @@ def solve(model: Model, confidence: float) -> Solution:
     posterior, others, lead = weigh_parameters(model)
     fits, best = posterior.fits, posterior.best
     phi = float(posterior.phi[best])
-    nu = float(model.moments.n - model.n_fixed)
     error, weight = errors_of(model, fits.coefficients[best], fits.leverage[best], phi)
-    spread = by_side(
-        error,
-        weight,
-        model.problem.side,
-        model.problem.cell,
-        float(fits.unit[best]),
-        float(fits.sigma2[best]),
-        nu,
-    )
+    spread = _spread(model, fits, best, error, weight)
     centre = posterior.mean(fits.estimate)
     variances = fits.unit * fits.sigma2 * spread.ratio
     half = half_width(centre, fits.estimate, np.sqrt(variances), posterior.weight, spread.df, confidence)
@@ -87,12 +79,27 @@ def solve(model: Model, confidence: float) -> Solution:
         interaction=None,
         order=1 if longer is None else longer.order,
     )
-    own = [judge(model, place, phi, ridge, float(fits.estimate[best])) for place in model.columns.slopes]
+    own = [
+        judge_slopes(model, place, phi, ridge, float(fits.estimate[best])) for place in model.columns.slopes
+    ]
     scatter = _widest(own)
     if scatter is None:
         return solution
     factor = scatter.variance / float(fits.unit[best] * fits.sigma2[best])
     return _scattered(solution, scatter, factor, 1 / (1 / scatter.df + 0.5 * uncertainty), confidence)
+
+
+def _spread(model: Model, fits: Fits, best: int, error: Floats, weight: Floats) -> SideSpread:
+    """Unequal spread of the sides at the best grid point."""
+    return by_side(
+        error,
+        weight,
+        model.problem.side,
+        model.problem.cell,
+        float(fits.unit[best]),
+        float(fits.sigma2[best]),
+        float(model.moments.n - model.n_fixed),
+    )
 
 
 def _scattered(
