@@ -21,9 +21,7 @@ from auditd.evidence.restricted import evaluate
 
 MIN_SEGMENT_RUNS = 8  # runs on each side of a step
 MAX_SEGMENTS = 12  # in one chain; more is not a step but a wander, left to the autocorrelation
-RATIO = (
-    25.0  # 2·log-likelihood ratio a step needs: an AR(1) alone exceeds it in < 0.5 % of chains (simulated)
-)
+RATIO = 25.0  # 2·log-likelihood ratio of a step: an AR(1) alone exceeds it in < 0.5 % of chains (simulated)
 WHITE_RATIO = 12.0  # squared standardised deviation below which no step can reach RATIO even in white noise
 MIN_CHAIN_RUNS = 3 * MIN_SEGMENT_RUNS
 PHI_NODES = 1 - 2 * np.linspace(0.22, 0.99, 32) ** 5  # grid of φ from 0.999 down to −0.9, finest near 1
