@@ -5,9 +5,11 @@ import pytest
 
 from auditd.sequential.earlier_counts import count_earlier
 from auditd.sequential.latest_sum import log_sum_of_latest
+from auditd.sequential.levels import LevelCodes, group
+from auditd.sequential.levels_alone import LevelsAlone
 from auditd.sequential.recurrence import solve_recurrence
 from auditd.sequential.start_weights import log_start_weight, log_unstarted
-from auditd.sequential.wealth import grow_wealth
+from auditd.sequential.wealth import StartMixture, grow_wealth
 
 
 @pytest.mark.parametrize("scale", [0.1, 3.0, 80.0])
@@ -65,3 +67,36 @@ def test_start_weights_and_what_has_not_started_sum_to_one():
     count = np.arange(1, 3001)
     spent = np.cumsum(np.exp(log_start_weight(count)))
     np.testing.assert_allclose(np.exp(log_unstarted(count)), 1.0 - spent, atol=1e-12)
+
+
+@pytest.mark.parametrize("n_levels", [1, 5, 120])
+def test_masses_are_spent_once_whatever_the_levels(n_levels):
+    """Bets that neither win nor lose (L = 1) leave every family at exactly 1, over the order and over levels."""
+    rng = np.random.default_rng(4)
+    families = (("serial", 2), ("drift", 3))
+    joint, alone = StartMixture(families), LevelsAlone(families)
+    earlier = np.zeros(0, dtype=np.int64)
+    codes = LevelCodes()
+    for begin in (0, 1, 40, 300):
+        n = {0: 1, 1: 39, 40: 260, 300: 500}[begin]
+        code = codes.encode([str(level) for level in rng.integers(n_levels, size=n)])
+        earlier = np.append(earlier, np.zeros(len(codes) - earlier.size, dtype=np.int64))
+        count = np.arange(begin + 1, begin + n + 1)
+        np.testing.assert_allclose(joint.follow(np.zeros((5, n)), count), 0.0, atol=1e-12)
+        np.testing.assert_allclose(
+            alone.follow(np.zeros((5, n)), count, group(code, earlier)), 0.0, atol=1e-12
+        )
+        earlier = earlier + np.bincount(code, minlength=earlier.size)
+
+
+def test_one_level_alone_wins_with_its_own_runs_only():
+    """Level 1's bets double each run: the family's wealth is that level's, and it is the level named."""
+    alone = LevelsAlone((("drift", 1),))
+    code = np.array([0, 1, 0, 1, 1, 0])
+    log_l = np.log(np.where(code == 1, 2.0, 1.0))[None, :]
+    alone.follow(log_l, np.arange(1, 7), group(code, np.zeros(2, dtype=np.int64)))
+    wealth = alone.level_log_wealth(0, 5)
+    assert int(np.argmax(wealth)) == 1
+    start = np.exp(log_start_weight(np.arange(1, 7)))
+    expected = 8 * (0.25 / 6 + 0.75 * start[1]) + 4 * 0.75 * start[3] + 2 * 0.75 * start[4]
+    assert np.exp(wealth[1]) == pytest.approx(expected, rel=1e-12)
