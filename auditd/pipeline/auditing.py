@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Iterator, Sequence
 from itertools import islice
 
-from sqlalchemy import Connection, func, select
+from sqlalchemy import Connection, select
 
 from auditd.pipeline.budget import epoch_budget, shares
 from auditd.pipeline.entries import Entries
@@ -45,7 +45,8 @@ class Audit:
         self.epoch = epochs[-1]
         in_blocks = plan.seeds.role == "block"
         self.first_position = self.epoch.from_position if in_blocks else _first_position(epochs)
-        self.withheld = withheld(plan, ordered=_is_ordered(connection))
+        self.ordered = _is_ordered(connection, self.first_position)
+        self.withheld = withheld(plan, ordered=self.ordered)
         self.responses = response_names(plan)
         asides = stored_answers(connection, answers.c.action == "set-aside")
         self._entries = Entries(plan, epochs, asides, self.first_position)
@@ -62,6 +63,10 @@ class Audit:
         for start in range(0, len(entered), N_RUNS_A_BLOCK):
             found += self._advance_block(entered[start : start + N_RUNS_A_BLOCK])
         return sorted(found, key=lambda raised: (raised.index, self.responses.index(raised.response)))
+
+    def has_begun(self) -> bool:
+        """Whether any run was audited in this epoch."""
+        return any(track.auditor.n_runs for track in self.tracks)
 
     def n_scored(self) -> int:
         """Return how many runs have been scored, of the response with the most."""
@@ -184,9 +189,10 @@ def _options(
     )
 
 
-def _is_ordered(connection: Connection) -> bool:
-    """Whether an order can be established for the runs that are in the store."""
-    return connection.execute(select(func.count()).where(~runs.c.ordered)).scalar_one() == 0
+def _is_ordered(connection: Connection, first_position: int) -> bool:
+    """Whether the epoch's runs have an order: its first run says; an epoch without runs may have one."""
+    stated = connection.execute(select(runs.c.ordered).where(runs.c.position == first_position)).scalar()
+    return stated is not False
 
 
 def _placed(connection: Connection, first: int, until: int) -> Iterator[StoredRun]:

@@ -5,8 +5,9 @@ from __future__ import annotations
 from auditd.errors import BadInput, NotTestable
 from auditd.pipeline.circumstances import circumstances
 from auditd.pipeline.comparing import Question, losses, planned_questions, touches
-from auditd.plan import Plan
-from auditd.records import Finding, Grade
+from auditd.pipeline.redating import affected_runs
+from auditd.plan import AUTO_RESPONSES, Plan
+from auditd.records import GRADES, Finding, Grade
 from auditd.series.table import RunTable
 from auditd.verdicts.cautions import Consequence
 from auditd.verdicts.grades import grade
@@ -28,16 +29,23 @@ def consequence_of(finding: Finding, table: RunTable, plan: Plan) -> tuple[Conse
         loss, low = by_cells
     else:
         return Consequence(n_cells=len(table.cells.levels)), None
-    along = table.nuisance.get(finding.along or "")
     return (
-        Consequence(
-            loss=min(max(float(loss), 0.0), 1.0),
-            n_lost=n_lost,
-            n_cells=max(len(table.cells.levels), 1),
-            n_levels=1 if along is None else max(len(along.levels), 1),
-        ),
+        _consequence(finding, table, plan, min(max(float(loss), 0.0), 1.0), n_lost),
         min(max(float(low or 0.0), 0.0), 1.0),
     )
+
+
+def _consequence(
+    finding: Finding, table: RunTable, plan: Plan, loss: float, n_lost: float | None
+) -> Consequence:
+    """Return what is to be repeated: never more runs than the finding is about, in blocks that fit them."""
+    n_cells = len(finding.cells) or max(len(table.cells.levels), 1)
+    along = table.nuisance.get(finding.along or "")
+    n_levels = 1 if along is None else max(len(along.levels), 1)
+    if n_lost is not None:
+        n_lost = min(n_lost, float(affected_runs(finding, table, plan)))
+        n_levels = max(min(n_levels, int(n_lost // n_cells)), 1)
+    return Consequence(loss=loss, n_lost=n_lost, n_cells=n_cells, n_levels=n_levels)
 
 
 def _of_cells(response: str, table: RunTable, plan: Plan) -> tuple[float | None, tuple[float, float] | None]:
@@ -63,13 +71,27 @@ def grade_of(finding: Finding, table: RunTable, plan: Plan, loss_low: float | No
         for response in {one.response for one in touched}:
             found = [one for question, one in losses(table, plan, response) if question in touched]
             estimable = estimable and all(one is None or one.estimable for one in found)
-    return grade(
+    graded = grade(
         finding,
         loss_low=loss_low,
         touches_planned=bool(touched),
         estimable=estimable,
         beyond_margin=_beyond_margin(finding, plan),
     )
+    return _capped(graded, finding) if finding.response in AUTO_RESPONSES and not touched else graded
+
+
+def _capped(found: Grade, finding: Finding) -> Grade:
+    """Grade an automatic response that no comparison is about: material at most, a note without an effect."""
+    effect = finding.effect
+    if (
+        effect is not None
+        and effect.low is not None
+        and effect.high is not None
+        and effect.low <= 0 <= effect.high
+    ):
+        return "note"
+    return min(found, "material", key=GRADES.index)
 
 
 def _is_touched(question: Question, finding: Finding, table: RunTable, plan: Plan) -> bool:

@@ -14,6 +14,7 @@ from auditd.pipeline.auditing import Audit
 from auditd.pipeline.consequences import consequence_of, grade_of
 from auditd.pipeline.dates import changes, dated
 from auditd.pipeline.effects import effect_of
+from auditd.pipeline.redating import seen_anew
 from auditd.pipeline.tracks import Raised
 from auditd.plan import Plan
 from auditd.records import GRADES, Caution, Finding, Listed
@@ -86,7 +87,7 @@ class Raiser:
             under = self._leader(raised)
             if under is not None:
                 self._list_under(connection, under, finding)
-            elif raised.alarm.replaces is not None and self._take_over(connection, raised, finding, table):
+            elif raised.alarm.replaces is not None and self._take_over(connection, raised, finding):
                 continue
             else:
                 n_new += self._raise(connection, finding, table)
@@ -121,7 +122,8 @@ class Raiser:
         """
         best: tuple[float, Raised] | None = None
         for track, raised in audit.raised_so_far():
-            if self._of_key.get(key_of(raised, *raised.alarm.key)) != one.id:
+            same = self._of_key.get(key_of(raised, *raised.alarm.key)) == one.id
+            if not same or raised.response != one.finding.response:
                 continue
             evidence = track.auditor.log_e[raised.alarm.key]
             if best is None or evidence > best[0]:
@@ -136,8 +138,9 @@ class Raiser:
         )
 
     def _regrade_one(self, connection: Connection, one: Caution, table: RunTable) -> None:
-        effect = effect_of(one.finding, table, self._plan)
-        finding = msgspec.structs.replace(one.finding, effect=effect or one.finding.effect, message="")
+        finding = seen_anew(one.finding, table, self._plan)
+        effect = effect_of(finding, table, self._plan)
+        finding = msgspec.structs.replace(finding, effect=effect or one.finding.effect, message="")
         consequence, loss_low = consequence_of(finding, table, self._plan)
         hold = self._holds.setdefault(one.id, GradeHold(held=one.grade))
         grade = hold.observe(int(table.positions.max()), grade_of(finding, table, self._plan, loss_low))
@@ -195,17 +198,13 @@ class Raiser:
         known = self._of_key.get(key_of(raised, *raised.alarm.under))
         return None if known is None else self._cautions[known]
 
-    def _take_over(self, connection: Connection, raised: Raised, finding: Finding, table: RunTable) -> bool:
-        """Let a better name lead a standing warning, which keeps its id and lists the former leader."""
+    def _take_over(self, connection: Connection, raised: Raised, finding: Finding) -> bool:
+        """List a better name under a standing warning; `regrade` lets it lead once it has the evidence."""
         kind, along = raised.alarm.replaces or ("", "")
         known = self._of_key.get(key_of(raised, kind, along))
         if known is None:
             return False
-        former = self._cautions[known]
-        listed = (_listed(former.finding), *former.finding.explains)
-        finding = msgspec.structs.replace(finding, key=former.finding.key, explains=_distinct(listed))
-        self._of_key[key_of(raised, *raised.alarm.key)] = known
-        self._renew(connection, former, finding, table)
+        self._list_under(connection, self._cautions[known], finding)
         return True
 
     def _renew(self, connection: Connection, known: Caution, finding: Finding, table: RunTable) -> None:

@@ -62,7 +62,8 @@ def _landed(facts: ReportFacts, n_refused: int) -> str:
     done = int(facts.table.completed.sum())
     waiting = facts.n_runs - facts.n_placed - facts.n_late
     parts = [f"{_count(facts.n_runs, 'run')} landed, of which {done:,} completed"]
-    parts += [f"{count:,} {word}" for count, word in ((n_refused, "records were refused"),) if count]
+    if n_refused:
+        parts.append(f"{_count(n_refused, 'record')} {'was' if n_refused == 1 else 'were'} refused")
     if waiting:
         parts.append(f"{waiting:,} wait for a place in the order and are not audited yet")
     if facts.n_late:

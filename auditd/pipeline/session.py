@@ -40,6 +40,8 @@ from auditd.store.tables import runs
 CHECKPOINT_EVERY_RUNS = 500
 """Placed runs between two saved states; after a kill so many are audited again."""
 CHECKPOINT_EVERY_S = 60.0
+TABLES = (".csv", ".tsv", ".parquet", ".json")
+"""Files whose rows, landing whole, tell no order; lines of a log do, since they were written one by one."""
 
 
 class Taken(msgspec.Struct, kw_only=True):
@@ -81,8 +83,10 @@ class Session:
             self._configs = ConfigRows()
             findings = self._replay(connection)
             self.raiser = Raiser(self.plan, connection)
-            self.totals.n_raised += self.raiser.raise_missing(connection, findings)
             self.audit = Audit(self.plan, connection, self._next_position)
+            if not self.audit.ordered:
+                findings = [one for one in findings if not _claims_order(one)]
+            self.totals.n_raised += self.raiser.raise_missing(connection, findings)
         self._n_since_checkpoint = 0
         self._checkpoint_at = time.monotonic()
 
@@ -221,7 +225,11 @@ class Session:
         for stored in entered:
             findings += self.facts.placed(stored.run, stored.position or 0)
         findings += self.facts.standing()
+        if entered and not entered[0].ordered:
+            findings = [one for one in findings if not _claims_order(one)]
         self.totals.n_raised += self.raiser.raise_facts(connection, findings)
+        if entered and not self.audit.has_begun() and not entered[0].ordered and self.audit.ordered:
+            self.audit = Audit(self.plan, connection, first)  # its first run says that there is no order
         alarms = self.audit.advance(entered)
         self.totals.n_raised += self.raiser.raise_alarms(connection, alarms)
         self._n_since_checkpoint += len(entered)
@@ -247,8 +255,14 @@ class Session:
         """
         if self.placer.by != "arrival" or self.plan.order.by == "arrival":
             return True
-        return batch.change == "append" or n_runs <= 1
+        is_table = batch.source.path.lower().endswith(TABLES)
+        return not is_table or batch.change == "append" or n_runs <= 1
 
     def _has_replies(self) -> bool:
         with self.campaign.engine.connect() as connection:
             return apply_answers(connection, self.plan, self._next_position, only_ask=True)
+
+
+def _claims_order(finding: Finding) -> bool:
+    """Whether a finding is about the order of runs, which runs of a whole table do not have."""
+    return finding.kind == "order" or (finding.kind == "failure" and finding.along in {None, "order"})

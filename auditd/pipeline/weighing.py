@@ -10,7 +10,6 @@ from typing import Any
 import numpy as np
 from sqlalchemy import Connection
 
-from auditd.checks.duplicates import duplicate_groups
 from auditd.errors import BadInput, NotTestable
 from auditd.pipeline.asking import Document
 from auditd.pipeline.auditing import ORDER_KINDS, Audit
@@ -22,7 +21,7 @@ from auditd.pipeline.session import Session
 from auditd.plan import Plan
 from auditd.series.load import load_table
 from auditd.series.strips import strip
-from auditd.series.table import RunTable, Series
+from auditd.series.table import Ints, RunTable, Series
 from auditd.store.clock import now_us
 from auditd.store.states import save_display
 
@@ -35,6 +34,10 @@ STALE_S = 60.0
 REST_MAX_S = 900.0
 
 
+N_CELL_OWN = 50
+"""Runs of a cell from which its worth is computed from its own runs …"""
+N_CELLS_OWN = 50
+"""… in a campaign of so many cells at most."""
 STEERED = (
     "results decide what runs next (design.allocation), and no stage is stated: even independent runs would "
     "alarm, so the sequential audit is withheld; state design.stage"
@@ -134,21 +137,33 @@ def weigh(table: RunTable, plan: Plan, response: str) -> Document | None:
 
 
 def _by_cell(table: RunTable, series: Series, worth: float) -> list[Document]:
-    """Return each cell's runs and their worth, at the response's rate; duplicates counted cell by cell."""
-    groups = duplicate_groups(table)[series.row]
+    """Return each cell's runs and their worth: by its own runs where they suffice, else the whole rate."""
+    from auditd.evidence import effective_number
+
+    known = circumstances(table, series)
+    codes = np.unique(series.cells.codes)
     found = []
-    for code in np.unique(series.cells.codes):
-        of_cell = series.cells.codes == code
-        n = int(of_cell.sum())
-        n_distinct = len(np.unique(groups[of_cell]))
-        found.append(
-            {
-                "cell": dict(table.cell_values[code]),
-                "n": n,
-                "n_effective": min(float(n_distinct), n * worth),
-            }
-        )
+    for code in codes:
+        of_cell = np.flatnonzero(series.cells.codes == code)
+        n = len(of_cell)
+        n_effective = min(float(len(np.unique(known["duplicates"][of_cell]))), n * worth)
+        if n >= N_CELL_OWN and len(codes) <= N_CELLS_OWN and table.parents is None:
+            own = _of_cell(known, of_cell)
+            try:
+                n_effective = effective_number(series.values[of_cell], **own).n_effective
+            except (NotTestable, BadInput):  # constant, say: one result again and again
+                n_effective = min(n_effective, float(len(np.unique(known["duplicates"][of_cell]))))
+        found.append({"cell": dict(table.cell_values[code]), "n": n, "n_effective": n_effective})
     return found
+
+
+def _of_cell(known: dict[str, Any], rows: Ints) -> dict[str, Any]:
+    nuisance = {name: labels[rows] for name, labels in known["nuisance"].items()}
+    return {
+        "cells": known["cells"][rows],
+        "nuisance": {name: labels for name, labels in nuisance.items() if len(set(labels.tolist())) > 1},
+        "duplicates": known["duplicates"][rows],
+    }
 
 
 def _status_of(
