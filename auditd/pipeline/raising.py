@@ -14,7 +14,7 @@ from auditd.pipeline.auditing import Audit
 from auditd.pipeline.consequences import consequence_of, grade_of
 from auditd.pipeline.dates import changes, dated
 from auditd.pipeline.effects import effect_of
-from auditd.pipeline.redating import seen_anew
+from auditd.pipeline.redating import not_before_its_level, seen_anew
 from auditd.pipeline.tracks import Raised
 from auditd.plan import Plan
 from auditd.records import GRADES, Caution, Finding, Listed
@@ -290,6 +290,7 @@ def finding_of(raised: Raised, table: RunTable, plan: Plan) -> Finding:
             Listed(kind=one.kind, along=one.along, level=one.level, log_e=one.log_e) for one in alarm.explains
         ),
     )
+    finding = not_before_its_level(finding, table)
     return msgspec.structs.replace(finding, effect=effect_of(finding, table, plan))
 
 

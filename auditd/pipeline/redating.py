@@ -134,6 +134,23 @@ def _differs(inside: Floats, outside: Floats, margin: float | None) -> bool:
     return abs(shift) + 2 * error > bound
 
 
+def not_before_its_level(finding: Finding, table: RunTable) -> Finding:
+    """Return a finding on a level dated no earlier than the level's first run."""
+    coded = table.nuisance.get(finding.along or "")
+    if coded is None or finding.level not in coded.levels or finding.since is None:
+        return finding
+    on_level = table.positions[(coded.codes == coded.levels.index(finding.level)) & (table.positions >= 0)]
+    if len(on_level) == 0:
+        return finding
+    first = int(on_level.min())
+    return msgspec.structs.replace(
+        finding,
+        since=max(finding.since, first),
+        since_low=max(finding.since_low or 0, first),
+        since_high=max(finding.since_high or 0, first),
+    )
+
+
 def affected_runs(finding: Finding, table: RunTable, plan: Plan) -> int:
     """Return how many runs a finding is about: those of its level and cells since it began."""
     if finding.response is None:
