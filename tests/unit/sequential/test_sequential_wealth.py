@@ -71,7 +71,7 @@ def test_start_weights_and_what_has_not_started_sum_to_one():
 
 @pytest.mark.parametrize("n_levels", [1, 5, 120])
 def test_masses_are_spent_once_whatever_the_levels(n_levels):
-    """Bets that neither win nor lose (L = 1) leave every family at exactly 1, over the order and over levels."""
+    """Bets that neither win nor lose (L = 1) leave every family at exactly 1, over order and levels."""
     rng = np.random.default_rng(4)
     families = (("serial", 2), ("drift", 3))
     joint, alone = StartMixture(families), LevelsAlone(families)
@@ -83,9 +83,8 @@ def test_masses_are_spent_once_whatever_the_levels(n_levels):
         earlier = np.append(earlier, np.zeros(len(codes) - earlier.size, dtype=np.int64))
         count = np.arange(begin + 1, begin + n + 1)
         np.testing.assert_allclose(joint.follow(np.zeros((5, n)), count), 0.0, atol=1e-12)
-        np.testing.assert_allclose(
-            alone.follow(np.zeros((5, n)), count, group(code, earlier)), 0.0, atol=1e-12
-        )
+        followed = alone.follow(np.zeros((5, n)), count, group(code, earlier))
+        np.testing.assert_allclose(followed, 0.0, atol=1e-12)
         earlier = earlier + np.bincount(code, minlength=earlier.size)
 
 
