@@ -91,15 +91,16 @@ class Session:
         self._checkpoint_at = time.monotonic()
 
     def _replay(self, connection: Connection) -> list[Finding]:
-        """Tell placer and facts of every stored run, in the order in which they first heard of them."""
-        placed: list[StoredRun] = []
+        """Tell placer and facts of every stored run, in the order in which they first heard of them.
+
+        The runs are read twice, by arrival and by place, so that they are not all in memory at once.
+        """
         findings: list[Finding] = []
-        for stored in stored_runs(connection, runs.c.arrival.is_not(None)):
+        for stored in stored_runs(connection, runs.c.arrival.is_not(None), with_metadata=False):
             self.placer.restore([stored])
             findings += self.facts.arrived(stored.run, stored.arrival or 0)
-            if stored.position is not None:
-                placed.append(stored)
-        for stored in sorted(placed, key=lambda run: run.position or 0):
+        placed = runs.c.position.is_not(None)
+        for stored in stored_runs(connection, placed, order=runs.c.position, with_metadata=False):
             findings += self.facts.placed(stored.run, stored.position or 0)
         for kept in stored_refusals(connection, oldest_first=True):
             findings += self.facts.refused(kept.refusal)

@@ -104,8 +104,9 @@ def _level(key: Key, at: int, book: Book, series: ScoredSeries, n_scored: int) -
         return None
     evidence = book.level_log_wealth(key, at)
     if evidence is None:
-        code = history.codes(key[1])[:n_scored]
-        total = np.bincount(code, weights=history.z[history.index[:n_scored]])
+        window = np.arange(max(0, n_scored - N_RUNS_DATED), n_scored)
+        code = history.codes(key[1])[window]
+        total = np.bincount(code, weights=history.z[history.index[window]])
         evidence = total**2 / np.maximum(np.bincount(code), 1)
     return list(levels[key[1]])[int(np.argmax(evidence))]
 

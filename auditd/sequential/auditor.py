@@ -13,6 +13,7 @@ from auditd.sequential.alarm import Alarm, Crossing, Key, crossings
 from auditd.sequential.alarm_report import describe
 from auditd.sequential.audit_dump import AuditDump, dump_bytes, dump_from
 from auditd.sequential.book import Book
+from auditd.sequential.history import N_RUNS_A_PART
 from auditd.sequential.naming import choose_leader, shift_evidence
 from auditd.sequential.options import Options
 from auditd.sequential.run_block import RunBlock, run_block
@@ -23,7 +24,7 @@ from auditd.sequential.wealth import log_sum
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
-N_RUNS_AT_ONCE = 2048
+N_RUNS_AT_ONCE = N_RUNS_A_PART
 """Runs bet on at once: the arrays of a grid stay within a core's cache."""
 
 

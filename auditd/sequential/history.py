@@ -1,118 +1,84 @@
-"""Scores and labels of an epoch's runs so far: for parents' scores and for dating an alarm."""
+"""Scores and labels of an epoch's newest runs: for parents' scores and for dating an alarm."""
 
 from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
 
+from auditd.sequential.dating import N_RUNS_DATED
+from auditd.sequential.latest_rows import LatestRows
 from auditd.sequential.scored_block import ScoredBlock
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
-
-class Column:
-    """An array that grows at its end."""
-
-    def __init__(self, dtype: type[np.generic]) -> None:
-        self._held = np.empty(1024, dtype=dtype)
-        self._n = 0
-
-    def extend(self, values: npt.NDArray[np.generic]) -> None:
-        """Append values."""
-        end = self._n + values.size
-        if end > self._held.size:
-            wider = np.empty(2 * end, dtype=self._held.dtype)
-            wider[: self._n] = self._held[: self._n]
-            self._held = wider
-        self._held[self._n : end] = values
-        self._n = end
-
-    def clear(self) -> None:
-        """Hold nothing."""
-        self._n = 0
-
-    @property
-    def values(self) -> npt.NDArray[np.generic]:
-        """What is held, as a view."""
-        return self._held[: self._n]
+N_RUNS_A_PART = 2048
+"""The most runs that are taken before an alarm among them is described."""
+N_RUNS_KEPT = N_RUNS_DATED + N_RUNS_A_PART
+"""Scored runs kept: those that an alarm looks back on, from any run of the part that was taken last."""
 
 
 class History:
-    """Columns of an epoch.
+    """Columns of an epoch: rows by the number of a scored run, or of any run where said.
+
+    Only the newest scored runs are kept; where runs state parents, which may lie far back, the scores of all
+    runs are.
 
     Attributes
     ----------
-    z : scores of all runs, NaN where not scored.
-    index : index of each scored run.
-    times : times of the scored runs.
-    codes : level codes of the scored runs, by nuisance.
+    z, reliability : scores of runs, by the number of the run; NaN and 0 where not scored.
+    index : number of the run of each scored run.
+    times : times of the scored runs, NaN where unknown.
+    parent_z, parent_reliability : parents' scores of the scored runs, NaN and 0 where there is none.
     """
 
-    def __init__(self, nuisances: tuple[str, ...]) -> None:
-        self._z = Column(np.float64)
-        self._index = Column(np.int64)
-        self._times = Column(np.float64)
-        self._reliability = Column(np.float64)
-        self._parent_z = Column(np.float64)
-        self._parent_reliability = Column(np.float64)
-        self._codes = {name: Column(np.int32) for name in nuisances}
+    def __init__(self, nuisances: tuple[str, ...], *, has_parents: bool) -> None:
+        self._has_parents = has_parents
+        self.z = LatestRows(np.float64)
+        self.reliability = LatestRows(np.float64)
+        self.index = LatestRows(np.int64)
+        self.times = LatestRows(np.float64)
+        self.parent_z = LatestRows(np.float64)
+        self.parent_reliability = LatestRows(np.float64)
+        self._codes = {name: LatestRows(np.int32) for name in nuisances}
+        self._n_scored = 0
+
+    def codes(self, nuisance: str) -> LatestRows[np.int32]:
+        """Level codes of the scored runs."""
+        return self._codes[nuisance]
 
     def add_scores(self, z: FloatArray, reliability: FloatArray) -> None:
         """Append the scores of all runs of a block."""
-        self._z.extend(z)
-        self._reliability.extend(reliability)
+        self.z.extend(z)
+        self.reliability.extend(reliability)
 
     def add_scored(self, index: IntArray, scored: ScoredBlock) -> None:
-        """Append what is known of a block's scored runs."""
-        self._index.extend(index)
-        self._times.extend(scored.times)
-        self._parent_z.extend(scored.parent_z)
-        self._parent_reliability.extend(scored.parent_reliability)
+        """Append what is known of a block's scored runs, and forget what is too old to be looked at."""
+        self.index.extend(index)
+        self.times.extend(scored.times)
+        self.parent_z.extend(scored.parent_z)
+        self.parent_reliability.extend(scored.parent_reliability)
         for name, column in self._codes.items():
             column.extend(scored.groups[name].code)
+        self._n_scored += index.size
+        self._forget_old()
 
     def forget_scored(self) -> None:
         """Drop what dating looks at; the scores of all runs stay, for parents."""
-        for column in (
-            self._index,
-            self._times,
-            self._parent_z,
-            self._parent_reliability,
-            *self._codes.values(),
-        ):
+        self._n_scored = 0
+        for column in self._of_scored():
             column.clear()
 
-    @property
-    def z(self) -> FloatArray:
-        """Scores of all runs."""
-        return self._z.values  # type: ignore[return-value]
+    def _forget_old(self) -> None:
+        oldest = self._n_scored - N_RUNS_KEPT
+        if oldest <= self.index.start:
+            return
+        if not self._has_parents:
+            first_run = int(self.index[oldest])
+            self.z.forget_before(first_run)
+            self.reliability.forget_before(first_run)
+        for column in self._of_scored():
+            column.forget_before(oldest)
 
-    @property
-    def index(self) -> IntArray:
-        """Indices of the scored runs."""
-        return self._index.values  # type: ignore[return-value]
-
-    @property
-    def reliability(self) -> FloatArray:
-        """Reliability of the scores of all runs, 0 where not scored."""
-        return self._reliability.values  # type: ignore[return-value]
-
-    @property
-    def times(self) -> FloatArray:
-        """Times of the scored runs, NaN where unknown."""
-        return self._times.values  # type: ignore[return-value]
-
-    @property
-    def parent_z(self) -> FloatArray:
-        """Parents' scores of the scored runs, NaN where there is none."""
-        return self._parent_z.values  # type: ignore[return-value]
-
-    @property
-    def parent_reliability(self) -> FloatArray:
-        """Reliability of the parents' scores."""
-        return self._parent_reliability.values  # type: ignore[return-value]
-
-    def codes(self, nuisance: str) -> IntArray:
-        """Level codes of the scored runs."""
-        return self._codes[nuisance].values  # type: ignore[return-value]
+    def _of_scored(self) -> tuple[LatestRows[np.float64] | LatestRows[np.int64] | LatestRows[np.int32], ...]:
+        return (self.index, self.times, self.parent_z, self.parent_reliability, *self._codes.values())

@@ -28,7 +28,7 @@ class ScoredSeries:
 
     def __init__(self, options: Options) -> None:
         self._has_parents = options.has_parents
-        self.history = History(options.nuisances)
+        self.history = History(options.nuisances, has_parents=options.has_parents)
         self.levels = {name: LevelCodes() for name in options.nuisances}
         self._n_in_level = {name: np.zeros(0, dtype=np.int64) for name in options.nuisances}
         self.n_runs = 0
