@@ -22,7 +22,6 @@ from auditd.store.tables import (
     beats,
     cautions,
     checkpoints,
-    chunks,
     configs,
     displays,
     epochs,
@@ -126,14 +125,6 @@ def _references(connection: Connection) -> list[str]:
     complaints = [
         f"the state {row.name!r} covers {row.position} runs, but {n_placed} have a place"
         for row in connection.execute(select(checkpoints).where(checkpoints.c.position > n_placed))
-    ]
-    complaints += [
-        f"the chunk at {row.first_position} ends beyond the last place {n_placed - 1}"
-        for row in connection.execute(
-            select(chunks.c.first_position, chunks.c.n_runs).where(
-                (chunks.c.n_runs < 1) | (chunks.c.first_position + chunks.c.n_runs > n_placed)
-            )
-        )
     ]
     complaints += _numbered(connection, plans.c.version, "plan versions")
     complaints += _numbered(connection, epochs.c.epoch, "epochs")
