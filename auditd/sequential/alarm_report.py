@@ -34,9 +34,6 @@ from auditd.sequential.scored_series import ScoredSeries
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
-SHIFT_PREFERRED = 4.0
-"""Nats by which one shift is preferred to a slow signal when a drift is dated."""
-
 LISTED_LOG_E = float(np.log(3.0))
 """Families below this log e-value show nothing worth listing beside a leader."""
 
@@ -121,13 +118,13 @@ def _dates(
         window = window[history.codes(along)[window] == levels[along][level]]
     index = history.index[window]
     z = history.z[index]
-    bets = fresh_bets(kind, along, within_one_level=level is not None)
-    weight = log_weight_of_bets(bets.log_bets(_block(z, window, history, kind, along)))
     if kind == "drift":
-        # A slow signal dates the start only where it explains the scores far better than one shift.
-        weight = np.logaddexp(weight - SHIFT_PREFERRED, log_weight_of_shift(z))
+        weight = log_weight_of_shift(z)
     elif kind == "spread":
         weight = log_weight_of_spread(z)
+    else:
+        bets = fresh_bets(kind, along, within_one_level=level is not None)
+        weight = log_weight_of_bets(bets.log_bets(_block(z, window, history, kind, along)))
     # Where the first run looked at cannot be excluded, no earlier one can.
     since, low, high = (int(index[at]) if at else 0 for at in starts_not_excluded(weight))
     return since, low, high

@@ -29,7 +29,7 @@ BATCH_WINDOW: Final = 200
 CLOCK_PERIOD_S: Final = (86_400.0, 604_800.0)
 """Seconds: a day and a week, the periods of machine rooms and of people."""
 
-CLOCK_VARIANCE: Final = (0.06, 0.3)
+CLOCK_VARIANCE: Final = (0.03, 0.15, 0.6)
 """Prior variances of the sine and of the cosine's coefficient."""
 
 CLOCK_N_PERIODS: Final = 3
