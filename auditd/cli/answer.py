@@ -8,6 +8,14 @@ from auditd.cli.options import plan_path, scope_of
 from auditd.cli.output import message
 from auditd.store.answers import Action
 
+EFFECTS: dict[Action, str] = {
+    "noted": "the reason is kept",
+    "set-aside": "the runs are left out of `evidence` and `compare`; the audit leaves out those to come",
+    "restart": "a new epoch begins with the next run",
+    "absorb": "a new epoch begins with the next run, the effect in its baseline",
+}
+"""What happens after an answer, by its action."""
+
 
 @click.command(epilog='Example: runaudit answer W7 "fan replaced at 14:00" --restart host=n3')
 @click.argument("warning", metavar="WARNING")
@@ -50,4 +58,4 @@ def answer(
     elif absorb:
         action = "absorb"
     reply(plan_path(context), warning, reason, action, scope)
-    message(f"{warning}: answered ({action})")
+    message(f"{warning}: answered ({action}); {EFFECTS[action]}")

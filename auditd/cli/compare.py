@@ -8,7 +8,7 @@ from typing import Any
 import click
 
 from auditd.cli.options import json_option, plan_path
-from auditd.cli.output import message, number, print_json, print_table, safe
+from auditd.cli.output import message, number, print_json, print_table, safe, worth
 
 WIDTH = 88
 """Columns of text on a terminal."""
@@ -46,8 +46,8 @@ def compare(context: click.Context, a: str | None, b: str | None, as_json: bool)
 
 def _print(found: list[dict[str, Any]]) -> None:  # comparisons' documents
     for one in found:
-        unit = f" {one['unit']}" if one.get("unit") else ""
-        scale = f" ({one['scale']} scale)" if one.get("scale", "linear") != "linear" else ""
+        scale = "" if one.get("scale", "linear") == "linear" else f" ({one['scale']} scale)"
+        unit = f" ({one['unit']})" if one.get("unit") and not scale else ""
         kind = "planned" if one["planned"] else "unplanned"
         click.echo(safe(f"{one['response']}{unit}{scale}: {one['b']} less {one['a']}  [{kind}]"))
         if one["estimable"]:
@@ -63,7 +63,7 @@ def _print_intervals(one: dict[str, Any]) -> None:  # a comparison's document
         return f"{number(one[low], 4)} to {number(one[high], 4)}"
 
     rows = [
-        ("  honest", number(one["estimate"], 4), interval("low", "high"), number(one["n_effective"])),
+        ("  honest", number(one["estimate"], 4), interval("low", "high"), worth(one["n_effective"])),
         ("  at any look", "", interval("low_any", "high_any"), ""),
         ("  naive", "", interval("naive_low", "naive_high"), str(one["n"])),
         ("  Hedges' g", number(one["hedges_g"]), interval("g_low", "g_high"), ""),

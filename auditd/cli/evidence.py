@@ -7,7 +7,7 @@ from typing import Any
 import click
 
 from auditd.cli.options import json_option, plan_path
-from auditd.cli.output import message, number, percent, print_json, print_table, safe
+from auditd.cli.output import message, percent, print_json, print_table, safe, worth
 from auditd.records import cell_label
 
 
@@ -39,7 +39,7 @@ def _print(document: dict[str, Any]) -> None:  # the JSON document
             (
                 name,
                 one["n"],
-                number(one["n_effective"]),
+                worth(one["n_effective"]),
                 percent(one["loss"]),
                 interval,
                 causes or "none found",
@@ -48,7 +48,7 @@ def _print(document: dict[str, Any]) -> None:  # the JSON document
     print_table(["response", "runs", "worth", "lost", "interval", "by"], rows, right=[1, 2, 3])
     for name, one in document["responses"].items():
         click.echo("")
-        cells = [(cell_label(cell["cell"]), cell["n"], number(cell["n_effective"])) for cell in one["cells"]]
+        cells = [(cell_label(cell["cell"]), cell["n"], worth(cell["n_effective"])) for cell in one["cells"]]
         print_table([name, "runs", "worth"], cells, right=[1, 2])
         for remark in one["remarks"]:
             click.echo(f"  {safe(remark)}")

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import os
 import sys
 import traceback
@@ -37,7 +38,10 @@ from auditd.errors import AuditdError
 EXIT_USAGE = 64
 EXIT_UNAVAILABLE = 69
 EXIT_INTERNAL = 70
+EXIT_CANNOT_CREATE = 73
 EXIT_INTERRUPTED = 130
+CANNOT_WRITE = (errno.ENOSPC, errno.EDQUOT, errno.EROFS, errno.EFBIG)
+"""What the system says when output has no room."""
 
 
 @click.group(
@@ -51,7 +55,7 @@ EXIT_INTERRUPTED = 130
 @click.version_option(__version__, prog_name="runaudit")
 @click.pass_context
 def main(context: click.Context, plan: str | None) -> None:
-    r"""Watch a long campaign of runs for broken independence while it is being made.
+    """Watch a long campaign of runs for broken independence while it is being made.
 
     \b
     First steps:
@@ -61,7 +65,7 @@ def main(context: click.Context, plan: str | None) -> None:
       runaudit warnings             what is wrong, since when, and what to do
 
     No warning is not proof of independence: `runaudit status` says what could have been seen by now.
-    """
+    """  # noqa: D301 - click reads a real backspace
     context.obj = plan
 
 
@@ -96,7 +100,8 @@ def run(arguments: list[str] | None = None) -> None:
     code = run_code(sys.argv[1:] if arguments is None else arguments)
     try:
         sys.stdout.flush()
-    except BrokenPipeError:
+    except OSError as error:
+        code = _code_of(error)
         _close_quietly()
     sys.exit(code)
 
@@ -137,6 +142,9 @@ def _unexpected(error: BaseException) -> int:
         reason = str(getattr(error, "orig", error)).splitlines()[0]
         message(f"runaudit: the store does not answer: {reason}")
         return EXIT_UNAVAILABLE
+    if isinstance(error, OSError) and error.errno in CANNOT_WRITE:
+        message(f"runaudit: cannot write: {error.strerror}")
+        return EXIT_CANNOT_CREATE
     message(f"runaudit: unexpected {type(error).__name__}: {error}; set RUNAUDIT_TRACE=1 for the details")
     return EXIT_INTERNAL
 

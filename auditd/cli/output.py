@@ -60,8 +60,13 @@ def number(value: float | None, digits: int = 3) -> str:
 
 
 def percent(value: float | None) -> str:
-    """Return a share in per cent."""
-    return "-" if value is None else f"{100 * value:.0f} %"
+    """Return a share in per cent; one that rounds to zero has no sign."""
+    return "-" if value is None else f"{round(100 * value) + 0:d} %"
+
+
+def worth(value: float | None) -> str:
+    """Return an effective number of runs: whole from 100 on, else three significant digits."""
+    return "-" if value is None else f"{value:.0f}" if value >= 100 else f"{value:.3g}"
 
 
 def is_terminal() -> bool:

@@ -8,6 +8,11 @@ from auditd.cli.options import json_option, plan_path
 from auditd.cli.output import number, percent, print_json, print_table, safe
 from auditd.cli.progress import counting
 
+EXPLAINED = """\
+  alarm: campaigns that alarm, with its 95 % interval; exchangeable is without dependence, so false alarms
+  median run: when the alarm comes; named: share of alarms that name the supposed kind first
+  coverage: honest intervals that hold the true difference; width, naive: of both intervals, in sd of a run"""
+
 
 @click.command(epilog="Example: runaudit rehearse --scenario icc=0.1 --scenario ar=0.3")
 @click.option("--scenario", "scenarios", multiple=True, metavar="NAME=SIZE", help="A dependence to suppose.")
@@ -46,5 +51,6 @@ def rehearse(
     ]
     headers = ["supposed", "alarm", "interval", "median run", "named", "coverage", "width", "naive"]
     print_table(headers, rows, right=range(1, 8))
+    click.echo(EXPLAINED)
     for remark in document["remarks"]:
         click.echo(f"  {safe(remark)}")

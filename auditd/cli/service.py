@@ -10,6 +10,7 @@ from pathlib import Path
 import click
 
 from auditd.cli.options import plan_path
+from auditd.errors import BadInput
 
 
 @click.command(epilog="Example: runaudit service > ~/.config/systemd/user/runaudit.service")
@@ -21,5 +22,16 @@ def service(context: click.Context) -> None:
 
     path = Path(os.path.abspath(plan_path(context)))
     load_plan(path)
-    program = shutil.which("runaudit") or os.path.abspath(sys.argv[0])
-    click.echo(unit_text(path, Path(program)), nl=False)
+    click.echo(unit_text(path, _program()), nl=False)
+
+
+def _program() -> Path:
+    """Return the installed command: this one, the one beside its Python, or one on the path."""
+    running, beside = Path(os.path.abspath(sys.argv[0])), Path(sys.executable).with_name("runaudit")
+    for candidate in (running if running.name == "runaudit" else beside, beside):
+        if os.access(candidate, os.X_OK):
+            return candidate
+    found = shutil.which("runaudit")
+    if found is None:
+        raise BadInput("the command `runaudit` is not installed; install the package first")
+    return Path(found)

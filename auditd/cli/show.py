@@ -10,6 +10,7 @@ import click
 from auditd.cli.options import json_option, plan_path
 from auditd.cli.output import print_json, safe
 from auditd.cli.warnings import WIDTH, print_warnings
+from auditd.series.terminal_evidence import LN_10
 
 
 @click.command(epilog="Example: runaudit show W7, or: runaudit show run:k0412")
@@ -40,7 +41,7 @@ def show(context: click.Context, what: str, as_json: bool) -> None:
 def _print_warning(document: dict[str, Any]) -> None:  # the JSON document
     one = document["warning"]
     facts = [
-        ("raised", f"{one['raised_at']} at run {one['run']} (position {one['index']}, {one['n']} runs seen)"),
+        ("raised", f"{one['raised_at'][:19]}Z{_at(one)}"),
         ("since", _span(one)),
         ("evidence", _evidence(one)),
         ("effect", _effect(one["effect"])),
@@ -57,16 +58,26 @@ def _print_warning(document: dict[str, Any]) -> None:  # the JSON document
     click.echo(textwrap.fill(text, WIDTH, initial_indent="    ", subsequent_indent="    "))
 
 
+def _at(one: dict[str, Any]) -> str:  # a warning's document
+    if one["run"] is None:
+        return ""
+    where = "" if one["index"] is None else f" (position {one['index']}, {one['n']:,} runs seen)"
+    return f" at run {one['run']}{where}"
+
+
 def _span(one: dict[str, Any]) -> str:  # a warning's document
     if one["since"] is None:
         return ""
-    return f"position {one['since']}; not excluded: {one['since_low']} to {one['since_high']}"
+    low, high = one["since_low"], one["since_high"]
+    span = "" if low is None or high is None else f"; it may have begun anywhere from {low} to {high}"
+    return f"position {one['since']}{span}"
 
 
 def _evidence(one: dict[str, Any]) -> str:  # a warning's document
-    if one["log_e"] is None:
+    """Return evidence and threshold as powers of ten, as in the chart."""
+    if one["log_e"] is None or one["threshold"] is None:
         return ""
-    return f"log e {one['log_e']:.2f}, threshold {one['threshold']:.2f}"
+    return f"10^{one['log_e'] / LN_10:.1f} when raised; the threshold was 10^{one['threshold'] / LN_10:.1f}"
 
 
 def _effect(effect: dict[str, Any] | None) -> str:
@@ -76,13 +87,22 @@ def _effect(effect: dict[str, Any] | None) -> str:
     return f"{effect['name']} {effect['value']:.3g}{interval}"
 
 
+def _told(value: Any) -> str:  # a JSON value
+    if value is None:
+        return "-"
+    return safe(str(value).lower() if isinstance(value, bool) else value)
+
+
 def _print_run(document: dict[str, Any]) -> None:  # the JSON document
     run = document["run"]
+    facts: list[tuple[str, Any]] = []
     for name, value in run.items():
         if isinstance(value, dict):
-            for inner, level in value.items():
-                click.echo(safe(f"  {name}.{inner:20} {level}"))
+            facts += [(f"{name}.{inner}", level) for inner, level in value.items()]
         else:
-            click.echo(safe(f"  {name:14} {'-' if value is None else value}"))
+            facts.append((name, value))
+    width = max(len(safe(name)) for name, _ in facts)
+    for name, value in facts:
+        click.echo(f"  {safe(name):{width}}  {_told(value)}")
     for warning in document["warnings"]:
         click.echo(safe(f"  see {warning['id']}: {warning['message']}"))

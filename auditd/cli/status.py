@@ -7,7 +7,7 @@ from typing import Any
 import click
 
 from auditd.cli.options import at_least_option, json_option, plan_path
-from auditd.cli.output import number, percent, print_json, print_table, safe
+from auditd.cli.output import number, percent, print_json, print_table, safe, worth
 from auditd.records import Grade
 from auditd.series.strip_line import NAME_WIDTH, shortened, strip_line
 
@@ -74,11 +74,20 @@ def _daemon(daemon: dict[str, Any]) -> str:  # part of the JSON document
     if daemon["pid"] is None:
         return "has never run here; start it with `runaudit watch`"
     where = f"process {daemon['pid']} on {safe(daemon['host'])}"
+    if daemon["ended"]:
+        return f"stopped ({where}, {_ago(daemon['beat_age_s'])}); start it with `runaudit watch`"
     if not daemon["alive"]:
-        return f"NOT RUNNING ({where}, last sign of life {daemon['beat_age_s']:.0f} s ago)"
+        return f"NOT RUNNING ({where}, last sign of life {_ago(daemon['beat_age_s'])})"
     watching = f"{daemon['watch']}" + (f", {safe(daemon['watch_reason'])}" if daemon["watch_reason"] else "")
     trouble = f"; {safe(daemon['trouble'])}" if daemon["trouble"] else ""
-    return f"alive ({where}, {daemon['beat_age_s']:.0f} s ago, watching by {watching}){trouble}"
+    return f"alive ({where}, {_ago(daemon['beat_age_s'])}, watching by {watching}){trouble}"
+
+
+def _ago(age_s: float) -> str:
+    for unit, unit_s in (("d", 86_400), ("h", 3600), ("min", 60)):
+        if age_s >= 2 * unit_s:
+            return f"{age_s / unit_s:.0f} {unit} ago"
+    return f"{age_s:.0f} s ago"
 
 
 def _print_responses(responses: dict[str, Any]) -> None:  # part of the JSON document
@@ -92,7 +101,7 @@ def _print_responses(responses: dict[str, Any]) -> None:  # part of the JSON doc
             (
                 name,
                 shown["n"],
-                number(shown["n_effective"]),
+                worth(shown["n_effective"]),
                 percent(shown["evidence_loss"]),
                 number(would.get("drift")),
                 number(would.get("icc")),

@@ -56,12 +56,16 @@ def print_warnings(found: list[dict[str, Any]]) -> None:  # documents of warning
     for one in found:
         click.echo(heading(one))
         for text in (one["message"], one["remedy"]):
-            click.echo(textwrap.fill(safe(text), WIDTH, initial_indent="    ", subsequent_indent="    "))
+            _print_indented(text)
         if one["with"]:
-            click.echo(f"    explains also: {', '.join(_listed(listed) for listed in one['with'])}")
+            _print_indented(f"explains also: {', '.join(_listed(listed) for listed in one['with'])}")
         if one["answer"]:
-            click.echo(f"    answered: {safe(one['answer'])}")
+            _print_indented(f"answered: {one['answer']}")
         click.echo("")
+
+
+def _print_indented(text: str) -> None:
+    click.echo(textwrap.fill(safe(text), WIDTH, initial_indent="    ", subsequent_indent="    "))
 
 
 def heading(one: dict[str, Any]) -> str:  # a warning's document

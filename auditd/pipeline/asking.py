@@ -62,13 +62,14 @@ def status_document(campaign: Campaign, now: datetime) -> Document:
 def daemon_document(beat: Beat | None, now: datetime) -> Document:
     """Return whether the daemon lives, by its last sign of life and, on this machine, its process."""
     if beat is None:
-        return {"alive": False, "pid": None, "host": None, "beat_age_s": None, "watch": None}
+        return {"alive": False, "ended": False, "pid": None, "host": None, "beat_age_s": None, "watch": None}
     age_s = max((now - beat.at).total_seconds(), 0.0)
     alive = age_s < ALIVE_S and not beat.body.get("ended", False)
     if alive and beat.host == socket.gethostname():
         alive = _exists(beat.pid)
     return {
         "alive": alive,
+        "ended": bool(beat.body.get("ended", False)),
         "pid": beat.pid,
         "host": beat.host,
         "beat_age_s": round(age_s, 3),

@@ -213,10 +213,13 @@ def sentence(document: Document) -> str:
     naive = document["naive_high"] - document["naive_low"]
     ratio = honest / naive if naive else 1.0
     if ratio > 1.1:
-        text = (
-            f"The naive interval is too narrow: {n} runs are worth {worth:.0f} here, "
-            f"and the honest one is {ratio:.1f} times as wide"
+        why = (
+            f"{n} runs are worth {worth:.0f} here"
+            if worth < 0.95 * n
+            else f"it takes {n} runs for that many independent ones, while only {document['df']:.3g} degrees "
+            "of freedom tell how far levels differ"
         )
+        text = f"The naive interval is too narrow: {why}; the honest one is {ratio:.1f} times as wide"
     elif ratio < 0.9:
         text = (
             f"The honest interval is {ratio:.2f} times the naive one: order or blocks take out "
@@ -233,8 +236,12 @@ def _judged(document: Document) -> str:
         return weak
     small = document["verdict"] == "within the margin" and not document["low"] <= 0 <= document["high"]
     tiny = " (certainly not zero, and certainly too small to matter)" if small else ""
-    more = f", about {document['runs_needed']} more runs would decide" if document["runs_needed"] else ""
-    return f"; the difference is {document['verdict']} of {document['margin']:g}{tiny}{more}{weak}"
+    margin = f"the margin of {document['margin']:g}"
+    if document["verdict"] == "undecided":
+        needed = document["runs_needed"]
+        more = f"; about {needed:,} more runs would decide" if needed else ""
+        return f"; whether the difference exceeds {margin} is undecided{more}{weak}"
+    return f"; the difference is {document['verdict']} of {document['margin']:g}{tiny}{weak}"
 
 
 def losses(table: RunTable, plan: Plan, response: str) -> list[tuple[Question, Any]]:

@@ -19,14 +19,15 @@ def consequence_of(finding: Finding, table: RunTable, plan: Plan) -> tuple[Conse
     """Return a finding's consequence and the lower bound of its evidence loss; None where there is none."""
     if finding.kind not in BY_LOSS or finding.response is None:
         return Consequence(), None
-    n_lost, by_cells = _of_cells(finding.response, table, plan)
     compared = [one for _, one in losses(table, plan, finding.response) if one is not None and one.estimable]
-    stated = [(one.loss, one.loss_low) for one in compared if one.loss is not None]
+    stated = [one for one in compared if one.loss is not None]
+    by_cells = None if stated else _of_cells(finding.response, table, plan)
     if stated:
-        loss, low = max(stated, key=lambda pair: pair[0])
-        low = max((pair[1] or 0.0 for pair in stated), default=low)
+        loss = max(one.loss for one in stated)
+        low = max(one.loss_low or 0.0 for one in stated)
+        n_lost = max(max(one.n - (one.n_effective or 0.0), 0.0) for one in stated)
     elif by_cells is not None:
-        loss, low = by_cells
+        n_lost, loss, low = by_cells
     else:
         return Consequence(n_cells=len(table.cells.levels)), None
     return (
@@ -48,16 +49,16 @@ def _consequence(
     return Consequence(loss=loss, n_lost=n_lost, n_cells=n_cells, n_levels=n_levels)
 
 
-def _of_cells(response: str, table: RunTable, plan: Plan) -> tuple[float | None, tuple[float, float] | None]:
-    """Return the effective runs lost, and the loss of the cells' means with its lower bound."""
+def _of_cells(response: str, table: RunTable, plan: Plan) -> tuple[float, float, float] | None:
+    """Return the effective runs lost, the loss of the cells' means, and its lower bound."""
     from auditd.evidence import effective_number
 
     series = table.series(plan, response)
     try:
         found = effective_number(series.values, **circumstances(table, series))
     except (NotTestable, BadInput):
-        return None, None
-    return max(found.n - found.n_effective, 0.0), (found.loss, found.loss_low)
+        return None
+    return max(found.n - found.n_effective, 0.0), found.loss, found.loss_low
 
 
 def grade_of(finding: Finding, table: RunTable, plan: Plan, loss_low: float | None) -> Grade:

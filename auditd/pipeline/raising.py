@@ -73,8 +73,11 @@ class Raiser:
         return n_new
 
     def raise_missing(self, connection: Connection, findings: Iterable[Finding]) -> int:
-        """Raise what the stored runs show and no warning tells: the process ended before it was raised."""
-        return self.raise_facts(connection, [one for one in findings if one.key not in self._of_key])
+        """Raise what the stored runs show and no warning tells: the process ended before it was raised.
+
+        Facts that have warnings are renewed at the next weighing, as far as they grew since the last one.
+        """
+        return self.raise_facts(connection, findings)
 
     def raise_alarms(self, connection: Connection, alarms: Sequence[Raised]) -> int:
         """Raise the sequential audit's alarms; count the warnings that are new."""
@@ -236,11 +239,12 @@ class Raiser:
     def _list_under(self, connection: Connection, leader: Caution, finding: Finding) -> None:
         explains = _distinct((*leader.finding.explains, _listed(finding)))
         self._of_key[finding.key] = leader.id
-        if explains != leader.finding.explains:
-            renewed = msgspec.structs.replace(leader.finding, explains=explains)
+        renewed = _without_itself(msgspec.structs.replace(leader.finding, explains=explains))
+        if renewed.explains != leader.finding.explains:
             self._store(connection, msgspec.structs.replace(leader, finding=renewed))
 
     def _store(self, connection: Connection, one: Caution) -> None:
+        one = msgspec.structs.replace(one, finding=_without_itself(one.finding))
         update_caution(connection, one, changed_us=now_us())
         self._remember(one)
 
@@ -300,6 +304,13 @@ def _epoch_of(key: str) -> str:
 
 def _listed(finding: Finding) -> Listed:
     return Listed(kind=finding.kind, along=finding.along, level=finding.level, log_e=finding.log_e)
+
+
+def _without_itself(finding: Finding) -> Finding:
+    """Return a finding that does not list itself: what led it once may be what leads it again."""
+    own = (finding.kind, finding.along, finding.level)
+    kept = tuple(one for one in finding.explains if (one.kind, one.along, one.level) != own)
+    return msgspec.structs.replace(finding, explains=kept)
 
 
 def _distinct(listed: Iterable[Listed]) -> tuple[Listed, ...]:

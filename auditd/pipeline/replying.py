@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from datetime import UTC, datetime
 from pathlib import Path
 
 from sqlalchemy import Connection, select, update
@@ -9,16 +10,20 @@ from sqlalchemy import Connection, select, update
 from auditd.checks.facts.plan import plan_finding
 from auditd.errors import BadInput, PlanError
 from auditd.pipeline.campaign import Campaign, new_key, open_for_replies, plan_difference
-from auditd.pipeline.raising import Raiser
+from auditd.pipeline.raising import SEQUENTIAL, Raiser
 from auditd.plan import Plan
 from auditd.plan_reading import parse_plan
-from auditd.records import Finding
+from auditd.records import Caution, Finding
+from auditd.series.load import nuisance_levels
 from auditd.store.answers import Action, apply_from, save_answer, stored_answers
 from auditd.store.cautions import caution_number, stored_cautions
-from auditd.store.clock import now_us
+from auditd.store.clock import now_us, rfc3339
 from auditd.store.plans import plan_versions, save_epoch, save_plan_version
 from auditd.store.runs import count_runs
 from auditd.store.tables import answers, cautions, runs
+
+N_LEVELS_NAMED = 12
+"""Levels that a message names at most."""
 
 
 def reply(plan_path: Path, name: str, reason: str, action: Action, scope: dict[str, str]) -> None:
@@ -27,17 +32,19 @@ def reply(plan_path: Path, name: str, reason: str, action: Action, scope: dict[s
     Raises
     ------
     BadInput
-        There is no such warning, the reason is empty, or the scope names what the plan does not know.
+        There is no such warning, the reason is empty, the scope names what no run has, or the action does
+        not fit the warning. Nothing is kept then.
     """
     campaign = open_for_replies(plan_path)
     if not reason.strip():
         raise BadInput("an answer needs a reason; it is kept for ever and stands in the report")
-    _check_scope(campaign.plan, action, scope)
     number = caution_number(name)
     with campaign.engine.begin() as connection:
         found = [] if number is None else stored_cautions(connection, cautions.c.number == number)
         if not found or number is None:
             raise BadInput(f"there is no warning {name!r}; `runaudit warnings` lists them")
+        _check_action(found[0], action, scope)
+        scope = _checked_scope(connection, campaign.plan, scope)
         save_answer(
             connection,
             caution=number,
@@ -60,13 +67,52 @@ def _own_scope(finding: Finding, action: Action, plan: Plan) -> dict[str, str]:
     return {}
 
 
-def _check_scope(plan: Plan, action: Action, scope: dict[str, str]) -> None:
-    for name in scope:
-        if name not in plan.nuisance and name not in {"from", "to"}:
-            known = ", ".join(plan.nuisance) or "none"
-            raise BadInput(f"{name!r} is no nuisance of the plan; known: {known}")
+def _check_action(one: Caution, action: Action, scope: dict[str, str]) -> None:
+    """Refuse an action that does not fit the warning."""
     if action == "set-aside" and not scope:
         raise BadInput("--set-aside needs what is set aside: a level such as host=n3, or --from and --to")
+    if action == "absorb" and one.finding.kind not in SEQUENTIAL:
+        raise BadInput(
+            f"--absorb takes an effect into the baseline; {one.id} is a {one.finding.kind}, which has none: "
+            "answer it with a reason alone, or set runs aside"
+        )
+
+
+def _checked_scope(connection: Connection, plan: Plan, scope: dict[str, str]) -> dict[str, str]:
+    """Return a scope whose levels and bounds runs have; times in UTC."""
+    checked = {}
+    for name, value in scope.items():
+        if name in {"from", "to"}:
+            checked[name] = _bound(connection, name, value)
+            continue
+        if name not in plan.nuisance:
+            known = ", ".join(plan.nuisance) or "none"
+            raise BadInput(f"{name!r} is no nuisance of the plan; known: {known}")
+        levels = nuisance_levels(connection, name)
+        if value not in levels:
+            more = ", ..." if len(levels) > N_LEVELS_NAMED else ""
+            raise BadInput(
+                f"no run has {name}={value}; levels: {', '.join(levels[:N_LEVELS_NAMED]) or 'none'}{more}"
+            )
+        checked[name] = value
+    return checked
+
+
+def _bound(connection: Connection, name: str, value: str) -> str:
+    """Return a run that has its place, or a time as RFC 3339 in UTC (its zone where none is stated)."""
+    found = connection.execute(select(runs.c.position).where(runs.c.id == value)).first()
+    if found is not None:
+        if found.position is None:
+            raise BadInput(f"--{name}: run {value!r} came late or waits, so it has no place; give a time")
+        return value
+    try:
+        at = datetime.fromisoformat(value)
+    except ValueError:
+        raise BadInput(
+            f"--{name}: {value!r} is neither a run nor a time; write a run's id, or a time such as "
+            "2027-03-01T12:00:00Z"
+        ) from None
+    return str(rfc3339(at if at.tzinfo is not None else at.replace(tzinfo=UTC)))
 
 
 def apply_answers(connection: Connection, plan: Plan, position: int, *, only_ask: bool = False) -> bool:

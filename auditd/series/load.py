@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
-from datetime import datetime
+from datetime import UTC, datetime
 from typing import Any
 
 import msgspec
@@ -11,7 +11,7 @@ import numpy as np
 from sqlalchemy import Connection, select
 
 from auditd.plan import AUTO_RESPONSES, Plan
-from auditd.records import Level, cell_label, level_label
+from auditd.records import NOT_STATED, Level, cell_label, level_label
 from auditd.series.table import Coded, Flags, Floats, Ints, RunTable
 from auditd.store.answers import Answer, stored_answers
 from auditd.store.tables import answers, configs, runs
@@ -66,6 +66,12 @@ def _configs(connection: Connection) -> dict[int, tuple[dict[str, Level], dict[s
     return {
         row.row: (_levels(row.cell), _levels(row.nuisance)) for row in connection.execute(select(configs))
     }
+
+
+def nuisance_levels(connection: Connection, name: str) -> list[str]:
+    """Return the labels of a nuisance's levels that runs have, sorted."""
+    found = {nuisance.get(name, NOT_STATED) for _, nuisance in _configs(connection).values()}
+    return sorted(map(level_label, found))
 
 
 def _set_aside_answers(connection: Connection) -> list[Answer]:
@@ -132,7 +138,8 @@ def _beyond(table: RunTable, bound: str, *, since: bool) -> Flags:
         at = float(table.positions[found[0]])
     else:
         of = np.where(np.isnan(table.started), table.landed, table.started)
-        at = datetime.fromisoformat(bound).timestamp()
+        stated = datetime.fromisoformat(bound)
+        at = (stated if stated.tzinfo is not None else stated.replace(tzinfo=UTC)).timestamp()
     return np.greater_equal(of, at) if since else np.less_equal(of, at)
 
 
@@ -195,7 +202,7 @@ def _cells(
 
 
 def _nuisance(of_config: list[dict[str, Level]], config_codes: Ints, name: str) -> Coded:
-    stated = [level_label(level[name]) if name in level else "(not stated)" for level in of_config]
+    stated = [level_label(level[name]) if name in level else NOT_STATED for level in of_config]
     labels = tuple(sorted(set(stated)))
     lookup = np.array([labels.index(label) for label in stated], dtype=np.int64)
     return Coded(codes=lookup[config_codes] if len(config_codes) else config_codes, levels=labels)

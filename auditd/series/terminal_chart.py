@@ -29,9 +29,9 @@ def chart_lines(strip: dict[str, Any], *, since: int | None, raised: int | None)
     lines = [f"    {labels.get(number, ''):>9} {''.join(row)}" for number, row in enumerate(rows)]
     marks = [" "] * len(strip["mean"])
     for position, sign in ((since, "^"), (raised, "W")):
-        column = _column(position, strip)
-        if column is not None:
-            marks[column] = sign
+        place = _column(position, strip)
+        if place is not None:
+            marks[place] = sign
     lines.append(f"    {'':>9} {''.join(marks)}".rstrip())
     lines.append(
         f"    {'':>9} positions {strip['first']} to {strip['last']}, less the cells' own levels; "

@@ -64,7 +64,8 @@ def _cost_told(finding: Finding, n_runs: int | None) -> str:
     if n_runs is None:
         return "Cost: not known yet; `runaudit evidence` says it once the loss can be estimated, in runs."
     if n_runs == 0:
-        return "Cost: no runs."
+        none_lost = finding.kind in BY_LOSS and finding.response is not None
+        return "Cost: no runs; none of their worth is lost so far." if none_lost else "Cost: no runs."
     about = "about " if finding.kind in {*BY_LOSS, "order"} else ""
     about = "at least " if finding.kind == "confound" else about
     return f"Cost: {about}{n_runs:,} {'run' if n_runs == 1 else 'runs'}."
