@@ -71,7 +71,7 @@ class ReportKeeper:
             self._forget()
 
     def _start(self) -> None:
-        arguments = [sys.executable, "-m", "auditd", "--plan", str(self._session.plan.path)]
+        arguments = [sys.executable, "-P", "-m", "auditd", "--plan", str(self._session.plan.path)]
         self._said = tempfile.TemporaryFile()  # noqa: SIM115 - closed when the child has ended
         self._child = subprocess.Popen(
             [*arguments, "report", "-o", str(self._path)],

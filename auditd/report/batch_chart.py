@@ -128,4 +128,4 @@ def _draw(axes: Axes, levels: list[Level], observed: Observed) -> None:
         ha="right" if many else "center",
         fontsize=8.5 if many else 10,
     )
-    axes.set_ylabel(short(observed.axis, 38))
+    axes.set_ylabel(short(observed.axis, 32))

@@ -59,7 +59,8 @@ def evidence_chart(name: str, key: str, paths: Sequence[EvidencePath], marks: Se
         title=title,
         finding=finding,
         caption=(
-            "Evidence against independence on a logarithmic scale: 2 means 100 to 1. Black: mean of all "
+            "Evidence against independence on a logarithmic scale: 2 means 100 to 1. Thickest line: mean "
+            "of all "
             "that is asked; the first "
             "warning comes when it reaches the lower dashed line, further ones when a family reaches the "
             "upper. If runs were "

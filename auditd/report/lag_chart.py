@@ -16,7 +16,7 @@ from auditd.report.picture import DataTable, Picture, undrawn
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-N_POINTS_MAX = 1200
+N_POINTS_MAX = 1500
 N_SQUARES = 30
 """Squares a side where runs are counted in squares."""
 N_SLICES = 20

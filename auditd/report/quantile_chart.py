@@ -95,7 +95,7 @@ def _draw(axes: Axes, envelope: Envelope, units: Floats) -> None:
         markeredgewidth=0.9,
     )
     axes.set_xlabel("normal quantile")
-    axes.set_ylabel("deviation (standard deviations)")
+    axes.set_ylabel("deviation (sd)")
 
 
 def _table(envelope: Envelope, units: Floats) -> DataTable:

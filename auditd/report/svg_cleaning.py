@@ -5,6 +5,7 @@ from __future__ import annotations
 import re
 from xml.etree import ElementTree as ET
 
+from auditd.report.labels import visible
 from auditd.report.palette import ROLES
 
 SVG = "{http://www.w3.org/2000/svg}"
@@ -13,10 +14,10 @@ N_DECIMALS = 1
 """Decimals kept of a coordinate; a tenth of a point is finer than any screen or printer shows."""
 _NUMBER = re.compile(r"-?\d+\.\d+")
 _REFERENCE = re.compile(r"url\(#([^)]*)\)")
-_PRESENTATION = frozenset({
+_PRESENTATION = (
     "fill-opacity", "stroke-opacity", "opacity", "stroke-width", "stroke-dasharray", "stroke-dashoffset",
     "stroke-linecap", "stroke-linejoin", "font-size", "font-weight", "text-anchor", "clip-path",
-})  # fmt: skip
+)  # fmt: skip
 _GEOMETRY = ("d", "x", "y", "width", "height", "transform", "cx", "cy", "r", "x1", "x2", "y1", "y2")
 
 
@@ -112,8 +113,8 @@ def _describe(root: ET.Element, name: str, title: str, finding: str) -> None:
         }
     )
     head = ET.Element("title", {"id": f"{name}-title"})
-    head.text = title
+    head.text = visible(title)
     words = ET.Element("desc", {"id": f"{name}-finding"})
-    words.text = finding
+    words.text = visible(finding)
     root.insert(0, head)
     root.insert(1, words)

@@ -39,8 +39,8 @@ def report(tmp_path_factory):
     """The page of a campaign with a fault, an answer, a look, refused records and hostile names."""
     folder = tmp_path_factory.mktemp("browser")
     plan = lay_out(folder, PLAN.replace("Lattice relaxation", "<b>Lattice</b> & 'relaxation'"))
-    runs = records(400, seed=3, step_at=200, failing=range(40, 50))
-    for run in runs[100:]:
+    runs = records(260, seed=3, step_at=120, failing=range(40, 50))
+    for run in runs[60:]:
         if run["env"]["host"] == "h3":
             run["env"]["host"] = HOSTILE
     append(folder, [*runs, {"id": HOSTILE}])
@@ -91,7 +91,8 @@ def test_the_policy_forbids_script_and_requests(browser, report):
     page = Opened(browser, report)
     page.page.evaluate(
         """() => { const s = document.createElement('script'); s.textContent = 'window.ran = 1';
-        document.body.append(s); const i = new Image(); i.src = 'http://192.0.2.1/x.png'; document.body.append(i); }"""
+        document.body.append(s); const i = new Image(); i.src = 'http://192.0.2.1/x.png';
+        document.body.append(i); }"""
     )
     page.page.wait_for_timeout(200)
     assert page.page.evaluate("() => window.ran") is None
@@ -106,8 +107,8 @@ def axe_source():
     return (pathlib.Path(place) / "axe.min.js").read_text(encoding="utf-8")
 
 
-@pytest.mark.parametrize("scheme", ["light", "dark"])
-@pytest.mark.parametrize("width", [400, 1600])
+@pytest.mark.slow
+@pytest.mark.parametrize(("scheme", "width"), [("light", 1600), ("dark", 400)])
 def test_nothing_violates_wcag_2_2_aa(browser, report, scheme, width):
     """Axe-core finds no violation of WCAG 2.2 A and AA, with every detail opened."""
     page = Opened(browser, report, color_scheme=scheme, viewport={"width": width, "height": 900}).page
@@ -128,9 +129,10 @@ def test_axe_would_find_a_violation(opened, browser, report):
     page = Opened(browser, report).page
     page.evaluate(axe_source())
     page.evaluate(
-        "() => { const s = document.querySelector('svg'); s.removeAttribute('aria-labelledby'); s.querySelector('title').remove(); }"
+        """() => { const svg = document.querySelector('svg'); svg.removeAttribute('aria-labelledby');
+        svg.querySelector('title').remove(); }"""
     )
-    found = page.evaluate("tags => axe.run(document, {runOnly: {type: 'tag', values: tags}})", WCAG_2_2_AA)
+    found = page.evaluate("() => axe.run(document, {runOnly: {type: 'rule', values: ['svg-img-alt']}})")
     assert "svg-img-alt" in [one["id"] for one in found["violations"]]
     page.context.close()
 
@@ -139,7 +141,8 @@ def test_every_picture_has_words_and_numbers(opened):
     """Each drawing names a title and a finding that are there, and has a table behind it."""
     pictures = opened.page.evaluate(
         """() => [...document.querySelectorAll('svg')].map(svg => ({
-          words: svg.getAttribute('aria-labelledby').split(' ').map(id => document.getElementById(id).textContent),
+          words: svg.getAttribute('aria-labelledby').split(' ')
+            .map(id => document.getElementById(id).textContent),
           rows: svg.closest('figure').querySelectorAll('tbody tr').length,
           says: svg.closest('figure').querySelector('figcaption p').textContent }))"""
     )
@@ -154,7 +157,8 @@ def test_every_picture_has_words_and_numbers(opened):
 def test_everything_is_reached_by_keyboard(opened):
     """Tab stops at every link, detail and scrolled part, and each shows that it has the focus."""
     expected = opened.page.evaluate(
-        "() => [...document.querySelectorAll('a[href], summary, [tabindex=\"0\"]')].filter(one => one.checkVisibility()).length"
+        """() => [...document.querySelectorAll('a[href], summary, [tabindex="0"]')]
+        .filter(one => one.checkVisibility()).length"""
     )
     seen = 0
     opened.page.evaluate("() => document.body.focus()")
