@@ -1,7 +1,8 @@
 """The daemon's loop: what lands is taken, placed, audited and told, until it is asked to stop.
 
 Signals set flags; the loop looks at them between two transactions. A step that fails because the disk is
-full or the store's server is away is said once, tried again with back-off, and nothing of it is lost.
+full or the store's server is away is said once, tried again with back-off, and nothing of it is lost. On a
+server's store a second daemon stands by, and takes over when the first one's lock is free.
 """
 
 from __future__ import annotations
@@ -18,20 +19,20 @@ from pathlib import Path
 from types import FrameType
 from typing import Any
 
-from sqlalchemy.exc import DBAPIError
-
-from auditd.errors import AuditdError, PlanError, Unavailable
+from auditd.errors import AuditdError, PlanError, StoreHeld, Unavailable
 from auditd.landing import Landing, Watcher
 from auditd.notify import Notifier
 from auditd.pipeline.campaign import Campaign, open_for_taking
 from auditd.pipeline.delivering import Courier
+from auditd.pipeline.pausing import TROUBLES, Pausing
 from auditd.pipeline.report_keeping import ReportKeeper
 from auditd.pipeline.session import Session
 from auditd.pipeline.silence import SilenceWatch
 from auditd.pipeline.weighing import Weigher
 from auditd.store.clock import now_us
 from auditd.store.lock import Holder
-from auditd.store.sources import stored_sources
+from auditd.store.log_size import tend_log
+from auditd.store.sources import machine_of_sources, stored_sources
 from auditd.store.states import save_beat
 
 log = logging.getLogger("auditd")
@@ -40,9 +41,10 @@ BEAT_EVERY_S = 5.0
 """Between two signs of life in the store."""
 WAIT_MAX_S = 1.0
 """The longest sleep of the loop, so that answers and signals are seen within a second."""
-RETRY_FIRST_S = 1.0
-RETRY_MAX_S = 60.0
-"""Back-off while the store cannot be written."""
+STAND_BY_LOOK_S = 2.0
+"""Between two tries for the lock of a server's store that another daemon holds."""
+READER_LOOK_S = 1.0
+"""Between two looks whether the reader that keeps the store's log from being cut back has ended."""
 
 
 class Daemon:
@@ -60,22 +62,27 @@ class Daemon:
         self.notifier = Notifier()
         self._watcher: Watcher | None = None
         self._beat_at = 0.0
-        self._trouble: str | None = None
+        self._pausing = Pausing(self.stop)
+        self._n_overflows_told = 0
 
     def run(self) -> int:
         """Watch until stopped; return the exit code."""
         campaign = open_for_taking(self.plan_path)
-        with _signals(self), Holder(campaign.url, campaign.engine) as holder:
-            self._campaign = campaign
-            self._holder = holder
-            self._open(campaign)
-            self._scan_first()
-            self.notifier.ready()
-            log.info("watching %s by %s", ", ".join(self.landing.roots), self.watcher.mode)
+        self._campaign = campaign
+        self._holder = Holder(campaign.url, campaign.engine)
+        with _signals(self):
             try:
+                self._hold()
+                if self.stop.is_set():
+                    return 0
+                self._open(campaign, Session(campaign))
+                self._scan_first()
+                self.notifier.ready()
+                log.info("watching %s by %s", ", ".join(self.landing.roots), self.watcher.mode)
                 return self._loop()
             finally:
                 self._close()
+                self._holder.release()
 
     @property
     def watcher(self) -> Watcher:
@@ -89,18 +96,54 @@ class Daemon:
         if self._watcher is not None:
             self._watcher.wake.set()
 
-    def _open(self, campaign: Campaign) -> None:
-        self.session = Session(campaign)
-        with campaign.engine.connect() as connection:
-            known = list(stored_sources(connection))
-        self.landing = Landing(campaign.plan, known)
-        self._watcher = Watcher(self.landing, campaign.plan.landing.watch)
-        self.watcher.start()
+    def _hold(self) -> None:
+        """Take the right to audit; where another daemon has it on a server, stand by until it is free.
+
+        Raises
+        ------
+        StoreHeld
+            Another process holds a store that is a file.
+        """
+        told = False
+        while not self.stop.is_set():
+            try:
+                self._holder.take_again()
+            except StoreHeld as error:
+                if self._campaign.url.get_backend_name() == "sqlite":
+                    raise
+                if not told:
+                    log.info("standing by: %s", str(error).split(";", 1)[0])
+                    self.notifier.ready("standing by")
+                told = True
+                self.stop.wait(STAND_BY_LOOK_S)
+                self.notifier.watchdog()
+            except TROUBLES as error:
+                self._pausing.wait_after(error)
+                self.notifier.watchdog()
+            else:
+                if told:
+                    log.warning("taking over: the store's lock is free")
+                return
+
+    def _open(self, campaign: Campaign, session: Session) -> None:
+        self.session = session
+        self._watch(campaign)
         self.weigher = Weigher(self.session)
         self.report = ReportKeeper(self.session)
         self.silence = SilenceWatch(campaign.plan)
         self.courier = Courier(campaign)
         self.courier.start()
+
+    def _watch(self, campaign: Campaign) -> None:
+        """Begin to watch the landing, from what the store knows of its files."""
+        with campaign.engine.connect() as connection:
+            known = list(stored_sources(connection, machine_of_sources(campaign.url)))
+        if self._watcher is not None:
+            self._watcher.stop()
+        self.landing = Landing(campaign.plan, known)
+        self._watcher = Watcher(self.landing, campaign.plan.landing.watch)
+        self._n_overflows_told = 0
+        self._watcher.start()
 
     def _scan_first(self) -> None:
         self._retrying(self._take_what_is_there)
@@ -116,6 +159,7 @@ class Daemon:
             if self.reload.is_set():
                 self._reload()
             self.watcher.relay()
+            self._note_overflow()
             self._retrying(self._step)
             if not self.watcher.tend(time.time()):
                 log.error("watching cannot be restored: %s", self.watcher.reason)
@@ -124,7 +168,15 @@ class Daemon:
             self.watcher.wake.wait(min(self.landing.wait_s(time.time()), WAIT_MAX_S))
         return 0
 
+    def _note_overflow(self) -> None:
+        """Say that events were lost, once for each overflow of their queue; a rescan finds what they told."""
+        n = self.watcher.n_overflows
+        if n > self._n_overflows_told:
+            log.warning("the queue of events overflowed: every folder is listed again, nothing is lost")
+            self._n_overflows_told = n
+
     def _step(self) -> None:
+        self._check_hold()
         self._take(self.landing.visit(time.time()))
         if self.session.is_outdated():
             self._reload()
@@ -137,6 +189,8 @@ class Daemon:
 
     def _take(self, batches: Iterator[Any]) -> None:  # batches of records
         for batch in batches:
+            self._await_readers()
+            self._check_hold()
             self.session.take(batch)
             self._advance(None)
             self._beat()
@@ -158,41 +212,51 @@ class Daemon:
         patience_s = self.session.placer.patience_s()
         return f"nothing landed for {patience_s:.0f} s" if quiet_s > patience_s else None
 
+    def _check_hold(self) -> None:
+        """Raise where the lock went with a server's connection: another daemon may hold it by now."""
+        if not self._holder.holds():
+            raise Unavailable("the store's lock went with the connection to its server")
+
+    def _await_readers(self) -> None:
+        """Write no more while a reader keeps the store's log from being cut back and it has grown large."""
+        told = False
+        while not self.stop.is_set():
+            state = tend_log(self._campaign.engine)
+            if not state.must_wait:
+                return
+            if not told:
+                log.warning(
+                    "paused: a reader has kept the store's log from being cut back, and it has grown to %d "
+                    "MiB; going on when that reader ends",
+                    state.n_bytes // 2**20,
+                )
+            told = True
+            self.stop.wait(READER_LOOK_S)
+            self.notifier.watchdog()
+
     def _retrying(self, step: Any) -> None:  # a function of no arguments
         """Do a step; where the store cannot be written, say so once, wait, and begin anew from the store."""
-        delay_s = RETRY_FIRST_S
         while not self.stop.is_set():
             try:
-                if self._trouble is not None:
+                if self._pausing.reason is not None:
                     self._reopen()
-                step()
-            except (DBAPIError, OSError, Unavailable) as error:
-                self._say_trouble(error)
-                self.stop.wait(delay_s)
-                delay_s = min(2 * delay_s, RETRY_MAX_S)
+                if not self.stop.is_set():
+                    step()
+            except TROUBLES as error:
+                self._pausing.wait_after(error)
                 self.notifier.watchdog()
             else:
-                if self._trouble is not None:
-                    log.warning("the store can be written again; nothing was lost")
-                    self._trouble = None
+                if self._pausing.over():
                     self._beat(force=True)
                 return
 
-    def _say_trouble(self, error: Exception) -> None:
-        reason = str(getattr(error, "orig", error)).splitlines()[0]
-        if reason != self._trouble:
-            log.error("paused: %s; trying again until it works, nothing is lost", reason)
-        self._trouble = reason
-
     def _reopen(self) -> None:
         """Make everything in memory anew from the store, and distrust what the landing remembers."""
+        self._hold()
+        if self.stop.is_set():
+            return
         self.session.reopen()
-        with self._campaign.engine.connect() as connection:
-            known = list(stored_sources(connection))
-        self.watcher.stop()
-        self.landing = Landing(self._campaign.plan, known)
-        self._watcher = Watcher(self.landing, self._campaign.plan.landing.watch)
-        self.watcher.start()
+        self._watch(self._campaign)
         self.weigher = Weigher(self.session)
 
     def _reload(self) -> None:
@@ -203,7 +267,7 @@ class Daemon:
             campaign = open_for_taking(self.plan_path)
             if campaign.url != self._campaign.url:
                 raise PlanError("store.url changed; end the daemon and start it again for another store")
-            Session(campaign)
+            session = Session(campaign)
         except AuditdError as error:
             log.error(  # noqa: TRY400 - one line for the operator, no traceback
                 "the plan was not taken into use, the old one stays: %s", error
@@ -211,7 +275,7 @@ class Daemon:
         else:
             self._close(final=False)
             self._campaign = campaign
-            self._open(campaign)
+            self._open(campaign, session)
             self._scan_first()
             log.info("the plan was read again")
         self.notifier.ready()
@@ -229,7 +293,7 @@ class Daemon:
             {
                 "watch": self.watcher.mode,
                 "reason": self.watcher.reason,
-                "trouble": self._trouble,
+                "trouble": self._pausing.reason,
                 "files_waiting": waiting,
             }
         )
@@ -246,15 +310,18 @@ class Daemon:
             )
 
     def _close(self, *, final: bool = True) -> None:
-        self.watcher.stop()
+        if self._watcher is None:
+            return
+        self._watcher.stop()
         self.courier.stop()
         self.report.close()
         if not final:
             return
         self.notifier.stopping()
-        with contextlib.suppress(DBAPIError, OSError):
-            self.session.checkpoint()
-            self._save_beat({"ended": True, "watch": self.watcher.mode, "reason": self.watcher.reason})
+        with contextlib.suppress(*TROUBLES):
+            if self._holder.holds():
+                self.session.checkpoint()
+                self._save_beat({"ended": True, "watch": self.watcher.mode, "reason": self.watcher.reason})
 
 
 @contextlib.contextmanager

@@ -2,19 +2,22 @@
 
 from __future__ import annotations
 
+import threading
 import time
 from collections.abc import Callable
+from datetime import UTC, datetime
 from pathlib import Path
 
 import msgspec
 
+from auditd.alerts.deliver import deliver_due
 from auditd.landing import Landing, Progress
 from auditd.landing.landing import Waiting
 from auditd.pipeline.campaign import open_for_taking
 from auditd.pipeline.session import Session, Taken
 from auditd.pipeline.weighing import refresh
 from auditd.store.lock import Holder
-from auditd.store.sources import stored_sources
+from auditd.store.sources import machine_of_sources, stored_sources
 
 Report = Callable[[str, Progress], None]
 """Called with the step (`read` or `audit`) and the landing's running totals."""
@@ -29,12 +32,15 @@ class Gathered(msgspec.Struct, frozen=True, kw_only=True):
 
 
 def gather(plan_path: Path, report: Report) -> Gathered:
-    """Take every file that is there and complete, give all runs their places, audit and weigh them."""
+    """Take every file that is there and complete, give all runs their places, audit and weigh them.
+
+    Alerts that are due are delivered, each target tried once: with a cron job nobody else does it.
+    """
     campaign = open_for_taking(plan_path)
     with Holder(campaign.url, campaign.engine):
         session = Session(campaign)
         with campaign.engine.connect() as connection:
-            known = list(stored_sources(connection))
+            known = list(stored_sources(connection, machine_of_sources(campaign.url)))
         landing = Landing(campaign.plan, known, settle_all=True)
         for batch in landing.scan(time.time()):
             session.take(batch, at_once=False)
@@ -44,6 +50,8 @@ def gather(plan_path: Path, report: Report) -> Gathered:
         session.advance(flush="gather ended")
         session.checkpoint()
         refresh(session)
+        if campaign.plan.alerts:
+            deliver_due(campaign.engine, campaign.plan, datetime.now(UTC), threading.Event())
         return Gathered(
             taken=session.totals,
             waiting=tuple(landing.waiting(time.time())),

@@ -21,7 +21,7 @@ from auditd.pipeline.replying import apply_answers
 from auditd.records import Batch, Finding, Refusal, Run
 from auditd.series.placing import Placed, Placer
 from auditd.store.clock import now_us
-from auditd.store.plans import plan_versions
+from auditd.store.plans import latest_version
 from auditd.store.refusals import save_refusals, stored_refusals, take_up_refusals
 from auditd.store.runs import (
     ConfigRows,
@@ -30,10 +30,11 @@ from auditd.store.runs import (
     give_arrivals,
     give_positions,
     insert_runs,
+    last_arrived,
     mark_late,
     stored_runs,
 )
-from auditd.store.sources import save_source
+from auditd.store.sources import machine_of_sources, save_source
 from auditd.store.states import save_flush
 from auditd.store.tables import runs
 
@@ -68,13 +69,14 @@ class Session:
         self.landed_at = time.time()
         self.last_run: str | None = None
         self.reopen()
+        self._recall_last_landing()
 
     def reopen(self) -> None:
         """Make everything in memory anew from the store."""
         settle_plan(self.campaign)
         self.plan = self.campaign.plan
         with self.campaign.engine.begin() as connection:
-            self._plan_version = plan_versions(connection)[-1].version
+            self._plan_version = (latest_version(connection) or (0, ""))[0]
             counts = count_runs(connection)
             self._next_arrival = counts.next_arrival
             self._next_position = counts.next_position
@@ -89,6 +91,13 @@ class Session:
             self.totals.n_raised += self.raiser.raise_missing(connection, findings)
         self._n_since_checkpoint = 0
         self._checkpoint_at = time.monotonic()
+
+    def _recall_last_landing(self) -> None:
+        """Know when the last run landed: a restart is no news, and must not put off `silence`."""
+        with self.campaign.engine.connect() as connection:
+            last = last_arrived(connection)
+        if last is not None:
+            self.last_run, self.landed_at = last[0], min(last[1] / 1e6, time.time())
 
     def _replay(self, connection: Connection) -> list[Finding]:
         """Tell placer and facts of every stored run, in the order in which they first heard of them.
@@ -125,7 +134,7 @@ class Session:
             )
             refused += inserted.rewritten
             new_refusals = save_refusals(connection, refused, landed_us, taken_up=at_once)
-            save_source(connection, batch.source)
+            save_source(connection, batch.source, machine_of_sources(self.campaign.url))
             if at_once:
                 findings = self._hear(inserted.stored, new_refusals)
                 self.totals.n_raised += self.raiser.raise_facts(connection, findings)
@@ -166,14 +175,16 @@ class Session:
     def is_outdated(self) -> bool:
         """Whether another process took a newer version of the plan into use."""
         with self.campaign.engine.connect() as connection:
-            return plan_versions(connection)[-1].version != self._plan_version
+            latest = latest_version(connection)
+            return latest is not None and latest[0] != self._plan_version
 
     def take_up(self) -> int:
         """Take up runs and refusals that are stored but not told of yet; return how many runs that were."""
         n_new = 0
         with self.campaign.engine.begin() as connection:
             findings: list[Finding] = []
-            for stored in give_arrivals(connection, self._next_arrival, self.placer.by):
+            new = give_arrivals(connection, self._next_arrival, self.placer.by, with_metadata=False)
+            for stored in new:
                 n_new += 1
                 self.last_run = stored.run.id
                 self.placer.add(stored)

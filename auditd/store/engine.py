@@ -71,15 +71,25 @@ _KEEPALIVES: dict[str, Any] = {
     "keepalives_idle": 10,
     "keepalives_interval": 5,
     "keepalives_count": 3,
+    "tcp_user_timeout": 25_000,
 }
-"""A dead machine's connection is noticed within 25 s, so that its lock passes on."""
+_ASKED_OF_SERVER = (
+    "-c tcp_keepalives_idle=10 -c tcp_keepalives_interval=5 -c tcp_keepalives_count=3 "
+    "-c tcp_user_timeout=25000"
+)
+"""A dead server is noticed within 25 s, and, since the server is asked for the same, a dead machine of ours:
+by default it would hold the auditor's lock for two hours (PostgreSQL manual, 20.3.2)."""
 
 
 def _connect_server(url: URL) -> Engine:
     if find_spec("psycopg") is None:
         raise StoreError(f"{shown_url(url)} needs PostgreSQL's driver; install auditd[postgres]")
-    name = f"runaudit {os.getpid()} on {socket.gethostname()}"[:63]
-    return create_engine(url, pool_pre_ping=True, connect_args=_KEEPALIVES | {"application_name": name})
+    stated = url.query.get("options", "")
+    asked = {
+        "application_name": f"runaudit {os.getpid()} on {socket.gethostname()}"[:63],
+        "options": f"{stated if isinstance(stated, str) else ' '.join(stated)} {_ASKED_OF_SERVER}".strip(),
+    }
+    return create_engine(url, pool_pre_ping=True, connect_args=_KEEPALIVES | asked)
 
 
 def _begin(connection: Any, *, read_only: bool) -> None:

@@ -53,6 +53,14 @@ def plan_versions(connection: Connection) -> list[PlanVersion]:
     ]
 
 
+def latest_version(connection: Connection) -> tuple[int, str] | None:
+    """Return number and hash of the plan in use, without its text; None before the first."""
+    row = connection.execute(
+        select(plans.c.version, plans.c.hash).order_by(plans.c.version.desc()).limit(1)
+    ).first()
+    return None if row is None else (row.version, row.hash)
+
+
 def save_plan_version(
     connection: Connection, *, digest: str, text: str, reason: str | None, taken_us: int, from_position: int
 ) -> int:

@@ -266,7 +266,9 @@ def _stored(found: Any, levels: dict[str, dict[str, Level]]) -> StoredRun:
     )
 
 
-def give_arrivals(connection: Connection, first_arrival: int, by: str = "arrival") -> Iterator[StoredRun]:
+def give_arrivals(
+    connection: Connection, first_arrival: int, by: str = "arrival", *, with_metadata: bool = True
+) -> Iterator[StoredRun]:
     """Take up runs that were inserted without an arrival, and yield them.
 
     They are numbered by `sequence` or `started`, or in the order of insertion (`arrival`), which also breaks
@@ -279,7 +281,7 @@ def give_arrivals(connection: Connection, first_arrival: int, by: str = "arrival
     connection.execute(
         update(runs).where(runs.c.row == numbered.c.row).values(arrival=first_arrival + numbered.c.place)
     )
-    return stored_runs(connection, runs.c.arrival >= first_arrival, with_metadata=False)
+    return stored_runs(connection, runs.c.arrival >= first_arrival, with_metadata=with_metadata)
 
 
 def give_positions(connection: Connection, places: Sequence[tuple[int, int]]) -> None:
@@ -298,6 +300,13 @@ def mark_late(connection: Connection, rows: Sequence[int]) -> None:
             update(runs).where(runs.c.row == bindparam("of_row")).values(late=True),
             [{"of_row": row} for row in rows],
         )
+
+
+def last_arrived(connection: Connection) -> tuple[str, int] | None:
+    """Return id and landing (microseconds) of the run that was taken up last."""
+    query = select(runs.c.id, runs.c.landed_us).where(runs.c.arrival.is_not(None))
+    row = connection.execute(query.order_by(runs.c.arrival.desc()).limit(1)).first()
+    return None if row is None else (row.id, row.landed_us)
 
 
 class RunCounts(msgspec.Struct, frozen=True, kw_only=True):

@@ -2,13 +2,26 @@
 
 from __future__ import annotations
 
+import os
+import socket
 from collections.abc import Iterator
 
 import msgspec
 from sqlalchemy import Connection, delete, insert, select
+from sqlalchemy.engine import URL
 
 from auditd.records import Source
 from auditd.store.tables import sources
+
+
+def machine_name() -> str:
+    """Return this machine's name; `RUNAUDIT_MACHINE` states another, such as a container's for good."""
+    return os.environ.get("RUNAUDIT_MACHINE") or socket.gethostname()
+
+
+def machine_of_sources(url: URL) -> str:
+    """Return under whose name files are kept: a server's store holds those of many machines."""
+    return machine_name() if url.get_backend_name() == "postgresql" else ""
 
 
 def save_source(connection: Connection, source: Source, machine: str = "") -> None:
