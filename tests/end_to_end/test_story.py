@@ -81,7 +81,7 @@ def newest(plan, response):
 
 
 def test_the_warnings_read_as_the_story(told):
-    """Each planted fault is one warning, in order, rightly named, dated and answered; nothing else is raised."""
+    """Each planted fault is one warning, in order, rightly named, dated and answered; no other is raised."""
     found = [one for one in warnings(told) if one["response"] in {"energy", None}]
     kinds = [(one["kind"], one["along"], one["level"], one["state"]) for one in found]
     assert kinds == [
