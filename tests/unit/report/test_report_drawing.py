@@ -52,7 +52,8 @@ def pictures(seen):
         threshold_first=3.0, threshold_own=6.0,
     )  # fmt: skip
     compared = {
-        "a": HOSTILE, "b": "x=2", "estimable": True, "estimate": 0.1, "low": -0.1, "high": 0.3, "low_any": -0.2,
+        "a": HOSTILE, "b": "x=2", "estimable": True, "estimate": 0.1, "low": -0.1, "high": 0.3,
+        "low_any": -0.2,
         "high_any": 0.4,
         "naive_low": 0.0, "naive_high": 0.2, "n": 10, "n_effective": 5.0, "confidence": 0.95,
         "hedges_g": 0.1, "g_low": -0.1, "g_high": 0.3, "margin": 0.2, "verdict": "undecided", "planned": True,
