@@ -13,13 +13,16 @@ Verdict = Literal["dependence", "no evidence", "not testable", "departure"]
 """`departure` is said of shape and spread only."""
 LEVEL = 0.05
 """Adjusted p-value up to which a finding is taken as evidence (convention)."""
+Z = 1.959963984540054
+"""Normal quantile of the effects' 95 % intervals."""
 
 
 class Answer(msgspec.Struct, frozen=True, kw_only=True):
     """What one check says of one response along one order.
 
     `family` says with what it is adjusted: questions about dependence within a response, about the design
-    over the campaign, about shape and spread within a response.
+    over the campaign, about shape and spread within a response. `reason` says why it was not testable, or
+    what has to be known beside the numbers.
     """
 
     check: str

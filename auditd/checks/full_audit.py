@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 
 import msgspec
 import numpy as np
@@ -15,18 +15,19 @@ from auditd.checks.clock_daily_cycle import ClockDailyCycle
 from auditd.checks.drift_mann_kendall import DriftMannKendall
 from auditd.checks.drift_pettitt import DriftPettitt
 from auditd.checks.lineage_parent import LineageParent
-from auditd.checks.orders import views, views_within
+from auditd.checks.orders import between, views, views_within
+from auditd.checks.remarks import joined, tiny, with_serial_remarks
 from auditd.checks.serial_ljung_box import SerialLjungBox
 from auditd.checks.serial_von_neumann import SerialVonNeumann
 from auditd.checks.shape_normality import ShapeNormality
 from auditd.checks.shape_spread import ShapeSpread
 from auditd.checks.view import View
 from auditd.errors import BadInput, NotTestable
-from auditd.series.table import Coded, Series
+from auditd.series.table import Series
 
 ALONG_ORDER: tuple[Check, ...] = (SerialVonNeumann(), SerialLjungBox(), DriftMannKendall(), DriftPettitt())
 ALONG_OTHERS: tuple[Check, ...] = (SerialVonNeumann(), DriftMannKendall())
-WITHIN_LEVELS: tuple[Check, ...] = (SerialVonNeumann(),)
+WITHIN_LEVELS: tuple[Check, ...] = (SerialVonNeumann(), DriftMannKendall(), DriftPettitt())
 BETWEEN_LEVELS: tuple[Check, ...] = (BatchOneWay(),)
 OF_TIMES: tuple[Check, ...] = (ClockDailyCycle(),)
 OF_PARENTS: tuple[Check, ...] = (LineageParent(),)
@@ -41,40 +42,50 @@ CHECKS: tuple[Check, ...] = (
 """Every check of a response, each once."""
 
 
-def audit_series(series: Series) -> tuple[list[Answer], list[str]]:
-    """Return every finding about a response, and sentences on what was not asked."""
+def audit_series(series: Series, *, margin: float | None = None) -> tuple[list[Answer], list[str]]:
+    """Return every finding about a response, and sentences on what was not asked.
+
+    Parameters
+    ----------
+    margin : smallest difference that matters, by the plan; effects within it are said to be tiny.
+    """
     if len(series.values) == 0:
         return [], [f"{series.response}: no completed runs"]
     found_views, not_asked = views(series)
-    first = found_views[0]
-    within, not_within = views_within(first)
-    answers = [_asked(check, first) for check in ALONG_ORDER]
-    answers += [_asked(check, view) for view in found_views[1:] for check in ALONG_OTHERS]
-    answers += [_asked(check, view) for view in within for check in WITHIN_LEVELS]
-    answers += [
-        _asked(check, _grouped(first, name, coded))
-        for name, coded in series.nuisance.items()
-        for check in BETWEEN_LEVELS
+    within, not_within = views_within(found_views[0])
+    asked = list(_questions(series, found_views, within))
+    answers = adjusted([_asked(check, view) for check, view in asked])
+    values = found_views[0].values
+    spread = float(np.sqrt(values @ values / max(len(values) - len(np.unique(series.cells.codes)), 1)))
+    remarked = [
+        joined(answer, tiny(answer, check, spread=spread, margin=margin))
+        for (check, _), answer in zip(asked, answers, strict=True)
     ]
-    answers += [_asked(check, first) for check in OF_TIMES if not np.isnan(series.started).all()]
-    answers += [_asked(check, first) for check in OF_PARENTS if series.parents is not None]
-    answers += [_asked(check, first) for check in OF_SHAPE]
-    return adjusted(answers), [f"{series.response}, {sentence}" for sentence in [*not_asked, *not_within]]
+    sentences = [f"{series.response}, {sentence}" for sentence in [*not_asked, *not_within]]
+    return with_serial_remarks(remarked), sentences
 
 
-def _grouped(view: View, name: str, coded: Coded) -> View:
-    return view.in_order(np.arange(view.n), name, groups=coded.codes)
+def _questions(series: Series, found: list[View], within: list[View]) -> Iterator[tuple[Check, View]]:
+    """Yield every check with every view that it is asked of."""
+    first = found[0]
+    timed = not np.isnan(series.started).all()
+    yield from ((check, first) for check in ALONG_ORDER)
+    yield from ((check, view) for view in found[1:] for check in ALONG_OTHERS)
+    yield from ((check, view) for view in within for check in WITHIN_LEVELS)
+    yield from ((check, view) for view in between(first) for check in BETWEEN_LEVELS)
+    yield from ((check, view) for view in (first, *within) for check in OF_TIMES if timed)
+    yield from ((check, first) for check in OF_PARENTS if series.parents is not None)
+    yield from ((check, first) for check in OF_SHAPE)
 
 
 def _asked(check: Check, view: View) -> Answer:
     """Ask, or say why it cannot be asked."""
-    needs_order = check.family == "dependence" and not isinstance(check, (BatchOneWay, LineageParent))
-    if needs_order and view.why_not is not None and view.along in {"order", *view.series.nuisance}:
+    if check.needs_order and view.why_not is not None:
         return not_testable(check, view, view.why_not)
     if view.n < check.n_min:
         return not_testable(check, view, f"needs {check.n_min} runs, got {view.n}")
     if not np.any(view.scores):
-        return not_testable(check, view, "results are constant within every cell")
+        return not_testable(check, view, "results are constant within every cell, or one run a cell")
     try:
         return check.ask(view)
     except NotTestable as error:

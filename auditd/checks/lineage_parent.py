@@ -6,11 +6,14 @@ from typing import ClassVar
 
 import numpy as np
 
-from auditd.checks.answer import Answer, Family
+from auditd.checks.answer import Answer, Family, Z
 from auditd.checks.asked import answered
+from auditd.checks.check import Unit
+from auditd.checks.permutation import permutation_pvalue
 from auditd.checks.view import View
 from auditd.errors import NotTestable
 from auditd.records import Effect
+from auditd.series.table import Floats, Ints
 
 
 class LineageParent:
@@ -26,6 +29,9 @@ class LineageParent:
     assumes: ClassVar[str] = "no other dependence; any law, in large samples"
     source: ClassVar[str] = "Fisher (1915), Biometrika 10:507-521, on normal scores"
     n_min: ClassVar[int] = 10
+    needs_order: ClassVar[bool] = False
+    tiny: ClassVar[float] = 0.05
+    unit: ClassVar[Unit] = "share"
 
     def ask(self, view: View) -> Answer:
         """Return the answer with the correlation as effect."""
@@ -38,11 +44,20 @@ class LineageParent:
         if len(child) < self.n_min:
             raise NotTestable(f"{self.n_min} runs with a completed parent", len(child))
         a, b = view.scores[child], view.scores[parents[child]]
-        if a.std() == 0 or b.std() == 0:
+        if not a.std() > 1e-9 or not b.std() > 1e-9:
             raise NotTestable("results that vary", "constant results")
         r = float(np.clip(np.corrcoef(a, b)[0, 1], -0.999999, 0.999999))
-        error = 1 / np.sqrt(len(child) - 3)
-        z = float(np.arctanh(r) / error)
-        low, high = np.tanh(np.arctanh(r) + np.array([-1.96, 1.96]) * error)
+        error = 1 / float(np.sqrt(len(child) - 3))
+        z = float(np.arctanh(r)) / error
+        pvalue = 2 * float(ndtr(-abs(z)))
+        if view.needs_permutation:
+            null = _products(view.permutations(), child, parents)
+            observed = float(_products(view.scores[None, :], child, parents)[0])
+            pvalue = min(1.0, 2 * permutation_pvalue(observed, null, "normal"))
+        low, high = np.tanh(np.arctanh(r) + np.array([-Z, Z]) * error)
         effect = Effect(name="correlation with the parent", value=r, low=float(low), high=float(high))
-        return answered(self, view, statistic=z, pvalue=2 * float(ndtr(-abs(z))), effect=effect)
+        return answered(self, view, statistic=z, pvalue=pvalue, effect=effect, n=len(child))
+
+
+def _products(rows: Floats, child: Ints, parents: Ints) -> Floats:
+    return np.asarray((rows[:, child] * rows[:, parents[child]]).sum(axis=1))

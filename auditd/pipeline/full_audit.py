@@ -2,15 +2,23 @@
 
 from __future__ import annotations
 
+from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 
 from auditd.checks.answer import Answer
-from auditd.checks.design_questions import design_answers
+from auditd.checks.design_questions import design_answers, tiny_association
 from auditd.checks.full_audit import adjusted, audit_series
+from auditd.checks.remarks import joined
 from auditd.pipeline.asking import Document
 from auditd.pipeline.campaign import open_for_queries
 from auditd.pipeline.stored_evidence import evidence_document
+from auditd.plan import Plan
 from auditd.series.load import load_table, response_names
+from auditd.series.table import RunTable
+
+N_AT_ONCE = 2
+"""Responses audited at once: sorting and sums leave the interpreter free, and each needs about 100 bytes a
+run for every view that it holds, so that more would cost memory."""
 
 
 def audit(plan_path: Path) -> Document:
@@ -18,13 +26,7 @@ def audit(plan_path: Path) -> Document:
     campaign = open_for_queries(plan_path)
     with campaign.engine.connect() as connection:
         table = load_table(connection, campaign.plan)
-    findings: list[Answer] = []
-    not_checked: list[str] = []
-    for response in response_names(campaign.plan):
-        answers, sentences = audit_series(table.series(campaign.plan, response))
-        findings += answers
-        not_checked += sentences
-    findings += adjusted(list(design_answers(table)))
+    findings, not_checked = findings_of(table, campaign.plan)
     not_checked += [
         sentence for sentence in evidence_document(campaign)["not_checked"] if sentence not in not_checked
     ]
@@ -34,6 +36,26 @@ def audit(plan_path: Path) -> Document:
         "shape": [answer_document(one) for one in findings if one.family == "shape"],
         "not_checked": not_checked,
     }
+
+
+def findings_of(table: RunTable, plan: Plan) -> tuple[list[Answer], list[str]]:
+    """Return every finding about a campaign's runs, and sentences on what was not asked."""
+
+    def ask(response: str) -> tuple[list[Answer], list[str]]:
+        stated = plan.responses.get(response)
+        margin = None if stated is None else stated.margin
+        return audit_series(table.series(plan, response), margin=margin)
+
+    with ThreadPoolExecutor(N_AT_ONCE) as pool:
+        of_responses = list(pool.map(ask, response_names(plan)))
+    findings = [one for answers, _ in of_responses for one in answers]
+    not_asked = [sentence for _, sentences in of_responses for sentence in sentences]
+    about_design = adjusted(list(design_answers(table)))
+    findings += [joined(one, tiny_association(one)) for one in about_design]
+    n_aside = int(table.set_aside.sum())
+    if n_aside:
+        not_asked.append(f"{n_aside} runs that were set aside are left out")
+    return findings, not_asked
 
 
 def answer_document(one: Answer) -> Document:
