@@ -131,7 +131,7 @@ def landing_order_finding(*, response: str, pvalue: float, correlation: float, n
     """
     message = (
         f"landing order depends on the outcome: {response} goes with the duration of runs (rank "
-        f"correlation {correlation:.2f}), and short runs land first; do not trust serial and drift warnings here"
+        f"correlation {correlation:.2f}), and short runs land first; serial and drift warnings are void here"
     )
     log_e = None if pvalue <= 0 else -math.log(pvalue)
     return Finding(
