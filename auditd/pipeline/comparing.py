@@ -8,13 +8,14 @@ from typing import Any
 import msgspec
 import numpy as np
 
+from auditd.checks.duplicates import duplicate_groups
 from auditd.errors import BadInput, NotTestable
 from auditd.pipeline.asking import Document
 from auditd.pipeline.circumstances import labelled_nuisance
-from auditd.plan import Plan, cells_matching
+from auditd.plan import AUTO_RESPONSES, Plan, cells_matching
 from auditd.records import Level, cell_label, normal_level
 from auditd.series.load import response_names
-from auditd.series.table import RunTable, Series
+from auditd.series.table import Flags, Ints, RunTable, Series
 
 Group = dict[str, Level]
 
@@ -109,7 +110,7 @@ def _compared(
     level = plan.campaign.confidence
     confidence = 1 - (1 - level) / n_planned if question.planned else level
     try:
-        found = contrast_of(table, plan, question, confidence, with_set_aside=with_set_aside)
+        found = _with_repeats_once(table, plan, question, confidence, with_set_aside=with_set_aside)
     except NotTestable as error:
         return _without_answer(question, f"not testable: needs {error.required}, got {error.got}")
     except BadInput as error:
@@ -146,6 +147,58 @@ def contrast_of(
         blocks=_blocks(series) if plan.seeds.role == "block" else None,
         confidence=confidence,
     )
+
+
+def _with_repeats_once(
+    table: RunTable, plan: Plan, question: Question, confidence: float, *, with_set_aside: bool
+) -> Any:  # evidence.Contrast
+    """Return the contrast in which equal results of a cell count once, beside all runs' naive interval."""
+    from dataclasses import replace
+
+    every = contrast_of(table, plan, question, confidence, with_set_aside=with_set_aside)
+    usable = table.usable(plan, question.response, with_set_aside=with_set_aside)
+    repeats = usable & _repeats(table)
+    sides = matched_cells(table, question)
+    n_repeats = sum(int(counts.sum()) for counts in _counts(table, repeats, sides))
+    if n_repeats == 0 or question.response in AUTO_RESPONSES:
+        return every
+    once = replace(table, completed=table.completed & ~repeats)
+    found = contrast_of(once, plan, question, confidence, with_set_aside=with_set_aside)
+    kept = _variance(_counts(table, usable, sides)) / _variance(_counts(table, usable & ~repeats, sides))
+    told = f"{n_repeats} runs repeat an earlier result of their cell to the last digit and count once; make them again first"
+    losses_kept = {
+        name: None if loss is None else 1 - (1 - loss) * kept
+        for name, loss in ((name, getattr(found, name)) for name in ("loss", "loss_low", "loss_high"))
+    }
+    return replace(
+        found,
+        n=every.n,
+        n_effective=None if found.n_effective is None else found.n_effective / found.n * kept * every.n,
+        naive_low=every.naive_low,
+        naive_high=every.naive_high,
+        remarks=(*found.remarks, told),
+        **losses_kept,
+    )
+
+
+def _counts(table: RunTable, flags: Flags, sides: tuple[list[str], list[str]]) -> list[Ints]:
+    """Return how many of the flagged runs each cell of either side has."""
+    counts = np.bincount(table.cells.codes[flags], minlength=len(table.cells.levels))
+    return [counts[[table.cells.levels.index(label) for label in side]] for side in sides]
+
+
+def _variance(counts: list[Ints]) -> float:
+    """Return the variance, in that of a run, of a difference of sides in which cells weigh equally."""
+    return sum(float((1 / side[side > 0]).sum()) / int((side > 0).sum()) ** 2 for side in counts)
+
+
+def _repeats(table: RunTable) -> Flags:
+    """Return which runs repeat the result of an earlier run of their cell, shape (n,)."""
+    both = np.column_stack((duplicate_groups(table), table.cells.codes))
+    _, first = np.unique(both, axis=0, return_index=True)
+    repeats = np.ones(table.n, dtype=bool)
+    repeats[first] = False
+    return repeats
 
 
 def _blocks(series: Series) -> Any:  # an array of labels, or None

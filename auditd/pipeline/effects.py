@@ -118,8 +118,13 @@ def _neighbours(_finding: Finding, part: _Part) -> Effect | None:
 
 
 def _correlation(name: str, r: float, n: int, z: float) -> Effect:
-    """Return a correlation with Fisher's interval."""
-    centre, half = math.atanh(min(max(r, -0.999), 0.999)), z / math.sqrt(max(n - 3, 1))
+    """Return a correlation of neighbours in chains, with an interval on Fisher's scale.
+
+    Pairs that share runs vary more than independent ones: Bartlett (1946), J. Roy. Statist. Soc. Suppl. 8,
+    gives (1 - r²)/n for the first autocorrelation of an AR(1), where Fisher's interval takes (1 - r²)²/n.
+    """
+    kept = min(max(r, -0.999), 0.999)
+    centre, half = math.atanh(kept), z / math.sqrt(max(n - 3, 1) * (1 - kept**2))
     return Effect(name=name, value=r, low=math.tanh(centre - half), high=math.tanh(centre + half))
 
 

@@ -47,6 +47,9 @@ class Raiser:
         self._plan = plan
         self._cautions = {one.id: one for one in stored_cautions(connection)}
         self._of_key = {one.finding.key: one.id for one in self._cautions.values()}
+        for one in self._cautions.values():
+            for key in _listed_keys(one.finding):
+                self._of_key.setdefault(key, one.id)
         self._holds: dict[str, GradeHold] = {}
         self._grown: dict[str, Finding] = {}
 
@@ -296,6 +299,14 @@ def finding_of(raised: Raised, table: RunTable, plan: Plan) -> Finding:
     )
     finding = not_before_its_level(finding, table)
     return msgspec.structs.replace(finding, effect=effect_of(finding, table, plan))
+
+
+def _listed_keys(finding: Finding) -> list[str]:
+    """Return the keys of the families that a sequential warning lists: they stay its own after a restart."""
+    if not finding.key.startswith("audit:"):
+        return []
+    series = finding.key.rsplit(":", 2)[0]
+    return [f"{series}:{one.kind}:{one.along}" for one in finding.explains if one.kind in SEQUENTIAL]
 
 
 def _epoch_of(key: str) -> str:
