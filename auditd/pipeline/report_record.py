@@ -119,7 +119,9 @@ def _known(one: Caution) -> Iterator[tuple[str, str]]:
     at = f", at run {finding.run}{_at(finding.index)}" if finding.run else ""
     yield "raised", f"{rfc3339(one.raised_at)}{at}"
     if finding.since is not None:
-        yield "since", f"place {finding.since}; not excluded: {finding.since_low} to {finding.since_high}"
+        known = finding.since_low is not None and finding.since_high is not None
+        within = f"; not excluded: {finding.since_low} to {finding.since_high}" if known else ""
+        yield "since", f"place {finding.since}{within}"
     if finding.log_e is not None:
         threshold = figures(finding.threshold)
         yield "evidence", f"natural log of the e-value {figures(finding.log_e)}, threshold {threshold}"

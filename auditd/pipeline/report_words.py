@@ -163,7 +163,7 @@ def _runs_paragraph(facts: ReportFacts) -> str:
     parts = [
         f"{_count(facts.n_runs, 'run')} were made{when} under a plan fixed before the first run"
         + (f" and amended {_times(len(facts.versions) - 1)}" if len(facts.versions) > 1 else "")
-        + f", and indexed as they landed (auditd {__version__})."
+        + f", and indexed with their order and circumstances (auditd {__version__})."
     ]
     if plan.factors:
         parts.append(
@@ -200,8 +200,7 @@ def _audit_paragraph(facts: ReportFacts) -> str:
     kept = [one for one in facts.cautions if one.state != "withdrawn"]
     raised = f"{_count(len(kept), 'warning')} stand or were answered" if kept else "No warning was raised"
     return (
-        f"Independence was audited while the runs were made. In the order of {_ORDERS[order_of(plan)]}, "
-        "each response was "
+        f"Independence was audited run by run, in the order of {_ORDERS[order_of(plan)]}. Each response was "
         f"{_BASELINES[plan.baseline.kind]} (conformal ranks; Vovk, Gammerman & Shafer 2005). Bets against "
         "exchangeability "
         f"asked for {listed(asked)}; their e-processes raised a warning when the mean of all reached the "
@@ -227,21 +226,27 @@ def _evidence_paragraph(facts: ReportFacts) -> str:
             f"{listed(worth, n_most=12)}, after repeated results, lineage, batch effects and serial "
             "dependence."
         )
-    planned = facts.compared
-    if planned:
-        level = figures(100 * facts.plan.campaign.confidence)
-        parts.append(
-            f"{_count(len(planned), 'comparison')} planned beforehand "
-            f"{'was' if len(planned) == 1 else 'were'} estimated by generalised least squares under the "
-            f"dependence found, with joint {level} % "
-            f"intervals (Bonferroni); the comparisons were looked at {_times(len(facts.looks))} by command "
-            "before this report."
-        )
+    if facts.compared:
+        parts.append(_comparisons_sentence(facts))
     parts.append(
         "No evidence of dependence is not proof of independence; what was not checked is listed with the "
         "results."
     )
     return " ".join(parts)
+
+
+def _comparisons_sentence(facts: ReportFacts) -> str:
+    n, n_done = len(facts.compared), sum(bool(one["estimable"]) for one in facts.compared)
+    level = figures(100 * facts.plan.campaign.confidence)
+    looks = (
+        f"they were looked at {_times(len(facts.looks))} by command before this report"
+        if facts.looks
+        else "nobody had looked at them by command before this report"
+    )
+    return (
+        f"Of {_count(n, 'comparison')} planned beforehand {n_done:,} could be estimated, under the "
+        f"dependence found, with joint {level} % intervals (Bonferroni); {looks}."
+    )
 
 
 def _graded(kept: list[Caution]) -> str:
@@ -255,7 +260,7 @@ def _count(n: int, word: str) -> str:
 
 
 def _times(n: int) -> str:
-    return {0: "not at all", 1: "once", 2: "twice"}.get(n, f"{n:,} times")
+    return {1: "once", 2: "twice"}.get(n, f"{n:,} times")
 
 
 def _day(at: float) -> str:

@@ -133,7 +133,7 @@ def test_what_was_done_is_on_record(campaign):
     assert "set-aside host=h2" in text
     assert "(with set-aside runs)" in text
     assert "00ff" in text
-    assert "looked at once by command before this report" in text
+    assert "they were looked at once by command before this report" in text
     assert "Vovk, Gammerman &amp; Shafer 2005" in text
     assert "at most 0.05" in text
 
