@@ -165,7 +165,7 @@ def _with_repeats_once(
     once = replace(table, completed=table.completed & ~repeats)
     found = contrast_of(once, plan, question, confidence, with_set_aside=with_set_aside)
     kept = _variance(_counts(table, usable, sides)) / _variance(_counts(table, usable & ~repeats, sides))
-    told = f"{n_repeats} runs repeat an earlier result of their cell to the last digit and count once; make them again first"
+    told = f"{n_repeats} runs repeat a result of their cell to the last digit and count once; replace them"
     losses_kept = {
         name: None if loss is None else 1 - (1 - loss) * kept
         for name, loss in ((name, getattr(found, name)) for name in ("loss", "loss_low", "loss_high"))

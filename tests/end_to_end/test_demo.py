@@ -25,7 +25,7 @@ def test_the_demo_finds_every_planted_fault(tmp_path):
     assert done.returncode == 0, done.stdout + done.stderr
     assert "NOT FOUND" not in done.stdout
     assert "raised, but not planted" not in done.stdout
-    assert len(set(re.findall(r"^    [a-z ]+ +k\d{4}  (W\d+)", done.stdout, re.MULTILINE))) == 6
+    assert len(set(re.findall(r"^    [a-z ]+ +k\d{4} +(W\d+)", done.stdout, re.MULTILINE))) == 6
 
 
 def test_the_clean_twin_raises_nothing(tmp_path):
