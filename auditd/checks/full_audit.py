@@ -14,6 +14,7 @@ from auditd.checks.check import Check
 from auditd.checks.clock_daily_cycle import ClockDailyCycle
 from auditd.checks.drift_mann_kendall import DriftMannKendall
 from auditd.checks.drift_pettitt import DriftPettitt
+from auditd.checks.drift_selected_shift import DriftSelectedShift
 from auditd.checks.lineage_parent import LineageParent
 from auditd.checks.orders import between, views, views_within
 from auditd.checks.remarks import joined, tiny, with_serial_remarks
@@ -27,13 +28,14 @@ from auditd.series.table import Series
 
 ALONG_ORDER: tuple[Check, ...] = (SerialVonNeumann(), SerialLjungBox(), DriftMannKendall(), DriftPettitt())
 ALONG_OTHERS: tuple[Check, ...] = (SerialVonNeumann(), DriftMannKendall())
-WITHIN_LEVELS: tuple[Check, ...] = (SerialVonNeumann(), DriftMannKendall(), DriftPettitt())
+WITHIN_LEVELS: tuple[Check, ...] = (SerialVonNeumann(), DriftMannKendall(), DriftSelectedShift())
 BETWEEN_LEVELS: tuple[Check, ...] = (BatchOneWay(),)
 OF_TIMES: tuple[Check, ...] = (ClockDailyCycle(),)
 OF_PARENTS: tuple[Check, ...] = (LineageParent(),)
 OF_SHAPE: tuple[Check, ...] = (ShapeNormality(), ShapeSpread())
 CHECKS: tuple[Check, ...] = (
     *ALONG_ORDER,
+    DriftSelectedShift(),
     *BETWEEN_LEVELS,
     *OF_TIMES,
     *OF_PARENTS,

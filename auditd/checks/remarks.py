@@ -10,7 +10,7 @@ from auditd.checks.answer import Answer
 from auditd.checks.check import Check
 
 SERIAL = ("von_neumann_rank", "ljung_box")
-BY_SERIAL = ("mann_kendall", "pettitt")
+BY_SERIAL = ("mann_kendall", "pettitt", "selected_shift")
 """Checks whose p-values are too small where neighbours are alike."""
 
 
