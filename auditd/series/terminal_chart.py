@@ -33,10 +33,8 @@ def chart_lines(strip: dict[str, Any], *, since: int | None, raised: int | None)
         if place is not None:
             marks[place] = sign
     lines.append(f"    {'':>9} {''.join(marks)}".rstrip())
-    lines.append(
-        f"    {'':>9} positions {strip['first']} to {strip['last']}, less the cells' own levels; "
-        "o mean, | range, ^ since, W raised"
-    )
+    lines.append(f"    {'':>9} positions {strip['first']} to {strip['last']}, less the cells' own levels")
+    lines.append(f"    {'':>9} o mean, | range, ^ since, W raised")
     return lines
 
 

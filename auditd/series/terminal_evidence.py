@@ -37,7 +37,7 @@ def evidence_lines(
     lines = [f"    {labels.get(number, ''):>9} {''.join(row)}" for number, row in enumerate(rows)]
     if raised is not None and first <= raised < first + width * len(highest):
         lines.append(f"    {'':>9} {' ' * ((raised - first) // (width * per))}W")
-    lines.append(f"    {'':>9} # log10 of the evidence against independence, - what it needs alone, W raised")
+    lines.append(f"    {'':>9} # log10 of the evidence, - what it needs alone, W raised")
     return lines
 
 

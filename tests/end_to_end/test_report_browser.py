@@ -110,14 +110,15 @@ def axe_source():
 @pytest.mark.slow
 @pytest.mark.parametrize(("scheme", "width"), [("light", 1600), ("dark", 400)])
 def test_nothing_violates_wcag_2_2_aa(browser, report, scheme, width):
-    """Axe-core finds no violation of WCAG 2.2 A and AA, with the details of one response and of the record open.
+    """Axe-core finds no violation of WCAG 2.2 A and AA, details of one response and of the record open.
 
     The other responses' details are made by the same lines of the template.
     """
     page = Opened(browser, report, color_scheme=scheme, viewport={"width": width, "height": 900}).page
     page.evaluate(axe_source())
     page.evaluate(
-        """() => document.querySelectorAll('section:nth-of-type(2) details, section:nth-of-type(n + 6) details')
+        """() => document.querySelectorAll(
+        'section:nth-of-type(2) details, section:nth-of-type(n + 6) details')
         .forEach(one => { one.open = true; })"""
     )
     assert page.locator("details[open] table").count() > 6
