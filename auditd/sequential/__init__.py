@@ -4,10 +4,7 @@ from auditd.sequential.advance import Advanced, EarlierRuns
 from auditd.sequential.alarm import Alarm, Explained
 from auditd.sequential.auditor import Auditor
 from auditd.sequential.effect import Effect
-from auditd.sequential.effect_after import effect_after
-from auditd.sequential.level_order_e import LevelOrder
 from auditd.sequential.options import Options
-from auditd.sequential.rate_e import RateConcentration
 from auditd.sequential.replay import Replay, replay
 from auditd.sequential.seed_blocks import SeedBlockBuilder, SeedBlocks, seed_blocks
 from auditd.sequential.stages import cells_within_stages
@@ -19,14 +16,11 @@ __all__ = [
     "EarlierRuns",
     "Effect",
     "Explained",
-    "LevelOrder",
     "Options",
-    "RateConcentration",
     "Replay",
     "SeedBlockBuilder",
     "SeedBlocks",
     "cells_within_stages",
-    "effect_after",
     "replay",
     "seed_blocks",
 ]

@@ -1,4 +1,4 @@
-"""The size of a dependence, estimated from the runs after its alarm."""
+"""The size of a dependence, estimated from the runs since it began."""
 
 from __future__ import annotations
 
@@ -11,13 +11,12 @@ import numpy.typing as npt
 from auditd.errors import BadInput, NotTestable
 
 FloatArray = npt.NDArray[np.float64]
-BoolArray = npt.NDArray[np.bool_]
 
-N_RUNS_MIN: Final = 30
-"""Runs after the alarm that an estimate needs: at the alarm itself effects are inflated by the selection."""
+N_RUNS_MIN: Final = 8
+"""Runs on each side that an estimate needs."""
 
-CONFIDENCE: Final = 0.95
-"""Level of the intervals."""
+LAG_ONE_MAX: Final = 0.9
+"""Autocorrelation above which an interval is widened no further."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -27,7 +26,7 @@ class Effect:
     Attributes
     ----------
     name : what is estimated, with its unit in words.
-    value, low, high : estimate and limits of the two-sided 95 % interval.
+    value, low, high : estimate and limits of the two-sided interval.
     n : runs that it rests on.
     source : the method.
     """
@@ -40,61 +39,73 @@ class Effect:
     source: str
 
 
-def shift(before: npt.ArrayLike, after: npt.ArrayLike) -> Effect:
-    """Estimate the shift of scores after an alarm against those before the change (`drift`).
+def shift(before: npt.ArrayLike, after: npt.ArrayLike, *, confidence: float = 0.95) -> Effect:
+    """Estimate the shift of values since a change against those before it (`drift`).
 
     Parameters
     ----------
-    before : scores, or responses less their cells' means, of runs before the earliest start not excluded.
-    after : the same of runs after the alarm.
+    before, after : scores, or responses less their cells' means, in order.
+    confidence : of the interval.
 
     Returns
     -------
-    Effect in the unit of what is given; Welch's interval.
+    Effect in the unit of what is given; Welch's interval, each side's standard error widened by
+    √((1 + r)/(1 − r)) where its lag-1 autocorrelation r is positive.
 
     Raises
     ------
-    NotTestable : fewer than 30 runs after, or 2 before.
+    NotTestable : fewer than N_RUNS_MIN runs on a side.
 
-    Assumptions: runs independent within each side; under serial dependence the interval is too short.
+    Assumptions: AR(1) errors within each side; longer memory leaves the interval too short.
 
     References
     ----------
-    Welch (1947), Biometrika 34.
+    Welch (1947), Biometrika 34. Bartlett (1935), Journal of the Royal Statistical Society 98 (the factor).
     """
-    a, b = _finite(before, 2), _finite(after, N_RUNS_MIN)
-    va, vb = a.var(ddof=1) / a.size, b.var(ddof=1) / b.size
+    a, b = _finite(before), _finite(after)
+    va, vb = _variance_of_mean(a), _variance_of_mean(b)
     df = (va + vb) ** 2 / (va**2 / (a.size - 1) + vb**2 / (b.size - 1)) if va + vb > 0 else float(b.size - 1)
-    half = _t_quantile(df) * float(np.sqrt(va + vb))
+    half = _t_quantile(df, confidence) * float(np.sqrt(va + vb))
     value = float(b.mean() - a.mean())
     return Effect(
         name="shift", value=value, low=value - half, high=value + half, n=b.size, source="Welch 1947"
     )
 
 
-def lag_one(scores: npt.ArrayLike, segments: npt.ArrayLike | None = None) -> Effect:
+def _variance_of_mean(values: FloatArray) -> float:
+    centred = values - values.mean()
+    whole = float(centred @ centred)
+    r = float(centred[1:] @ centred[:-1]) / whole if whole > 0 else 0.0
+    r = min(max(r, 0.0), LAG_ONE_MAX)
+    return whole / (values.size - 1) / values.size * (1.0 + r) / (1.0 - r)
+
+
+def lag_one(
+    scores: npt.ArrayLike, segments: npt.ArrayLike | None = None, *, confidence: float = 0.95
+) -> Effect:
     """Estimate the autocorrelation of neighbouring scores (`serial`), within segments when they are given.
 
     Parameters
     ----------
-    scores : scores after the alarm, in order.
+    scores : scores, or responses less their cells' means, in order.
     segments : level of each, so that neighbours are of one level.
+    confidence : of the interval.
 
     Returns
     -------
-    Effect; Fisher's z interval, the bias −(1 + 3r)/n taken off.
+    Effect; an interval on Fisher's scale with Bartlett's variance, the bias −(1 + 3r)/n taken off.
 
     References
     ----------
-    Kendall (1954), Biometrika 41 (bias); Fisher (1921), Metron 1 (interval).
+    Kendall (1954), Biometrika 41 (bias). Fisher (1921), Metron 1 (scale). Bartlett (1946), Supplement to the
+    Journal of the Royal Statistical Society 8 (variance of the first autocorrelation of an AR(1)).
     """
     first, second = neighbours(scores, segments)
     if first.size < N_RUNS_MIN:
-        raise NotTestable(f"{N_RUNS_MIN} neighbouring runs after the alarm", first.size)
+        raise NotTestable(f"{N_RUNS_MIN} neighbouring runs", first.size)
     r = _correlation(first, second)
-    return _fisher(
-        "lag-1 autocorrelation", r + (1.0 + 3.0 * r) / first.size, first.size, "Kendall 1954, Fisher 1921"
-    )
+    r += (1.0 + 3.0 * r) / first.size
+    return _of_chain("lag-1 correlation", r, first.size, "Kendall 1954, Bartlett 1946", confidence)
 
 
 def neighbours(scores: npt.ArrayLike, segments: npt.ArrayLike | None) -> tuple[FloatArray, FloatArray]:
@@ -111,7 +122,7 @@ def neighbours(scores: npt.ArrayLike, segments: npt.ArrayLike | None) -> tuple[F
     return z[:-1][same], z[1:][same]
 
 
-def intraclass(scores: npt.ArrayLike, levels: npt.ArrayLike) -> Effect:
+def intraclass(scores: npt.ArrayLike, levels: npt.ArrayLike, *, confidence: float = 0.95) -> Effect:
     """Estimate the intraclass correlation of levels (`batch`).
 
     Returns
@@ -132,7 +143,7 @@ def intraclass(scores: npt.ArrayLike, levels: npt.ArrayLike) -> Effect:
     n, k = z.size, count.size
     if n < N_RUNS_MIN or k < 2 or n <= k:
         raise NotTestable(
-            f"{N_RUNS_MIN} runs after the alarm over two levels or more, one with two runs",
+            f"{N_RUNS_MIN} runs over two levels or more, one with two runs",
             f"{n} runs, {k} levels",
         )
     mean = np.bincount(code, weights=z) / count
@@ -140,15 +151,15 @@ def intraclass(scores: npt.ArrayLike, levels: npt.ArrayLike) -> Effect:
     within = float(((z - mean[code]) ** 2).sum() / (n - k))
     n0 = (n - (count**2).sum() / n) / (k - 1)
     ratio = between / within if within > 0 else np.inf
-    low_q, high_q = _f_quantiles(k - 1, n - k)
+    low_q, high_q = _f_quantiles(k - 1, n - k, confidence)
     value, low, high = (_icc(f, float(n0)) for f in (ratio, ratio / high_q, ratio / low_q))
     return Effect(
         name="intraclass correlation", value=value, low=low, high=high, n=n, source="Searle et al. 1992"
     )
 
 
-def spread_ratio(before: npt.ArrayLike, after: npt.ArrayLike) -> Effect:
-    """Estimate the ratio of standard deviations after an alarm to before (`spread`).
+def spread_ratio(before: npt.ArrayLike, after: npt.ArrayLike, *, confidence: float = 0.95) -> Effect:
+    """Estimate the ratio of standard deviations since a change to before it (`spread`).
 
     The interval is that of Bonett, whose variance follows the kurtosis, since ranks near the ends of a short
     reference and real responses are not Gaussian.
@@ -157,7 +168,7 @@ def spread_ratio(before: npt.ArrayLike, after: npt.ArrayLike) -> Effect:
     ----------
     Bonett (2006), Computational Statistics & Data Analysis 50 (with the pooled kurtosis).
     """
-    a, b = _finite(before, 4), _finite(after, N_RUNS_MIN)
+    a, b = _finite(before), _finite(after)
     da, db = a - a.mean(), b - b.mean()
     sa, sb = float((da**2).mean()), float((db**2).mean())
     if sa == 0 or sb == 0:
@@ -165,18 +176,20 @@ def spread_ratio(before: npt.ArrayLike, after: npt.ArrayLike) -> Effect:
     kurtosis = (a.size * (da**4).mean() / sa**2 + b.size * (db**4).mean() / sb**2) / (a.size + b.size)
     error = float(np.sqrt(max(kurtosis - 1.0, 0.0) * (1.0 / a.size + 1.0 / b.size) / 4.0))
     ratio = float(np.log(b.std(ddof=1) / a.std(ddof=1)))
-    low, high = (float(np.exp(ratio + sign * _normal_quantile() * error)) for sign in (-1.0, 1.0))
+    half = _normal_quantile(confidence) * error
     return Effect(
-        name="ratio of spreads",
+        name="ratio of standard deviations",
         value=float(np.exp(ratio)),
-        low=low,
-        high=high,
+        low=float(np.exp(ratio - half)),
+        high=float(np.exp(ratio + half)),
         n=b.size,
         source="Bonett 2006",
     )
 
 
-def amplitude(scores: npt.ArrayLike, times: npt.ArrayLike, period_s: float) -> Effect:
+def amplitude(
+    scores: npt.ArrayLike, times: npt.ArrayLike, period_s: float, *, confidence: float = 0.95
+) -> Effect:
     """Estimate the amplitude of a cycle of stated period (`clock`).
 
     Returns
@@ -193,7 +206,7 @@ def amplitude(scores: npt.ArrayLike, times: npt.ArrayLike, period_s: float) -> E
     known = np.isfinite(z) & np.isfinite(t)
     z, phase = z[known], 2.0 * np.pi * np.mod(t[known], period_s) / period_s
     if z.size < N_RUNS_MIN:
-        raise NotTestable(f"{N_RUNS_MIN} timed runs after the alarm", z.size)
+        raise NotTestable(f"{N_RUNS_MIN} timed runs", z.size)
     design = np.column_stack((np.ones(z.size), np.sin(phase), np.cos(phase)))
     coefficient, _, rank, _ = np.linalg.lstsq(design, z, rcond=None)
     if rank < 3:
@@ -202,7 +215,7 @@ def amplitude(scores: npt.ArrayLike, times: npt.ArrayLike, period_s: float) -> E
     covariance = np.linalg.inv(design.T @ design)[1:, 1:] * float(residual @ residual) / (z.size - 3)
     value = float(np.hypot(coefficient[1], coefficient[2]))
     direction = coefficient[1:] / value if value > 0 else np.array([1.0, 0.0])
-    half = _t_quantile(z.size - 3) * float(np.sqrt(direction @ covariance @ direction))
+    half = _t_quantile(z.size - 3, confidence) * float(np.sqrt(direction @ covariance @ direction))
     return Effect(
         name="amplitude",
         value=value,
@@ -213,29 +226,29 @@ def amplitude(scores: npt.ArrayLike, times: npt.ArrayLike, period_s: float) -> E
     )
 
 
-def inheritance(scores: npt.ArrayLike, parent_scores: npt.ArrayLike) -> Effect:
-    """Estimate the correlation of runs with their parents (`lineage`); Fisher's z interval.
+def inheritance(scores: npt.ArrayLike, parent_scores: npt.ArrayLike, *, confidence: float = 0.95) -> Effect:
+    """Estimate the correlation of runs with their parents (`lineage`); its interval is that of `lag_one`.
 
     References
     ----------
-    Fisher (1921), Metron 1.
+    Bartlett (1946), Supplement to the Journal of the Royal Statistical Society 8.
     """
     z, p = np.asarray(scores, dtype=np.float64), np.asarray(parent_scores, dtype=np.float64)
     if z.shape != p.shape or z.ndim != 1:
         raise BadInput(f"scores and parent_scores must have one shape (n,), got {z.shape} and {p.shape}")
     known = np.isfinite(z) & np.isfinite(p)
-    if known.sum() < N_RUNS_MIN:
-        raise NotTestable(f"{N_RUNS_MIN} restarted runs after the alarm", int(known.sum()))
-    return _fisher(
-        "correlation with the parent", _correlation(z[known], p[known]), int(known.sum()), "Fisher 1921"
-    )
+    n = int(known.sum())
+    if n < N_RUNS_MIN:
+        raise NotTestable(f"{N_RUNS_MIN} restarted runs", n)
+    r = _correlation(z[known], p[known])
+    return _of_chain("correlation with the parent", r, n, "Bartlett 1946", confidence)
 
 
-def _finite(values: npt.ArrayLike, required: int) -> FloatArray:
+def _finite(values: npt.ArrayLike) -> FloatArray:
     array = np.asarray(values, dtype=np.float64).ravel()
     array = array[np.isfinite(array)]
-    if array.size < required:
-        raise NotTestable(f"{required} runs", array.size)
+    if array.size < N_RUNS_MIN:
+        raise NotTestable(f"{N_RUNS_MIN} runs", array.size)
     return array
 
 
@@ -247,9 +260,13 @@ def _correlation(a: FloatArray, b: FloatArray) -> float:
     return float(a @ b) / scale
 
 
-def _fisher(name: str, r: float, n: int, source: str) -> Effect:
+def _of_chain(name: str, r: float, n: int, source: str, confidence: float) -> Effect:
+    """Give a correlation of neighbours in a chain with an interval on Fisher's scale.
+
+    Pairs that share runs vary more than independent ones: (1 − r²)/n instead of (1 − r²)²/n.
+    """
     r = min(max(r, -0.999), 0.999)
-    half = _normal_quantile() / np.sqrt(n - 3)
+    half = _normal_quantile(confidence) / np.sqrt((n - 3) * (1.0 - r**2))
     low, high = (float(np.tanh(np.arctanh(r) + sign * half)) for sign in (-1.0, 1.0))
     return Effect(name=name, value=r, low=low, high=high, n=n, source=source)
 
@@ -258,20 +275,20 @@ def _icc(f_ratio: float, n0: float) -> float:
     return 1.0 if np.isinf(f_ratio) else float((f_ratio - 1.0) / (f_ratio + n0 - 1.0))
 
 
-def _normal_quantile() -> float:
+def _normal_quantile(confidence: float) -> float:
     from scipy.special import ndtri
 
-    return float(ndtri(0.5 + CONFIDENCE / 2.0))
+    return float(ndtri(0.5 + confidence / 2.0))
 
 
-def _t_quantile(df: float) -> float:
+def _t_quantile(df: float, confidence: float) -> float:
     from scipy.special import stdtrit
 
-    return float(stdtrit(df, 0.5 + CONFIDENCE / 2.0))
+    return float(stdtrit(df, 0.5 + confidence / 2.0))
 
 
-def _f_quantiles(df1: int, df2: int) -> tuple[float, float]:
+def _f_quantiles(df1: int, df2: int, confidence: float) -> tuple[float, float]:
     from scipy.special import fdtri
 
-    tail = (1.0 - CONFIDENCE) / 2.0
+    tail = (1.0 - confidence) / 2.0
     return float(fdtri(df1, df2, tail)), float(fdtri(df1, df2, 1.0 - tail))

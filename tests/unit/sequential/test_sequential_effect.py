@@ -22,8 +22,10 @@ def rng():
 
 
 def test_a_shift_has_welchs_interval(rng):
-    """scipy.stats.ttest_ind without equal variances gives the same interval."""
+    """scipy.stats.ttest_ind without equal variances gives the same interval, where no neighbours agree."""
     before, after = rng.normal(size=80), rng.normal(1.0, 2.0, size=50)
+    before[::2], before[1::2] = np.split(np.sort(before), 2)
+    after[::2], after[1::2] = np.split(np.sort(after), 2)
     expected = stats.ttest_ind(after, before, equal_var=False).confidence_interval(0.95)
     found = shift(before, after)
     assert (found.low, found.high) == pytest.approx((expected.low, expected.high), abs=1e-12)
@@ -45,7 +47,15 @@ def test_intraclass_correlation_agrees_with_pingouin(rng):
 
 @pytest.mark.parametrize(
     ("name", "truth"),
-    [("shift", 1.0), ("lag", 0.5), ("icc", 0.3), ("spread", 1.6), ("amplitude", 0.7), ("lineage", 0.6)],
+    [
+        ("shift", 1.0),
+        ("lag", 0.5),
+        ("shift of a series", 1.0),
+        ("icc", 0.3),
+        ("spread", 1.6),
+        ("amplitude", 0.7),
+        ("lineage", 0.6),
+    ],
 )
 def test_intervals_cover_what_was_planted(name, truth):
     """200 samples of 150 runs: coverage of the 95 % intervals is not below what chance allows, 0.89."""
@@ -60,24 +70,27 @@ def test_intervals_cover_what_was_planted(name, truth):
 def _estimate(name, truth, rng):
     n = 150
     e = rng.normal(size=n)
-    if name == "shift":
-        return shift(rng.normal(size=200), e + truth)
-    if name == "lag":
-        x = np.empty(n)
-        x[0] = e[0]
-        for t in range(1, n):
-            x[t] = truth * x[t - 1] + np.sqrt(1 - truth**2) * e[t]
-        return lag_one(x)
-    if name == "icc":
-        level = np.repeat(np.arange(15), 10)
-        return intraclass(np.sqrt(truth) * rng.normal(size=15)[level] + np.sqrt(1 - truth) * e, level)
-    if name == "spread":
-        return spread_ratio(rng.normal(size=200), truth * e)
-    if name == "amplitude":
-        times = np.arange(n) * 3000.0
-        return amplitude(e + truth * np.sin(2 * np.pi * times / 86_400 + 1.0), times, 86_400.0)
-    parent = rng.normal(size=n)
-    return inheritance(truth * parent + np.sqrt(1 - truth**2) * e, parent)
+    level, times, parent = np.repeat(np.arange(15), 10), np.arange(n) * 3000.0, rng.normal(size=n)
+    cycle = np.sin(2 * np.pi * times / 86_400 + 1.0)
+    estimates = {
+        "shift": lambda: shift(rng.normal(size=200), e + truth),
+        "shift of a series": lambda: shift(_ar1(rng.normal(size=200), 0.4), _ar1(e, 0.4) + truth),
+        "lag": lambda: lag_one(_ar1(e, truth)),
+        "icc": lambda: intraclass(
+            np.sqrt(truth) * rng.normal(size=15)[level] + np.sqrt(1 - truth) * e, level
+        ),
+        "spread": lambda: spread_ratio(rng.normal(size=200), truth * e),
+        "amplitude": lambda: amplitude(e + truth * cycle, times, 86_400.0),
+        "lineage": lambda: inheritance(truth * parent + np.sqrt(1 - truth**2) * e, parent),
+    }
+    return estimates[name]()
+
+
+def _ar1(e, phi):
+    x = e.copy()
+    for t in range(1, x.size):
+        x[t] = phi * x[t - 1] + np.sqrt(1 - phi**2) * e[t]
+    return x
 
 
 def test_neighbours_are_of_one_level_and_skip_what_has_no_score():
@@ -88,11 +101,11 @@ def test_neighbours_are_of_one_level_and_skip_what_has_no_score():
 
 
 def test_too_few_runs_and_wrong_shapes_are_said(rng):
-    """Below 30 runs there is no estimate; constants have none either."""
+    """Below eight runs there is no estimate; constants have none either."""
     with pytest.raises(NotTestable):
-        shift(rng.normal(size=50), rng.normal(size=29))
+        shift(rng.normal(size=50), rng.normal(size=7))
     with pytest.raises(NotTestable):
-        lag_one(rng.normal(size=20))
+        lag_one(rng.normal(size=8))
     with pytest.raises(NotTestable):
         lag_one(np.ones(50))
     with pytest.raises(NotTestable):
