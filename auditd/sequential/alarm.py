@@ -15,6 +15,9 @@ Key = tuple[str, str]
 N_RUNS_SOON: Final = 300
 """Runs scored after a leader's alarm within which what it can explain is listed under it, at any date."""
 
+TAKE_OVER_SHARE: Final = 0.5
+"""A cycle takes a warning over if it shows so much of the leader's log e-value, over the same runs."""
+
 MEAN_KINDS: Final = frozenset({"serial", "drift", "batch", "clock", "lineage"})
 """Kinds that say that a score's mean can be predicted; each leaves traces in all the others and in spread."""
 
@@ -47,7 +50,8 @@ class Alarm:
     level : the level named, for an alarm along a nuisance.
     since, since_low, since_high : most probable first run of the dependence, and the first and last of those
         that cannot be excluded (0-based indices).
-    threshold : log of what was crossed: 1/budget by the mean of all, or K/budget by the family's own.
+    threshold : log of what was crossed: 1/budget by the mean of all, or K/budget by the family's own; by its
+        own, 1/budget where it only takes a standing warning over.
     log_mean : log of the mean of the K e-processes at the run.
     n_scored : scored runs up to and with this one.
     explains : what stood beside the leader at that run and is explained by it.
@@ -79,12 +83,19 @@ class Alarm:
 
 @dataclass(frozen=True, kw_only=True)
 class Crossing:
-    """A family's crossing within a block: position, family, threshold, and whether it is the first alarm."""
+    """A family's crossing within a block: position, family, threshold.
+
+    Attributes
+    ----------
+    first : it is the epoch's first alarm.
+    renames : it raises nothing of its own, and is an alarm only if it takes a standing warning over.
+    """
 
     at: int
     key: Key
     threshold: float
-    first: bool
+    first: bool = False
+    renames: bool = False
 
 
 def can_explain(leader: Key, other: Key) -> bool:
@@ -94,11 +105,11 @@ def can_explain(leader: Key, other: Key) -> bool:
     return other[0] in MEAN_KINDS or other[0] == "spread"
 
 
-def takes_over(newcomer: Key, leader: Key) -> bool:
-    """Say whether the newcomer is the better name of the leader's warning.
+def can_take_over(newcomer: Key, leader: Key) -> bool:
+    """Say whether the newcomer may be the better name of the leader's warning.
 
-    `clock` bets only once three periods have passed and predicts by the time alone: nothing but a cycle makes
-    it alarm while the leader's slow signal only follows what the cycle does.
+    `clock` bets only once three periods have passed and predicts by the time alone, while a leader that
+    alarmed before only followed what the cycle does.
     """
     return newcomer[0] == "clock" and leader[0] in MEAN_KINDS - {"clock"}
 
@@ -107,6 +118,7 @@ def crossings(
     log_e: Mapping[Key, FloatArray],
     log_mean: FloatArray,
     *,
+    before: Mapping[Key, float],
     threshold_first: float,
     threshold_own: float,
     raised: frozenset[Key],
@@ -115,10 +127,19 @@ def crossings(
     """Find the alarms of a block, in order.
 
     Before any alarm the mean of all decides, and `leader_at` names the family; from there on each by its own.
+
+    Parameters
+    ----------
+    log_e, log_mean : (n,) each.
+    before : log e-values before the block.
+    threshold_first, threshold_own : log 1/budget and log K/budget.
+    raised : families that have alarmed already.
+    leader_at : names the family that leads a first alarm at a position.
     """
     found: list[Crossing] = []
     begin = 0
-    if not raised:
+    is_first = not raised
+    if is_first:
         first = np.flatnonzero(log_mean >= threshold_first)
         if first.size == 0:
             return []
@@ -131,5 +152,17 @@ def crossings(
             continue
         own = np.flatnonzero(path[begin:] >= threshold_own)
         if own.size:
-            found.append(Crossing(at=begin + int(own[0]), key=key, threshold=threshold_own, first=False))
-    return sorted(found, key=lambda crossing: (crossing.at, not crossing.first))
+            found.append(Crossing(at=begin + int(own[0]), key=key, threshold=threshold_own))
+        if key[0] == "clock":
+            earlier = -np.inf if is_first else before[key]
+            found += [
+                Crossing(at=begin + at, key=key, threshold=threshold_first, renames=True)
+                for at in _upward(path[begin:], earlier, threshold_first)
+            ]
+    return sorted(found, key=lambda crossing: (crossing.at, not crossing.first, crossing.renames))
+
+
+def _upward(path: FloatArray, before: float, threshold: float) -> list[int]:
+    """Give the positions at which a path reaches a threshold from below."""
+    above = path >= threshold
+    return np.flatnonzero(above & ~np.append(before >= threshold, above[:-1])).tolist()

@@ -10,13 +10,15 @@ import numpy.typing as npt
 from auditd.sequential.alarm import (
     LASTING_KINDS,
     N_RUNS_SOON,
+    TAKE_OVER_SHARE,
     Alarm,
     Crossing,
     Explained,
     Key,
     can_explain,
-    takes_over,
+    can_take_over,
 )
+from auditd.sequential.bets_clock import ClockCycle
 from auditd.sequential.book import Book
 from auditd.sequential.dating import (
     N_RUNS_DATED,
@@ -47,14 +49,17 @@ def describe(
     series: ScoredSeries,
     n_scored: int,
     standing: Sequence[Alarm],
-) -> Alarm:
-    """Make the alarm of a crossing."""
+) -> Alarm | None:
+    """Make the alarm of a crossing; None where it could only take a warning over and does not."""
     history, levels = series.history, series.levels
     named = {key: _level(key, crossing.at, book, series, n_scored) for key in log_e}
     level = named[crossing.key]
     since, low, high = _dates(crossing.key, level, history, levels, n_scored)
     index = int(history.index[n_scored - 1])
-    under, replaces = _place(crossing.key, n_scored, low, high, standing)
+    renamed = _warning_taken_over(crossing.key, log_e, history, n_scored, standing)
+    if renamed is None and crossing.renames:
+        return None
+    under = None if renamed else _explained_by(crossing.key, n_scored, low, high, standing)
     explains = tuple(
         Explained(kind=key[0], along=key[1], level=named[key], log_e=value)
         for key, value in sorted(log_e.items(), key=lambda item: -item[1])
@@ -75,23 +80,35 @@ def describe(
         n_scored=n_scored,
         explains=explains,
         under=under,
-        replaces=replaces,
+        replaces=renamed,
     )
 
 
-def _place(
-    key: Key, n_scored: int, low: int, high: int, standing: Sequence[Alarm]
-) -> tuple[Key | None, Key | None]:
-    """Say under which standing leader the alarm belongs, and whose warning it takes over."""
+def _warning_taken_over(
+    key: Key, log_e: Mapping[Key, float], history: History, n_scored: int, standing: Sequence[Alarm]
+) -> Key | None:
+    """Name the newest standing leader whose warning a cycle explains too, and in fewer parts.
+
+    The cycle's evidence is that over all runs looked back on, also those before it was bet on.
+    """
+    leader = next((one.key for one in reversed(standing) if one.lead and can_take_over(key, one.key)), None)
+    if leader is None:
+        return None
+    window = np.arange(max(0, n_scored - N_RUNS_DATED), n_scored)
+    scored = _block(history.z[history.index[window]], window, history, *key)
+    shown = float(log_weight_of_bets(ClockCycle(n_periods=0.0).log_bets(scored))[0])
+    return leader if max(shown, log_e[key]) >= TAKE_OVER_SHARE * log_e[leader] else None
+
+
+def _explained_by(key: Key, n_scored: int, low: int, high: int, standing: Sequence[Alarm]) -> Key | None:
+    """Say under which standing leader the alarm belongs."""
     for leader in reversed([alarm for alarm in standing if alarm.lead]):
-        if takes_over(key, leader.key):
-            return None, leader.key
         soon = n_scored - leader.n_scored <= N_RUNS_SOON
         same_start = low <= leader.since_high and high >= leader.since_low
         lasting = leader.kind in LASTING_KINDS
         if can_explain(leader.key, key) and (soon or same_start or lasting):
-            return leader.key, None
-    return None, None
+            return leader.key
+    return None
 
 
 def _level(key: Key, at: int, book: Book, series: ScoredSeries, n_scored: int) -> str | None:

@@ -260,23 +260,27 @@ class Auditor:
         # A run that is not scored repeats what stood before it.
         latest = np.searchsorted(at, np.arange(paths.shape[1]), side="right") - 1
         paths[:, latest >= 0] = scored_paths[:, latest[latest >= 0]]
-        self._latest = scored_paths[:, -1].copy()
+        before, self._latest = self.log_e, scored_paths[:, -1].copy()
         found = crossings(
             dict(zip(self.keys, scored_paths, strict=True)),
             self._log_mean(scored_paths),
+            before=before,
             threshold_first=self.threshold_first,
             threshold_own=self.threshold_own,
             raised=frozenset(alarm.key for alarm in self._alarms),
             leader_at=lambda at: self._leader(scored_paths, at),
         )
-        return paths, [self._raise(crossing, scored_paths) for crossing in found]
+        raised = [self._raise(crossing, scored_paths) for crossing in found]
+        return paths, [alarm for alarm in raised if alarm is not None]
 
     def _leader(self, paths: FloatArray, at: int) -> Key:
         n_scored = self._series.n_scored - paths.shape[1] + at + 1
         log_e = dict(zip(self.keys, paths[:, at].tolist(), strict=True))
         return choose_leader(log_e, self._book.shared(at), shift_evidence(self._series, n_scored))
 
-    def _raise(self, crossing: Crossing, paths: FloatArray) -> Alarm:
+    def _raise(self, crossing: Crossing, paths: FloatArray) -> Alarm | None:
+        if any(alarm.key == crossing.key for alarm in self._alarms):
+            return None
         n_scored = self._series.n_scored - paths.shape[1] + crossing.at + 1
         alarm = describe(
             crossing,
@@ -287,5 +291,6 @@ class Auditor:
             n_scored=n_scored,
             standing=self._alarms,
         )
-        self._alarms.append(alarm)
+        if alarm is not None:
+            self._alarms.append(alarm)
         return alarm

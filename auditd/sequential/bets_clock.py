@@ -10,12 +10,21 @@ from auditd.sequential.scored_block import ScoredBlock, State
 
 FloatArray = npt.NDArray[np.float64]
 
+LEVEL_VARIANCE = 1.0
+"""Prior variance of the scores' level, in squared standard deviations of a score."""
+
 
 class ClockCycle:
-    """Bets by Bayesian regression on the sine and cosine of a period.
+    """Bets that a score is N(m, 1), m the cycle that a Bayesian regression has learned from earlier scores.
 
-    Coefficients are N(0, v) each and the residual's variance is 1 − v. It learns from the first run and bets
-    once the runs span CLOCK_N_PERIODS periods.
+    The regression has a level, a sine and a cosine of the period; coefficients of the cycle are N(0, v) each,
+    the level is N(0, LEVEL_VARIANCE), the residual's variance is 1 − v. It learns from the first run and bets
+    once the runs span the stated number of periods. Only the cycle is bet on, neither the level nor the
+    residual's variance: scores whose level or spread changed win nothing here without a cycle.
+
+    Parameters
+    ----------
+    n_periods : periods that the runs must span before it bets.
 
     References
     ----------
@@ -26,8 +35,9 @@ class ClockCycle:
     has_levels_alone = False
     along = "order"
 
-    def __init__(self) -> None:
-        self._sums = np.zeros((5, len(CLOCK_PERIOD_S)))
+    def __init__(self, n_periods: float = CLOCK_N_PERIODS) -> None:
+        self._n_periods = n_periods
+        self._sums = np.zeros((9, len(CLOCK_PERIOD_S)))
         self._span = np.array([np.inf, -np.inf])
 
     def log_bets(self, block: ScoredBlock) -> FloatArray:
@@ -42,26 +52,28 @@ class ClockCycle:
         parts = []
         for at, period_s in enumerate(CLOCK_PERIOD_S):
             phase = 2.0 * np.pi * np.mod(times, period_s) / period_s
-            x = np.where(known, np.vstack((np.sin(phase), np.cos(phase))), 0.0)
+            x = np.where(known, np.vstack((np.ones(z.size), np.sin(phase), np.cos(phase))), 0.0)
             bets = self._one_period(at, x, z)
-            bets[:, ~(known & (latest - earliest >= CLOCK_N_PERIODS * period_s))] = 0.0
+            bets[:, ~(known & (latest - earliest >= self._n_periods * period_s))] = 0.0
             parts.append(bets)
         return np.concatenate(parts)
 
     def _one_period(self, at: int, x: FloatArray, z: FloatArray) -> FloatArray:
-        """Predict each score from those before it by the posterior of two coefficients."""
-        s, c = x
-        products = np.vstack((s * s, s * c, c * c, s * z, c * z))
+        """Predict each score from those before it: the cycle's posterior mean, the level integrated out."""
+        one, s, c = x
+        products = np.vstack((one, s, c, s * s, s * c, c * c, z, s * z, c * z))
         totals = np.cumsum(np.concatenate((self._sums[:, at : at + 1], products), axis=1), axis=1)
         self._sums[:, at] = totals[:, -1]
-        ss, sc, cc, sz, cz = totals[:, :-1]
+        n, sum_s, sum_c, ss, sc, cc, sum_z, sz, cz = totals[:, :-1]
         v = np.array(CLOCK_VARIANCE)[:, None]
         noise = 1.0 - v
-        a, b, d = ss + noise / v, sc, cc + noise / v
-        determinant = a * d - b * b
-        mean = (s * (d * sz - b * cz) + c * (a * cz - b * sz)) / determinant
-        variance = noise * (1.0 + (s * s * d - 2.0 * s * c * b + c * c * a) / determinant)
-        log_l: FloatArray = 0.5 * z * z - 0.5 * np.log(variance) - (z - mean) ** 2 / (2.0 * variance)
+        held = n + noise / LEVEL_VARIANCE
+        a = ss - sum_s * sum_s / held + noise / v
+        b = sc - sum_s * sum_c / held
+        d = cc - sum_c * sum_c / held + noise / v
+        of_s, of_c = sz - sum_s * sum_z / held, cz - sum_c * sum_z / held
+        mean = (s * (d * of_s - b * of_c) + c * (a * of_c - b * of_s)) / (a * d - b * b)
+        log_l: FloatArray = mean * z - 0.5 * mean * mean
         return log_l
 
     def state(self) -> State:

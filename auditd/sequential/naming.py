@@ -19,7 +19,7 @@ FloatArray = npt.NDArray[np.float64]
 Key = tuple[str, str]
 
 LEAD_BONUS: Final = {"drift": -0.9, "spread": -0.9, "batch": 0.4}
-LEAD_BONUS_SHARED: Final = {"serial": 0.65, "drift": -3.0}
+LEAD_BONUS_SHARED: Final = {"serial": 0.8, "drift": -3.0}
 LEAD_BONUS_ALONE: Final = {"serial": -1.0, "drift": -1.0}
 """Nats that a kind is given beyond its log e-value; 0 where none is named. The kind with fewer moving parts
 leads when it is close: a constant for each level (`batch`) before a path for each level (`drift` shared by

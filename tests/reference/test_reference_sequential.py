@@ -6,7 +6,7 @@ from scipy import stats
 
 from auditd.sequential import replay
 from auditd.sequential.bets_batch import BatchEffects
-from auditd.sequential.bets_clock import ClockCycle
+from auditd.sequential.bets_clock import LEVEL_VARIANCE, ClockCycle
 from auditd.sequential.bets_lineage import ParentCorrelation
 from auditd.sequential.bets_spread import SpreadChange
 from auditd.sequential.grids import BATCH_SHARE, CLOCK_VARIANCE, LINEAGE_PHI, SPREAD_SCALE, START_NORM
@@ -103,8 +103,8 @@ def test_batch_bets_are_the_conditional_densities_of_a_multivariate_normal():
             assert got[row, t] == pytest.approx(expected, abs=1e-9)
 
 
-def test_clock_bets_are_the_regression_densities_of_scipy():
-    """Sine and cosine with normal priors: the joint normal density of scipy, divided run by run."""
+def test_clock_bets_are_the_conditional_means_of_a_multivariate_normal():
+    """Level, sine and cosine with normal priors: the cycle conditioned run by run, bet on by scipy."""
     rng = np.random.default_rng(7)
     n, day = 80, 86_400.0
     times = np.arange(n) * day * 4.0 / n
@@ -112,9 +112,10 @@ def test_clock_bets_are_the_regression_densities_of_scipy():
     got = ClockCycle().log_bets(scored(z, times=times))
     x = np.column_stack((np.sin(2 * np.pi * times / day), np.cos(2 * np.pi * times / day)))
     for row, v in enumerate(CLOCK_VARIANCE):
-        cov = v * x @ x.T + (1 - v) * np.eye(n)
-        joint = [0.0] + [stats.multivariate_normal.logpdf(z[:t], cov=cov[:t, :t]) for t in range(1, n + 1)]
-        expected = np.diff(joint) - stats.norm.logpdf(z)
+        cycle = v * x @ x.T
+        seen = cycle + LEVEL_VARIANCE + (1 - v) * np.eye(n)
+        mean = [cycle[t, :t] @ np.linalg.solve(seen[:t, :t], z[:t]) if t else 0.0 for t in range(n)]
+        expected = stats.norm.logpdf(z, mean, 1.0) - stats.norm.logpdf(z)
         expected[times < 3 * day] = 0.0
         np.testing.assert_allclose(got[row], expected, atol=1e-9)
     assert not got[len(CLOCK_VARIANCE) :].any()  # four days are no three weeks
