@@ -9,20 +9,21 @@ import signal
 import socket
 import threading
 import time
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from pathlib import Path
 
 from auditd.errors import AuditdError, PlanError
 from auditd.landing import Landing, Watcher
 from auditd.notify import Notifier
 from auditd.pipeline.campaign import Campaign, open_for_taking, settle_plan
+from auditd.pipeline.grouping import grouped
 from auditd.pipeline.pausing import TROUBLES, Pausing
 from auditd.records import Batch, Refusal, Run
 from auditd.store.clock import now_us
 from auditd.store.collect import collect_runs
 from auditd.store.plans import latest_version
 from auditd.store.refusals import save_refusals
-from auditd.store.sources import machine_name, save_source, stored_sources
+from auditd.store.sources import machine_name, save_sources, stored_sources
 from auditd.store.states import save_beat
 
 log = logging.getLogger("auditd")
@@ -108,8 +109,8 @@ class Collector:
         self.landing = Landing(campaign.plan, known)
         self._watcher = Watcher(self.landing, campaign.plan.landing.watch)
         self._watcher.start()
-        for batch in self.landing.scan(time.time()):
-            self._take(batch)
+        for group in grouped(self.landing.scan(time.time())):
+            self._take(group)
             if self.stop.is_set():
                 return
         self._beat(self._watcher, force=True)
@@ -122,8 +123,8 @@ class Collector:
         if watcher is None:
             return True
         watcher.relay()
-        for batch in self.landing.visit(time.time()):
-            self._take(batch)
+        for group in grouped(self.landing.visit(time.time())):
+            self._take(group)
             self._beat(watcher)
             if self.stop.is_set():
                 return True
@@ -134,15 +135,14 @@ class Collector:
         watcher.wake.wait(min(self.landing.wait_s(time.time()), WAIT_MAX_S))
         return True
 
-    def _take(self, batch: Batch) -> None:
+    def _take(self, batches: Sequence[Batch]) -> None:
         at_us = now_us()
-        found = [item for item in batch.items if isinstance(item, Run)]
-        refused = [item for item in batch.items if isinstance(item, Refusal)]
-        ordered = batch.change == "append" or len(found) <= 1
+        found = [one for batch in batches for one in _with_order(batch)]
+        refused = [item for batch in batches for item in batch.items if isinstance(item, Refusal)]
         with self._campaign.engine.begin() as connection:
-            collected = collect_runs(connection, [(run, ordered) for run in found], landed_us=at_us)
+            collected = collect_runs(connection, found, landed_us=at_us)
             save_refusals(connection, [*refused, *collected.rewritten], at_us, taken_up=False)
-            save_source(connection, batch.source, self.machine)
+            save_sources(connection, [batch.source for batch in batches], self.machine)
 
     def _beat(self, watcher: Watcher, *, force: bool = False) -> None:
         now = time.monotonic()
@@ -212,3 +212,10 @@ class Collector:
     def _wake(self) -> None:
         if self._watcher is not None:
             self._watcher.wake.set()
+
+
+def _with_order(batch: Batch) -> list[tuple[Run, bool]]:
+    """Return a batch's runs; those of one table that landed whole are in no order."""
+    found = [item for item in batch.items if isinstance(item, Run)]
+    ordered = batch.change == "append" or len(found) <= 1
+    return [(run, ordered) for run in found]

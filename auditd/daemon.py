@@ -24,6 +24,7 @@ from auditd.landing import Landing, Watcher
 from auditd.notify import Notifier
 from auditd.pipeline.campaign import Campaign, open_for_taking
 from auditd.pipeline.delivering import Courier
+from auditd.pipeline.grouping import grouped
 from auditd.pipeline.pausing import TROUBLES, Pausing
 from auditd.pipeline.report_keeping import ReportKeeper
 from auditd.pipeline.session import Session
@@ -188,10 +189,10 @@ class Daemon:
         self._beat()
 
     def _take(self, batches: Iterator[Any]) -> None:  # batches of records
-        for batch in batches:
+        for group in grouped(batches):
             self._await_readers()
             self._check_hold()
-            self.session.take(batch)
+            self.session.take_all(group)
             self._advance(None)
             self._beat()
             self.notifier.watchdog()

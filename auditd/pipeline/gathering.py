@@ -14,6 +14,7 @@ from auditd.alerts.deliver import deliver_due
 from auditd.landing import Landing, Progress
 from auditd.landing.landing import Waiting
 from auditd.pipeline.campaign import open_for_taking
+from auditd.pipeline.grouping import grouped
 from auditd.pipeline.session import Session, Taken
 from auditd.pipeline.weighing import refresh
 from auditd.store.lock import Holder
@@ -42,8 +43,8 @@ def gather(plan_path: Path, report: Report) -> Gathered:
         with campaign.engine.connect() as connection:
             known = list(stored_sources(connection, machine_of_sources(campaign.url)))
         landing = Landing(campaign.plan, known, settle_all=True)
-        for batch in landing.scan(time.time()):
-            session.take(batch, at_once=False)
+        for group in grouped(landing.scan(time.time())):
+            session.take_all(group, at_once=False)
             report("read", landing.progress)
         session.take_up()
         report("audit", landing.progress)

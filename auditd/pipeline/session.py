@@ -7,7 +7,7 @@ deliver. If it fails, nothing of it is kept, and the session is opened again fro
 from __future__ import annotations
 
 import time
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 
 import msgspec
 from sqlalchemy import Connection
@@ -34,7 +34,7 @@ from auditd.store.runs import (
     mark_late,
     stored_runs,
 )
-from auditd.store.sources import machine_of_sources, save_source
+from auditd.store.sources import machine_of_sources, save_sources
 from auditd.store.states import save_flush
 from auditd.store.tables import runs
 
@@ -116,25 +116,30 @@ class Session:
         return findings + self.facts.standing()
 
     def take(self, batch: Batch, *, at_once: bool = True) -> None:
-        """Take one visit's records, with how far the file has been read, in one transaction.
+        """Take one file's new records; see `take_all`."""
+        self.take_all([batch], at_once=at_once)
+
+    def take_all(self, batches: Sequence[Batch], *, at_once: bool = True) -> None:
+        """Take records, with how far their files have been read, in one transaction.
 
         Without `at_once` the runs are stored, and `take_up` tells of them later, in their own order.
         """
         landed_us = now_us()
-        found = [item for item in batch.items if isinstance(item, Run)]
-        refused = [item for item in batch.items if isinstance(item, Refusal)]
-        ordered = self._tells_order(batch, len(found))
+        found = [one for batch in batches for one in self._with_order(batch)]
+        refused = [item for batch in batches for item in batch.items if isinstance(item, Refusal)]
         with self.campaign.engine.begin() as connection:
             inserted = insert_runs(
                 connection,
-                [(run, ordered) for run in found],
+                found,
                 landed_us=landed_us,
                 config_rows=self._configs,
                 first_arrival=self._next_arrival if at_once else None,
             )
             refused += inserted.rewritten
             new_refusals = save_refusals(connection, refused, landed_us, taken_up=at_once)
-            save_source(connection, batch.source, machine_of_sources(self.campaign.url))
+            save_sources(
+                connection, [batch.source for batch in batches], machine_of_sources(self.campaign.url)
+            )
             if at_once:
                 findings = self._hear(inserted.stored, new_refusals)
                 self.totals.n_raised += self.raiser.raise_facts(connection, findings)
@@ -259,6 +264,12 @@ class Session:
         for refusal in refusals:
             findings += self.facts.refused(refusal)
         return findings + self.facts.standing()
+
+    def _with_order(self, batch: Batch) -> list[tuple[Run, bool]]:
+        """Return a batch's runs, each with whether its place in its file says its order."""
+        found = [item for item in batch.items if isinstance(item, Run)]
+        ordered = self._tells_order(batch, len(found))
+        return [(run, ordered) for run in found]
 
     def _tells_order(self, batch: Batch, n_runs: int) -> bool:
         """Whether a run's place within its file and visit says when it was made.

@@ -4,10 +4,10 @@ from __future__ import annotations
 
 import os
 import socket
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 
 import msgspec
-from sqlalchemy import Connection, delete, insert, select
+from sqlalchemy import Connection, bindparam, delete, insert, select
 from sqlalchemy.engine import URL
 
 from auditd.records import Source
@@ -26,9 +26,18 @@ def machine_of_sources(url: URL) -> str:
 
 def save_source(connection: Connection, source: Source, machine: str = "") -> None:
     """Save how far a file has been read, in place of what was known before."""
-    known = (sources.c.machine == machine) & (sources.c.path == source.path)
-    connection.execute(delete(sources).where(known))
-    connection.execute(insert(sources).values(machine=machine, **msgspec.structs.asdict(source)))
+    save_sources(connection, [source], machine)
+
+
+def save_sources(connection: Connection, found: Sequence[Source], machine: str = "") -> None:
+    """Save how far files have been read, in place of what was known before; of one file the last counts."""
+    latest = {source.path: source for source in found}
+    if not latest:
+        return
+    known = (sources.c.machine == machine) & (sources.c.path == bindparam("known_path"))
+    connection.execute(delete(sources).where(known), [{"known_path": path} for path in latest])
+    rows = [{"machine": machine, **msgspec.structs.asdict(source)} for source in latest.values()]
+    connection.execute(insert(sources), rows)
 
 
 def stored_sources(connection: Connection, machine: str = "") -> Iterator[Source]:
