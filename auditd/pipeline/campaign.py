@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import re
 import secrets
 from dataclasses import dataclass
 from pathlib import Path
@@ -20,6 +21,7 @@ from auditd.store.place import store_url
 from auditd.store.plans import Epoch, PlanVersion, plan_versions, save_epoch, save_plan_version, stored_epochs
 from auditd.store.runs import count_runs
 
+_PASSWORD = re.compile(r"(?P<before>[a-z0-9+]+://[^\s/:@\"']*:)[^\s/@\"']+@", re.IGNORECASE)
 KEY_BYTES = 32
 """Length of the key under which an epoch's ties are broken."""
 
@@ -101,6 +103,11 @@ def plan_in_use(connection: Connection, fallback: Plan) -> Plan:
     return parse_plan(versions[-1].text, fallback.path) if versions else fallback
 
 
+def text_to_keep(plan: Plan) -> str:
+    """Return the plan's text as it is stored and shown: without the password of a store's address."""
+    return _PASSWORD.sub(r"\g<before>***@", plan.text)
+
+
 def plan_difference(old: Plan, new: Plan) -> list[str]:
     """Return what differs in the audited fields, as `key: old -> new`."""
     before, after = _flat(old.audited_fields()), _flat(new.audited_fields())
@@ -115,7 +122,7 @@ def _take_first(connection: Connection, plan: Plan) -> None:
     version = save_plan_version(
         connection,
         digest=plan.audited_hash,
-        text=plan.text,
+        text=text_to_keep(plan),
         reason=None,
         taken_us=now_us(),
         from_position=0,
@@ -148,7 +155,7 @@ def _refuse_or_replace(connection: Connection, plan: Plan, versions: list[PlanVe
         save_plan_version(
             connection,
             digest=plan.audited_hash,
-            text=plan.text,
+            text=text_to_keep(plan),
             reason="changed before the first run",
             taken_us=now_us(),
             from_position=0,

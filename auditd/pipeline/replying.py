@@ -9,7 +9,7 @@ from sqlalchemy import Connection, select, update
 
 from auditd.checks.facts.plan import plan_finding
 from auditd.errors import BadInput, PlanError
-from auditd.pipeline.campaign import Campaign, new_key, open_for_replies, plan_difference
+from auditd.pipeline.campaign import Campaign, new_key, open_for_replies, plan_difference, text_to_keep
 from auditd.pipeline.raising import SEQUENTIAL, Raiser
 from auditd.plan import Plan
 from auditd.plan_reading import parse_plan
@@ -166,7 +166,7 @@ def amend(plan_path: Path, reason: str) -> list[str]:
         version = save_plan_version(
             connection,
             digest=campaign.plan.audited_hash,
-            text=campaign.plan.text,
+            text=text_to_keep(campaign.plan),
             reason=reason,
             taken_us=now_us(),
             from_position=position,
