@@ -54,6 +54,14 @@ def along_order(n: int) -> Stretches:
     )
 
 
+def unlinked(n: int) -> Stretches:
+    """No run follows another: the order of n runs is not known."""
+    index = np.arange(n, dtype=np.int64)
+    return Stretches(
+        along="nothing", child=index[:0], parent=index[:0], starts=index, runs=index, offsets=index
+    )
+
+
 def within(codes: Codes, name: str) -> Stretches:
     """One chain for each level of a nuisance, in the order of the audit."""
     order = np.argsort(codes.codes, kind="stable")

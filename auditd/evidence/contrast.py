@@ -13,6 +13,7 @@ from auditd.evidence.crossing import MAX_LEVELS, NuisanceCrossing, cross
 from auditd.evidence.fit import build
 from auditd.evidence.inputs import (
     CONSTANT,
+    NO_ORDER,
     Codes,
     Floats,
     Labels,
@@ -43,6 +44,7 @@ class ComparedRuns:
     cells: Codes
     weights: Floats
     crossings: tuple[NuisanceCrossing, ...]
+    ordered: bool
 
 
 def contrast(
@@ -54,14 +56,16 @@ def contrast(
     nuisance: Mapping[str, Labels] = {},
     blocks: Labels | None = None,
     confidence: float = 0.95,
+    ordered: bool = True,
 ) -> Contrast:
     """Compare two sides, b − a, with an interval that is honest under the dependence found.
 
     Errors follow an AR(1) along the order or within a nuisance's levels (whichever shows more), fitted by
     restricted likelihood and averaged over its coefficient. A nuisance that each compared cell meets is a
     block; one that is partly crossed is a random effect; each level's own difference between the sides is
-    the error of the comparison. Levels beyond 40 are clusters. A nuisance that cannot be separated from the
-    sides makes the comparison not estimable.
+    the error of the comparison. Two levels are no sample of others: they enter as a block alone, and a
+    remark says that the claim is for these. Levels beyond 40 are clusters. A nuisance that cannot be
+    separated from the sides makes the comparison not estimable.
 
     Parameters
     ----------
@@ -73,6 +77,7 @@ def contrast(
     blocks : (n,) labels of seed blocks (common random numbers), or None. Complete blocks are compared by
         their differences.
     confidence : of every interval.
+    ordered : whether the order of the runs is known; if not, no dependence in time is asked.
 
     Returns
     -------
@@ -86,8 +91,10 @@ def contrast(
     Notes
     -----
     Assumes: errors stationary about the cells' levels; with long memory or a drift confounded with the
-    cells (all of A before B) intervals are too short. Levels of a nuisance are taken as drawn from many;
-    with fewer than about 4 the interval is wide. No warning is not proof of independence.
+    cells (all of A before B) intervals are too short, and so are they with ordered=False where errors
+    depend in time. Three levels or more of a nuisance are taken as drawn from many; with 3 or 4 the interval
+    is wide. With 2, an interval holds for their difference as the runs weigh it, not for other levels. No
+    warning is not proof of independence.
 
     References
     ----------
@@ -106,7 +113,7 @@ def contrast(
     scaled, scale = standardise(y)
     _require_runs(scaled, scale / max(float(np.abs(y).max()), 1e-300), coded, weights)
     crossings = tuple(cross(name, codes, coded, weights) for name, codes in nuisances.items())
-    runs = ComparedRuns(y=scaled, cells=coded, weights=weights, crossings=crossings)
+    runs = ComparedRuns(y=scaled, cells=coded, weights=weights, crossings=crossings, ordered=ordered)
     return _compare(runs, seeds, _scene(runs, scale, level, n_left_out))
 
 
@@ -119,6 +126,8 @@ def _scene(runs: ComparedRuns, scale: float, level: float, n_left_out: int) -> S
     ]
     if n_left_out:
         remarks.append(f"{n_left_out} listed cells have no runs, or no partner with runs, and are left out")
+    if not runs.ordered:
+        remarks.append(NO_ORDER)
     sides = _side_counts(runs.cells, runs.weights)
     return Scene(
         naive=welch(runs.y, runs.cells.codes, runs.weights, level),
@@ -153,7 +162,7 @@ def _compare(runs: ComparedRuns, seeds: Codes | None, scene: Scene) -> Contrast:
     return solved(
         solve(model, scene.confidence),
         scene,
-        f"generalised least squares along {model.chains.along}",
+        "generalised least squares" + (f" along {model.chains.along}" if runs.ordered else ""),
         problem.crossings,
     )
 
@@ -193,7 +202,13 @@ def _problem(runs: ComparedRuns) -> Problem:
         present, code = np.unique(group, return_inverse=True)
         weights = np.array([-1.0, 0.0, 1.0])[present]
     return Problem(
-        y=y, cell=code, contrast=weights, side=side, crossings=crossings, n_cells_spent=runs.cells.n_levels
+        y=y,
+        cell=code,
+        contrast=weights,
+        side=side,
+        crossings=crossings,
+        n_cells_spent=runs.cells.n_levels,
+        ordered=runs.ordered,
     )
 
 
@@ -225,6 +240,7 @@ def _paired_problem(runs: ComparedRuns, blocks: Codes) -> Problem | None:
         ),
         n_cells_spent=1,
         at_zero=NO_MEMORY,
+        ordered=runs.ordered,
     )
 
 

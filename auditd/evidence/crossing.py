@@ -10,6 +10,7 @@ import numpy as np
 from auditd.evidence.inputs import Codes, Floats, Ints
 
 MAX_LEVELS = 40  # levels that enter the design one column each; above, levels are clusters
+MIN_SAMPLE_LEVELS = 3  # levels that can stand for others: with 2, t has 1 degree of freedom (measured)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -26,6 +27,11 @@ class NuisanceCrossing:
     kind: Literal["block", "random", "cluster", "unit", "aliased"]
     both: Ints
     reason: str | None = None
+
+    @property
+    def is_few(self) -> bool:
+        """Whether its levels are too few to be a sample of others: the claim is then for these alone."""
+        return self.codes.n_levels < MIN_SAMPLE_LEVELS
 
 
 def cross(name: str, codes: Codes, cells: Codes, weights: Floats) -> NuisanceCrossing:

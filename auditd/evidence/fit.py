@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
-from auditd.evidence.chains import Stretches, along_order, within
+from auditd.evidence.chains import Stretches, along_order, unlinked, within
 from auditd.evidence.crossing import NuisanceCrossing
 from auditd.evidence.inputs import Floats, Ints
 from auditd.evidence.moments import Moments
@@ -17,16 +17,27 @@ from auditd.evidence.restricted import FIXED_RIDGE, Fits, evaluate
 MIN_CHAIN_RUNS = 4.0  # mean length of a nuisance's chains below which dependence within them is not asked
 SLOPES_FOUND = 0.05  # p of the levels' own differences below which they stand in the model of the errors
 N_SHARES = 24  # grid points for one random effect's share alone
+NO_OWN = 1.0  # p of the own differences of a nuisance whose runs are too few to ask
 SHARES = np.linspace(0.02, 1.0, N_SHARES) ** 2
+
+
+@dataclass(frozen=True, kw_only=True)
+class OwnDifferences:
+    """F and its upper tail of the differences that a nuisance of few levels has of its own."""
+
+    crossing: NuisanceCrossing
+    f: float
+    pvalue: float
 
 
 @dataclass(frozen=True, kw_only=True)
 class Model:
     """Columns, sums and bookkeeping that every evaluation needs.
 
-    base : columns of cells and levels. used : these, and the slopes of nuisances whose levels plainly
-        differ in their differences, with the penalties slope_penalty: left out, they would be taken for
-        autocorrelation.
+    base : columns of cells, of levels, and of the n_own differences that nuisances of few levels plainly have
+        of their own; own : what was found about those. used : base, and the slopes of nuisances whose levels
+        plainly differ in their differences, with the penalties slope_penalty: left out, they would be taken
+        for autocorrelation.
     """
 
     problem: Problem
@@ -34,6 +45,8 @@ class Model:
     chains: Stretches
     moments: Moments
     base: Ints
+    n_own: int
+    own: tuple[OwnDifferences, ...]
     used: Ints
     slope_penalty: Floats
     n_fixed: int
@@ -53,6 +66,7 @@ class Model:
             shares = share if place == lead else np.full(len(share), others.get(place, 0.5))
             penalty = level_penalty(crossing, shares, self.moments.n)
             parts.append(np.repeat(penalty[:, None], crossing.codes.n_levels, axis=1))
+        parts.append(np.full((len(share), self.n_own), FIXED_RIDGE * self.moments.n))
         return np.hstack(parts)
 
     def contrast(self, columns: Ints) -> Floats:
@@ -72,7 +86,10 @@ def level_penalty(crossing: NuisanceCrossing, share: Floats, n: int) -> Floats:
 def build(problem: Problem) -> Model:
     """Lay the columns and choose the chains along which the errors look most dependent."""
     columns = lay_columns(problem)
-    base = columns.base()
+    own = {place: own_differences(problem, columns, place) for place in columns.own}
+    plain = [columns.own[place] for place, one in own.items() if one.pvalue < SLOPES_FOUND]
+    base = np.concatenate([columns.base(), *plain])
+    n_own = sum(map(len, plain))
     penalties = {place: plain_slope_penalty(problem, columns, base, place) for place in columns.slopes}
     active = [place for place, penalty in penalties.items() if penalty is not None]
     used = np.concatenate([base, *(columns.slopes[place] for place in active)])
@@ -87,15 +104,19 @@ def build(problem: Problem) -> Model:
         chains=chains,
         moments=collect(problem, columns, chains),
         base=base,
+        n_own=n_own,
+        own=tuple(own.values()),
         used=used,
         slope_penalty=slope_penalty,
-        n_fixed=problem.n_cells_spent + sum(spent),
+        n_fixed=problem.n_cells_spent + sum(spent) + n_own,
     )
 
 
 def choose_chains(problem: Problem, columns: Columns, used: Ints) -> Stretches:
     """The order or a nuisance's levels: the larger lag-1 correlation of residuals, in standard errors."""
     n = len(problem.y)
+    if not problem.ordered:
+        return unlinked(n)
     candidates: list[Stretches] = [along_order(n)]
     for crossing in problem.crossings:
         if n / crossing.codes.n_levels >= MIN_CHAIN_RUNS:
@@ -113,20 +134,32 @@ def choose_chains(problem: Problem, columns: Columns, used: Ints) -> Stretches:
 
 def plain_slope_penalty(problem: Problem, columns: Columns, base: Ints, place: int) -> float | None:
     """Error variance ÷ variance of a nuisance's own differences; None where F does not find any."""
-    from scipy.special import fdtrc
-
     slopes = columns.slopes[place]
-    n_own = len(slopes) - 1
-    df = len(problem.y) - len(base) - n_own
-    if df < 1:
-        return None
-    small = plain_residuals(problem, columns, base)
-    full = plain_residuals(problem, columns, np.concatenate((base, slopes)))
-    error = max(float(full @ full) / df, 1e-300)
-    f = (float(small @ small) - float(full @ full)) / n_own / error
-    if f <= 1 or float(fdtrc(n_own, df, f)) > SLOPES_FOUND:
+    f, pvalue = plain_f(problem, columns, base, slopes, len(slopes) - 1)
+    if f <= 1 or pvalue > SLOPES_FOUND:
         return None
     return max(len(problem.y) / (4 * len(slopes)) / (f - 1), 1e-6)
+
+
+def own_differences(problem: Problem, columns: Columns, place: int) -> OwnDifferences:
+    """Ask a nuisance of few levels whether the difference of the sides is the same at each."""
+    extra = columns.own[place]
+    f, pvalue = plain_f(problem, columns, columns.base(), extra, len(extra))
+    return OwnDifferences(crossing=problem.crossings[place], f=f, pvalue=pvalue)
+
+
+def plain_f(problem: Problem, columns: Columns, base: Ints, extra: Ints, n_extra: int) -> tuple[float, float]:
+    """F of further columns of rank n_extra by ordinary least squares, and its upper tail."""
+    from scipy.special import fdtrc
+
+    df = len(problem.y) - len(base) - n_extra
+    if df < 1:
+        return 0.0, NO_OWN
+    small = plain_residuals(problem, columns, base)
+    full = plain_residuals(problem, columns, np.concatenate((base, extra)))
+    error = max(float(full @ full) / df, 1e-300)
+    f = max((float(small @ small) - float(full @ full)) / n_extra / error, 0.0)
+    return f, float(fdtrc(n_extra, df, f))
 
 
 def plain_residuals(problem: Problem, columns: Columns, used: Ints) -> Floats:
@@ -154,10 +187,16 @@ def weigh_parameters(model: Model) -> tuple[Posterior, dict[int, float], int | N
         drops[place] = float(fits.loglik.max() - fits.loglik[-1])
     lead = max(random, key=drops.__getitem__) if random else None
 
-    def fit(phi: Floats, share: Floats) -> Fits:
-        return evaluate(moments, c, phi, model.used_ridge(share, lead, others), model.n_fixed)
+    ordered = model.problem.ordered
 
-    return explore(fit, with_share=lead is not None, at_zero=model.problem.at_zero), others, lead
+    def fit(phi: Floats, share: Floats) -> Fits:
+        known = phi if ordered else np.zeros_like(phi)
+        return evaluate(moments, c, known, model.used_ridge(share, lead, others), model.n_fixed)
+
+    posterior = explore(fit, with_share=lead is not None, at_zero=model.problem.at_zero)
+    if not ordered:
+        posterior = replace(posterior, phi=np.zeros_like(posterior.phi))
+    return posterior, others, lead
 
 
 def errors_of(model: Model, coefficients: Floats, leverage: Floats, phi: float) -> tuple[Floats, Floats]:

@@ -15,6 +15,7 @@ Floats = npt.NDArray[np.float64]
 Ints = npt.NDArray[np.int64]
 Labels = Sequence[Hashable] | npt.NDArray[Any]  # labels are JSON values of any kind
 
+NO_ORDER = "no order is known, so dependence in time is not counted"
 CONSTANT = 1e-14  # spread ÷ size below which values differ by rounding only
 LARGEST = 1e150  # squares beyond this leave the range of a float64
 

@@ -22,6 +22,7 @@ from auditd.evidence.fit import SHARES, Model
 from auditd.evidence.inputs import Floats
 from auditd.evidence.restricted import FIXED_RIDGE, Fits, evaluate
 
+FOUND = 0.05  # p of the levels' own differences below which they are taken to be there
 PRIOR_DF = 0.5  # degrees of freedom given to "no interaction"; see above
 NO_SLOPES = 1e9  # penalty, in runs, that leaves no slopes
 N_FINE = 17  # grid points of the second search
@@ -33,6 +34,7 @@ class Interaction:
     """Variance of the contrast with the levels' own differences as error, its degrees of freedom, and the
     estimate's move.
 
+    floor : the part of the variance that further runs on the same levels leave; 0 where none is found.
     f, pvalue : mean square of the levels' own differences ÷ error mean square, and its upper tail.
     """
 
@@ -40,6 +42,7 @@ class Interaction:
     variance: float
     df: float
     shift: float
+    floor: float
     f: float
     pvalue: float
 
@@ -73,13 +76,16 @@ def judge_slopes(
     found, estimate = f * plain, float(ends.estimate[1])
     if f > 1:
         found, estimate = _likeliest(fit, mean_runs)
+    variance = (n_own * found + PRIOR_DF * plain) / (n_own + PRIOR_DF)
+    pvalue = float(fdtrc(n_own, df_full, f))
     return Interaction(
         name=model.problem.crossings[place].name,
-        variance=(n_own * found + PRIOR_DF * plain) / (n_own + PRIOR_DF),
+        variance=variance,
         df=n_own + PRIOR_DF,
         shift=estimate - base_estimate,
+        floor=max(variance - plain, 0.0) if pvalue < FOUND else 0.0,
         f=f,
-        pvalue=float(fdtrc(n_own, df_full, f)),
+        pvalue=pvalue,
     )
 
 

@@ -51,8 +51,13 @@ class LevelEffects:
         return float(fdtrc(self.df, self.df_within, self.between / expected))
 
 
-def effects(name: str, residual: Floats, codes: Codes, cell: Ints, n_cells: int) -> LevelEffects | None:
-    """Analyse residuals by levels within cells; None where no cell has two levels, or no level two runs."""
+def effects(
+    name: str, residual: Floats, codes: Codes, cell: Ints, n_cells: int, n_removed: int = 0
+) -> LevelEffects | None:
+    """Analyse residuals by levels within cells; None where no cell has two levels, or no level two runs.
+
+    n_removed : other means that were taken off the residuals, beyond those of the cells.
+    """
     slot = cell * codes.n_levels + codes.codes
     present, level_of = np.unique(slot, return_inverse=True)
     owner = present // codes.n_levels
@@ -61,7 +66,7 @@ def effects(name: str, residual: Floats, codes: Codes, cell: Ints, n_cells: int)
     runs = np.bincount(owner, count, n_cells)
     n, n_slots = float(len(residual)), len(present)
     df_slots = n_slots - int((runs > 0).sum())
-    df_within = n - n_slots
+    df_within = n - n_slots - n_removed
     if df_slots < MIN_DF or df_within < MIN_DF:
         return None
     within = float(((residual - means[level_of]) ** 2).sum()) / df_within

@@ -24,6 +24,7 @@ def evidence_loss(
     blocks: Labels | None = None,
     duplicates: object = None,
     parents: object = None,
+    ordered: bool = True,
 ) -> EvidenceLoss:
     """Loss of evidence of a comparison (with a and b) or of the cells' means (without).
 
@@ -44,7 +45,7 @@ def evidence_loss(
         raise BadInput("a and b: give both, or neither")
     if a is None:
         found = effective_number(
-            values, cells=cells, nuisance=nuisance, duplicates=duplicates, parents=parents
+            values, cells=cells, nuisance=nuisance, duplicates=duplicates, parents=parents, ordered=ordered
         )
         return _bounded(found.loss, found.loss_low, found.loss_high)
     y = as_values(values)
@@ -60,6 +61,7 @@ def evidence_loss(
         b=b,
         nuisance=coded,
         blocks=seeds,
+        ordered=ordered,
     )
     if result.loss is None or result.loss_low is None or result.loss_high is None:
         return EvidenceLoss(loss=1.0, low=1.0, high=1.0, estimable=False, reason=result.reason)

@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from auditd.evidence.chains import Stretches, along_order, within
+from auditd.evidence.chains import Stretches, along_order, unlinked, within
 from auditd.evidence.higher import Autoregression, choose_order, innovations_of, looks_white
 from auditd.evidence.inputs import Codes, Floats, Ints
 from auditd.evidence.moments import Moments, sum_moments
@@ -64,8 +64,22 @@ class TimeDependence:
     variance: float
 
 
-def remember(residual: Floats, level: Ints, nuisances: Mapping[str, Codes]) -> TimeDependence:
-    """Find steps and fit the autocorrelation of residuals about the means of `level` (codes)."""
+def forget(residual: Floats, n_spent: int) -> TimeDependence:
+    """No dependence in time, where no order is known."""
+    nothing = np.empty(0, dtype=np.int64)
+    return TimeDependence(
+        chains=unlinked(len(residual)),
+        steps=Steps(
+            along="nothing", segment=np.full(len(residual), -1, np.int64), owner=nothing, variance=0.0, df=0
+        ),
+        posterior=none_found(),
+        higher=None,
+        variance=max(float(residual @ residual) / max(len(residual) - n_spent, 1), SMALLEST),
+    )
+
+
+def remember(residual: Floats, level: Ints, n_spent: int, nuisances: Mapping[str, Codes]) -> TimeDependence:
+    """Find steps and fit the autocorrelation of residuals about n_spent means, all within `level` (codes)."""
     candidates: list[Stretches] = [along_order(len(residual))]
     candidates += [
         within(codes, name)
@@ -74,7 +88,7 @@ def remember(residual: Floats, level: Ints, nuisances: Mapping[str, Codes]) -> T
     ]
     steps, rest = find_steps(residual, choose(residual, candidates))
     chains = choose(rest, candidates)
-    posterior, n_fixed = _fit(residual, level, steps, chains)
+    posterior = _fit(residual, level, steps, chains)
     return TimeDependence(
         chains=chains,
         steps=steps,
@@ -82,7 +96,7 @@ def remember(residual: Floats, level: Ints, nuisances: Mapping[str, Codes]) -> T
         higher=_higher(rest, chains, posterior)
         if len(rest) >= MIN_HIGHER_RUNS * (int(level.max()) + 1)
         else None,
-        variance=max(float(rest @ rest) / max(len(rest) - n_fixed, 1), SMALLEST),
+        variance=max(float(rest @ rest) / max(len(rest) - n_spent - steps.df, 1), SMALLEST),
     )
 
 
@@ -139,14 +153,14 @@ def _measure(residual: Floats, along: str, segment: Ints, owner: Ints) -> tuple[
     return Steps(along=along, segment=segment, owner=owner, variance=between / typical, df=df), rest
 
 
-def _fit(residual: Floats, level: Ints, steps: Steps, chains: Stretches) -> tuple[Posterior, int]:
+def _fit(residual: Floats, level: Ints, steps: Steps, chains: Stretches) -> Posterior:
     """Restricted likelihood of φ about the means; with too many of these, moments are corrected instead."""
     segment, n_segments, n_levels = steps.segment, steps.n_segments, int(level.max()) + 1
     n_fixed = n_levels + steps.df
     same = level[chains.child] == level[chains.parent]
     crowded = len(level) < MIN_LEVEL_RUNS * n_levels and 2 * int(same.sum()) > len(same)
     if crowded or len(level) - n_fixed < MIN_FREE_RUNS or float(residual @ residual) <= SMALLEST:
-        return none_found(), n_fixed
+        return none_found()
     many = n_levels > MAX_COLUMNS
     columns = 1 if many else n_levels
     group = np.zeros_like(level) if many else level
@@ -169,7 +183,7 @@ def _fit(residual: Floats, level: Ints, steps: Steps, chains: Stretches) -> tupl
     def fit(phi: Floats, _share: Floats) -> Fits:
         return evaluate(moments, c, phi, np.broadcast_to(ridge, (len(phi), len(ridge))), n_fixed)
 
-    return explore(fit, with_share=False), n_fixed
+    return explore(fit, with_share=False)
 
 
 def _unbiased_moments(moments: Moments, level: Ints, chains: Stretches) -> Moments:

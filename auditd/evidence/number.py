@@ -12,6 +12,7 @@ from auditd.evidence.chains import Chains
 from auditd.evidence.distinct import as_parents, lineage, originals
 from auditd.evidence.inputs import (
     CONSTANT,
+    NO_ORDER,
     Codes,
     Floats,
     Ints,
@@ -21,13 +22,15 @@ from auditd.evidence.inputs import (
     as_values,
     standardise,
 )
-from auditd.evidence.levels import LevelEffects, effects
-from auditd.evidence.memory import TimeDependence, remember
+from auditd.evidence.levels import LevelEffects
+from auditd.evidence.memory import TimeDependence, forget, remember
 from auditd.evidence.moments import sum_moments
 from auditd.evidence.persistence import lags_needed, same_cell_pairs
 from auditd.evidence.posterior import Posterior, explore
 from auditd.evidence.restricted import Fits, evaluate
 from auditd.evidence.result import EffectiveNumber
+from auditd.evidence.spread import in_own_spread
+from auditd.evidence.suspects import suspect
 from auditd.evidence.tally import (
     TAIL,
     JudgedEffect,
@@ -46,7 +49,6 @@ ROUNDING = 1e-12  # relative error of sums over cells
 AFTER_LINEAGE = (
     0.0005  # tail in place of 0.025 once lineage explains the order: its innovations are estimated
 )
-SUSPECT = 0.05  # p below which level means are taken off before time is asked
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -67,6 +69,7 @@ def effective_number(
     nuisance: Mapping[str, Labels] = {},
     duplicates: object = None,
     parents: object = None,
+    ordered: bool = True,
 ) -> EffectiveNumber:
     """Count the independent runs that would give the cells' means as exactly as these runs do.
 
@@ -87,6 +90,7 @@ def effective_number(
     duplicates : (n,) booleans (a copy of an earlier run), indices of the run copied or −1, or labels shared
         by copies; or None.
     parents : (n,) index of the run each was restarted from, −1 for none; or None.
+    ordered : whether the order of the runs is known; if not, no dependence in time is counted.
 
     Returns
     -------
@@ -99,6 +103,9 @@ def effective_number(
 
     Notes
     -----
+    Residuals are pooled in their cells' own standard deviations, so that a few wide cells do not decide for
+    all; cells of fewer than 5 runs share one.
+
     Assumes: level effects drawn from one distribution, errors stationary between steps. A slow wander is
     partly taken for steps; long memory beyond an AR(1) makes the number too large. A dependence that is the
     same in every run cannot be seen.
@@ -119,7 +126,7 @@ def effective_number(
     runs, remarks = _prepare(
         y[kept], coded.codes[kept], {k: _some(v, kept) for k, v in nuisances.items()}, chains
     )
-    return _count(runs, n, remarks)
+    return _count(runs, n, remarks if ordered else [*remarks, NO_ORDER], ordered=ordered)
 
 
 def _some(codes: Codes, kept: Ints) -> Codes:
@@ -147,7 +154,11 @@ def _prepare(
     ]
     asked = {name: codes for name, codes in nuisances.items() if 1 < codes.n_levels < len(y)}
     return DistinctRuns(
-        residual=residual / spread, cell=cell, count=count, nuisances=asked, links=links
+        residual=in_own_spread(residual / spread, cell, count),
+        cell=cell,
+        count=count,
+        nuisances=asked,
+        links=links,
     ), remarks
 
 
@@ -173,33 +184,7 @@ def _restart_chains(runs: DistinctRuns) -> Lineage | None:
     )
 
 
-def _suspects(residual: Floats, runs: DistinctRuns) -> tuple[list[LevelEffects], Ints, Floats, list[str]]:
-    """Level effects, strongest first; codes and residuals with the suspicious ones' means taken off."""
-    found: list[LevelEffects] = []
-    remarks: list[str] = []
-    level, rest, waiting = runs.cell, residual, dict(runs.nuisances)
-    while waiting:
-        asked = {k: effects(k, rest, v, runs.cell, len(runs.count)) for k, v in waiting.items()}
-        for name in [k for k, v in asked.items() if v is None]:
-            remarks.append(
-                f"{name}: each cell ran on one level, or each level once; what levels cost cannot be told"
-            )
-            del waiting[name], asked[name]
-        known = [v for v in asked.values() if v is not None]
-        if not known:
-            break
-        strongest = min(known, key=lambda e: (e.pvalue(1.0), -e.between / max(e.within, 1e-300)))
-        if strongest.pvalue(1.0) >= SUSPECT:
-            return found + known, level, rest, remarks
-        found.append(strongest)
-        rest = rest - strongest.means[strongest.level_of]
-        n_codes = int(strongest.level_of.max()) + 1
-        level = np.unique(level * n_codes + strongest.level_of, return_inverse=True)[1]
-        del waiting[strongest.name]
-    return found, level, rest, remarks
-
-
-def _count(runs: DistinctRuns, n: int, remarks: list[str]) -> EffectiveNumber:
+def _count(runs: DistinctRuns, n: int, remarks: list[str], *, ordered: bool) -> EffectiveNumber:
     """Put the parts together."""
     family = _restart_chains(runs)
     inherited = _sign(family.posterior) > 0 if family else False
@@ -207,8 +192,11 @@ def _count(runs: DistinctRuns, n: int, remarks: list[str]) -> EffectiveNumber:
     residual = (
         runs.links.innovations(runs.residual, rho) if runs.links is not None and inherited else runs.residual
     )
-    level_effects, level, rest, more = _suspects(residual, runs)
-    memory = remember(rest, level, runs.nuisances)
+    levels = suspect(residual, runs.cell, len(runs.count), runs.nuisances)
+    if ordered:
+        memory = remember(levels.rest, levels.level, levels.n_spent, runs.nuisances)
+    else:
+        memory = forget(levels.rest, levels.n_spent)
     n_cells, chains = len(runs.count), memory.chains
     phi = memory.posterior.quantile(memory.posterior.phi, 0.5)
     reach = phi if memory.higher is None else 1.0
@@ -227,9 +215,9 @@ def _count(runs: DistinctRuns, n: int, remarks: list[str]) -> EffectiveNumber:
     sure = phi if _sign(memory.posterior, tail) else 0.0
     cell_inflation = bare.persistence(np.array([sure]))[0]
     judged = tuple(
-        _with_dependence(e, dependence_of(e, memory, cell_inflation, sure, runs.cell)) for e in level_effects
+        _with_dependence(e, dependence_of(e, memory, cell_inflation, sure, runs.cell)) for e in levels.found
     )
-    return _result(replace(bare, effects=judged), n, rho, tail, tuple(remarks + more))
+    return _result(replace(bare, effects=judged), n, rho, tail, (*remarks, *levels.remarks))
 
 
 def _with_dependence(level_effects: LevelEffects, dependence: float) -> JudgedEffect:

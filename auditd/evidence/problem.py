@@ -22,7 +22,7 @@ class Problem:
         for b, 0 for other cells.
     crossings : nuisances with columns. n_cells_spent : degrees of freedom that cells cost (more than
         n_cells after centring).
-    at_zero : prior probability of no autocorrelation.
+    at_zero : prior probability of no autocorrelation. ordered : whether the runs' order is known.
     """
 
     y: Floats
@@ -32,17 +32,24 @@ class Problem:
     crossings: tuple[NuisanceCrossing, ...]
     n_cells_spent: int
     at_zero: float = 0.0
+    ordered: bool = True
 
 
 @dataclass(frozen=True, kw_only=True)
 class Columns:
-    """The design by code: table (K, k), each run's code, and what the columns are, by crossing index."""
+    """The design by code: table (K, k), each run's code, and what the columns are, by crossing index.
+
+    slopes : each level's own difference, as drawn from many. own : the same of a nuisance with too few levels
+        to be a sample, about their mean as weighted by the runs: it is this mean that a claim about these
+        levels is for, whether own differences stand in the model or not.
+    """
 
     code: Ints
     table: Floats
     cells: Ints
     levels: dict[int, Ints]
     slopes: dict[int, Ints]
+    own: dict[int, Ints]
 
     def base(self) -> Ints:
         """Columns of cells and nuisance levels, without the slopes."""
@@ -60,6 +67,7 @@ def lay_columns(problem: Problem) -> Columns:
     parts = [(cell[:, None] == np.arange(n_cells)).astype(float)]
     levels: dict[int, Ints] = {}
     slopes: dict[int, Ints] = {}
+    own: dict[int, Ints] = {}
     width = n_cells
     for place, crossing in enumerate(problem.crossings):
         level = crossing.codes.codes[first]
@@ -68,10 +76,31 @@ def lay_columns(problem: Problem) -> Columns:
             levels[place] = np.arange(width, width + crossing.codes.n_levels)
             width += crossing.codes.n_levels
         if len(crossing.both) > 1:
-            parts.append((level[:, None] == crossing.both) * side[:, None])
-            slopes[place] = np.arange(width, width + len(crossing.both))
-            width += len(crossing.both)
-    return Columns(code=code, table=np.hstack(parts), cells=np.arange(n_cells), levels=levels, slopes=slopes)
+            differences = (level[:, None] == crossing.both) * side[:, None]
+            if crossing.is_few:
+                differences = _about_mean(differences, _pull(problem, crossing))
+            parts.append(differences)
+            found = own if crossing.is_few else slopes
+            found[place] = np.arange(width, width + differences.shape[1])
+            width += differences.shape[1]
+    return Columns(
+        code=code, table=np.hstack(parts), cells=np.arange(n_cells), levels=levels, slopes=slopes, own=own
+    )
+
+
+def _pull(problem: Problem, crossing: NuisanceCrossing) -> Floats:
+    """Weight of each level's own difference in an additive fit, the sum of them 1."""
+    a, b = (
+        np.bincount(crossing.codes.codes[side], minlength=crossing.codes.n_levels)[crossing.both]
+        for side in (problem.side < 0, problem.side > 0)
+    )
+    pull = a * b / (a + b) if (a * b > 0).all() else (a + b).astype(float)
+    return np.asarray(pull / pull.sum())
+
+
+def _about_mean(differences: Floats, pull: Floats) -> Floats:
+    """Columns (K, L − 1) for own differences of L levels whose weighted mean is 0."""
+    return np.asarray(differences[:, :-1] - differences[:, -1:] * (pull[:-1] / pull[-1]))
 
 
 def collect(problem: Problem, columns: Columns, chains: Chains) -> Moments:

@@ -7,11 +7,15 @@ from dataclasses import dataclass
 from auditd.evidence.anytime import critical
 from auditd.evidence.clustered import Clustered
 from auditd.evidence.crossing import NuisanceCrossing
+from auditd.evidence.fit import OwnDifferences
+from auditd.evidence.interaction import FOUND
 from auditd.evidence.naive import Naive
 from auditd.evidence.result import Contrast
 from auditd.evidence.solution import Solution
 
-FOUND = 0.05  # p of the levels' own differences below which they count in the effective number
+DOMINATES = (
+    0.7  # share of the half-width (half of the variance) from which the levels' differences are most of it
+)
 WEAK_RUNS = 10.0  # effective runs a side below which a comparison is called weak
 
 
@@ -29,7 +33,10 @@ class Scene:
 
 @dataclass(frozen=True, kw_only=True)
 class Measured:
-    """An estimate with its interval and its variance relative to independence, on the scale of the fit."""
+    """An estimate with its interval and its variance relative to independence, on the scale of the fit.
+
+    floor : half-width that further runs on the same levels of floor_of leave.
+    """
 
     estimate: float
     half: float
@@ -38,6 +45,9 @@ class Measured:
     inflation: float
     inflation_low: float
     inflation_high: float
+    floor: float = 0.0
+    floor_of: str | None = None
+    remarks: tuple[str, ...] = ()
 
 
 def aliased(scene: Scene, reason: str) -> Contrast:
@@ -88,12 +98,37 @@ def solved(
         inflation=solution.quantile(inflation, 0.5) * middle,
         inflation_low=solution.quantile(inflation, tail) * low,
         inflation_high=solution.quantile(inflation, 1 - tail) * high,
+        floor=_floor(solution),
+        floor_of=None if solution.interaction is None else solution.interaction.name,
+        remarks=tuple(_of_few(one) for one in solution.own),
     )
-    words = [f"{method}, AR({solution.order}), first coefficient {solution.phi:.2f}"]
+    words = [method]
+    if solution.order:
+        words = [f"{method}, AR({solution.order}), first coefficient {solution.phi:.2f}"]
     words += [f"{c.name} as {'block' if c.kind == 'block' else 'random effect'}" for c in crossings]
     if solution.interaction is not None:
         words.append(f"{solution.interaction.name} × cell as error")
     return _filled(measured, scene, "; ".join(words))
+
+
+def _floor(solution: Solution) -> float:
+    """Half-width that the levels' own differences alone make."""
+    found = solution.interaction
+    if found is None or found.floor <= 0:
+        return 0.0
+    return float(solution.half * (found.floor / found.variance) ** 0.5)
+
+
+def _of_few(one: OwnDifferences) -> str:
+    """What the comparison says about a nuisance of few levels, and what it cannot say."""
+    name, n_levels = one.crossing.name, one.crossing.codes.n_levels
+    claim = f"{name}: the claim is for these {n_levels} levels as the runs weigh them"
+    if one.pvalue < FOUND:
+        return (
+            f"{claim}, and the difference itself is not the same on them (F = {one.f:.3g}, p = "
+            f"{one.pvalue:.2g}): compare on each apart"
+        )
+    return f"{claim}; whether the difference itself depends on {name} cannot be judged from {n_levels}"
 
 
 def _scatter_range(solution: Solution, tail: float) -> tuple[float, float, float]:
@@ -148,7 +183,10 @@ def _filled(measured: Measured, scene: Scene, method: str) -> Contrast:
     half_any = measured.half * critical(min(n_effective, scene.n), scene.confidence) / normal
     g, g_half = _standardised(measured, naive, scene.confidence)
     weak = min(scene.sides) / scene.n * n_effective < WEAK_RUNS
-    remarks = scene.remarks + (("weak: fewer than 10 effective runs a side",) if weak else ())
+    remarks = scene.remarks + measured.remarks
+    if measured.floor > DOMINATES * measured.half:
+        remarks += (_more_levels(str(measured.floor_of)),)
+    remarks += ("weak: fewer than 10 effective runs a side",) if weak else ()
     return Contrast(
         estimate=measured.estimate * scale,
         low=(measured.estimate - measured.half) * scale,
@@ -171,7 +209,16 @@ def _filled(measured: Measured, scene: Scene, method: str) -> Contrast:
         g_high=None if g is None else g + g_half,
         confidence=scene.confidence,
         weak=weak,
+        floor=measured.floor * scale,
+        floor_of=measured.floor_of if measured.floor > 0 else None,
         remarks=remarks,
+    )
+
+
+def _more_levels(name: str) -> str:
+    return (
+        f"{name} × cell: most of the interval is what the levels of {name} differ in; more levels narrow it, "
+        "more runs on these hardly do"
     )
 
 

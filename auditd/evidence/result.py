@@ -25,6 +25,8 @@ class Contrast:
     hedges_g, g_low, g_high : difference in standard deviations within cells, with an honest interval.
     confidence : of all intervals.
     weak : fewer than 10 effective runs on a side.
+    floor, floor_of : half-width that further runs on the same levels of the nuisance floor_of leave, since
+        its levels differ in the difference; 0 and None where no such difference is found.
     remarks : what else a reader has to know, one sentence each.
     """
 
@@ -49,6 +51,8 @@ class Contrast:
     g_high: float | None
     confidence: float
     weak: bool
+    floor: float = 0.0
+    floor_of: str | None = None
     remarks: tuple[str, ...] = ()
 
 

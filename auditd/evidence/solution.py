@@ -6,7 +6,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from auditd.evidence.fit import Model, errors_of, weigh_parameters
+from auditd.evidence.fit import Model, OwnDifferences, errors_of, weigh_parameters
 from auditd.evidence.higher import choose_order, looks_white, whitened_fit
 from auditd.evidence.inputs import Floats
 from auditd.evidence.interaction import Interaction, judge_slopes
@@ -25,8 +25,8 @@ class Solution:
     variances, marginals : (G,) variance of the estimate, and variance of one run, at each grid point;
         weights (G,) of the points.
     scatter : what a nuisance's own differences make of the variances, as a factor.
-    scatter_df : degrees of freedom of the interaction's mean square, infinite where none enters. order : of
-        the autoregression.
+    scatter_df : degrees of freedom of the interaction's mean square, infinite where none enters. own : what
+        nuisances of few levels show. order : of the autoregression, 0 where no order is known.
     """
 
     estimate: float
@@ -39,6 +39,7 @@ class Solution:
     scatter: float
     scatter_df: float
     interaction: Interaction | None
+    own: tuple[OwnDifferences, ...]
     order: int
 
     def quantile(self, x: Floats, p: float) -> float:
@@ -77,7 +78,8 @@ def solve(model: Model, confidence: float) -> Solution:
         scatter=1.0,
         scatter_df=float("inf"),
         interaction=None,
-        order=1 if longer is None else longer.order,
+        own=model.own,
+        order=int(model.problem.ordered) if longer is None else longer.order,
     )
     own = [
         judge_slopes(model, place, phi, ridge, float(fits.estimate[best])) for place in model.columns.slopes
@@ -131,7 +133,7 @@ class Longer:
 
 def _longer_memory(model: Model, posterior: Posterior, error: Floats, ridge: Floats) -> Longer | None:
     """Refit with an AR(p) where innovations are not white; uncertainty carries over in proportion."""
-    if looks_white(error, model.chains):
+    if not model.problem.ordered or looks_white(error, model.chains):
         return None
     fits, best = posterior.fits, posterior.best
     table = model.columns.table[:, model.used]

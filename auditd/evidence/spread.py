@@ -1,4 +1,7 @@
-"""Unequal spread of the two sides: Welch's correction carried over to generalised least squares."""
+"""Unequal spread, of the cells and of the two sides.
+
+The sides' is Welch's correction carried over to generalised least squares.
+"""
 
 from __future__ import annotations
 
@@ -8,6 +11,8 @@ import numpy as np
 
 from auditd.evidence.inputs import Floats, Ints
 
+MIN_OWN_RUNS = 5  # runs of a cell from which its residuals are taken in its own standard deviation
+SAME = 1e-20  # variance ÷ pooled variance below which a cell's values differ by rounding only
 MIN_SIDE_DF = 3  # innovations beyond the cells' means that a side needs for a variance of its own
 
 
@@ -54,3 +59,16 @@ def by_side(
     rest = max(unit - own, 0.0) * sigma2
     ratio = (total / lost + rest) / (unit * sigma2)
     return SideSpread(ratio=ratio, df=min(max(total * total / spent * lost, 1.0), df))
+
+
+def in_own_spread(residual: Floats, cell: Ints, count: Floats) -> Floats:
+    """Residuals (of unit pooled variance) in standard deviations of their cells; small cells share theirs.
+
+    A cell that does not vary stays as it is. The result has unit pooled variance.
+    """
+    square = np.bincount(cell, residual**2, len(count))
+    small = count < MIN_OWN_RUNS
+    variance = square / np.maximum(count - 1, 1)
+    variance[small] = square[small].sum() / max(float((count[small] - 1).sum()), 1.0)
+    scaled = residual / np.sqrt(np.where(variance > SAME, variance, 1.0))[cell]
+    return np.asarray(scaled / (float(scaled @ scaled) / (len(cell) - len(count))) ** 0.5)

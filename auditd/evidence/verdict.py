@@ -40,9 +40,9 @@ def runs_needed(contrast: Contrast, margin: float) -> int | None:
     """Further runs in the compared cells until the comparison decides, if the estimate stays and runs are
     added in the same proportions.
 
-    0 where it is decided; None where no number of such runs decides it: it cannot be estimated, or the
-    estimate lies on the margin. Where hosts × cell is the error, "the same proportions" means further
-    hosts, not further runs on the same ones.
+    0 where it is decided; None where no number of such runs decides it: it cannot be estimated, the
+    estimate lies on the margin, or the levels of `floor_of` (hosts, say) differ so much in the difference
+    that the interval cannot shrink enough: then more hosts decide, not more runs on these.
     """
     limit = _margin(margin)
     if contrast.low is None or contrast.high is None or contrast.estimate is None:
@@ -54,7 +54,10 @@ def runs_needed(contrast: Contrast, margin: float) -> int | None:
     half = _narrow_half(contrast) if inside else (contrast.high - contrast.low) / 2
     if distance <= 1e-9 * max(half, limit):
         return None
-    return max(math.ceil(contrast.n * ((half / distance) ** 2 - 1)), 1)
+    floor = contrast.floor * half / ((contrast.high - contrast.low) / 2)
+    if floor >= distance:
+        return None
+    return max(math.ceil(contrast.n * ((half**2 - floor**2) / (distance**2 - floor**2) - 1)), 1)
 
 
 def _margin(margin: float) -> float:

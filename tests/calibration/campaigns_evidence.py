@@ -1,6 +1,6 @@
 """Seeded campaigns with known truth for the calibration of auditd.evidence."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy.signal import lfilter
@@ -16,6 +16,7 @@ class Campaign:
     known_half: float
     host: np.ndarray | None = None
     block: np.ndarray | None = None
+    own: float = 0.0  # true difference of the cells over these hosts, weighted as an additive fit does
 
 
 def autoregressive(rng, n, phi):
@@ -54,17 +55,30 @@ def hosts(rng, n, n_hosts, icc, interaction, crossing):
         cells = (rng.random(n) < rng.uniform(0.25, 0.75, n_hosts)[host]).astype(int)
     order = rng.permutation(n)
     host, cells = host[order], cells[order]
-    values = (
-        np.sqrt(1 - icc) * rng.standard_normal(n)
-        + np.sqrt(icc) * rng.standard_normal(n_hosts)[host]
-        + np.sqrt(interaction) * rng.standard_normal((n_hosts, 2))[host, cells]
-    )
+    values = np.sqrt(1 - icc) * rng.standard_normal(n) + np.sqrt(icc) * rng.standard_normal(n_hosts)[host]
+    own = np.sqrt(interaction) * rng.standard_normal((n_hosts, 2))
+    values += own[host, cells]
     return Campaign(
         values=values,
         cells=cells,
         host=host,
+        own=weighted_difference(own[:, 1] - own[:, 0], host, cells),
         known_half=known_half_hosts(host, cells, 1 - icc, icc, interaction),
     )
+
+
+def weighted_difference(own, host, cells):
+    """Mean of the hosts' own differences with weights n_a·n_b / (n_a + n_b)."""
+    a, b = (np.bincount(host[cells == side], minlength=len(own)) for side in (0, 1))
+    return float(np.average(own, weights=a * b / (a + b)))
+
+
+def builds(rng, n, n_builds, icc, interaction, crossing):
+    """As `hosts`, less the true difference over these builds: a claim about them alone, whose known interval
+    is that of a block."""
+    c = hosts(rng, n, n_builds, icc, interaction, crossing)
+    known = known_half_hosts(c.host, c.cells, 1 - icc, icc, 0.0)
+    return replace(c, values=c.values - c.own * c.cells, known_half=known)
 
 
 def known_half_hosts(host, cells, error, icc, interaction):

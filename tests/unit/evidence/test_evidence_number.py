@@ -253,3 +253,41 @@ def test_the_initial_sequence_of_an_autoregression(rng):
     pairs = np.append(1.0, found.values)[: 2 * (found.order // 2) + 2].reshape(-1, 2).sum(axis=1)
     assert (np.diff(pairs) <= 1e-12).all()
     assert (found.autocorrelations(400)[250:] == 0).all()
+
+
+def test_a_few_wide_cells_do_not_decide_for_all(rng):
+    """Two large cells whose hosts differ (ICC 0.8) beside twenty small ones of a hundred times the spread:
+    the large cells' loss is found, as if they were alone."""
+    cells = np.concatenate((np.repeat([0, 1], 180), 2 + np.repeat(np.arange(20), 6)))
+    host = np.concatenate((np.arange(360) // 3, 120 + np.arange(120) // 3))
+    values = rng.standard_normal(480) + 2 * rng.standard_normal(160)[host]
+    values[cells > 1] = 100 * rng.standard_normal(120)
+    whole = effective_number(values, cells=cells, nuisance={"host": host}, ordered=False)
+    alone = effective_number(values[:360], cells=cells[:360], nuisance={"host": host[:360]}, ordered=False)
+    assert alone.n_effective == pytest.approx(360 / (1 + 2 * 0.8), rel=0.15)
+    assert whole.loss == pytest.approx(alone.loss, abs=0.2)
+
+
+def test_means_of_two_crossed_nuisances_add_up(rng):
+    """One run a host and position: the means taken off are hosts + positions, not their product, so that the
+    hosts' effect (ICC 0.9) does not drown in an error without degrees of freedom."""
+    host, position = np.arange(180) // 3, np.arange(180) % 3
+    values = rng.standard_normal(180) + 3 * rng.standard_normal(60)[host] + 0.5 * position
+    found = effective_number(
+        values, cells=[0] * 180, nuisance={"host": host, "position": position}, ordered=False
+    )
+    assert found.detail["icc host"] == pytest.approx(0.9, abs=0.05)
+    assert found.n_effective < 90
+
+
+def test_a_nuisance_is_asked_with_the_error_that_another_left(rng):
+    """Hosts' means cost degrees of freedom: positions without effect are found in about one in twenty."""
+    n_found = 0
+    host, position = np.arange(90) // 3, np.arange(90) % 3
+    for _ in range(60):
+        values = rng.standard_normal(90) + 3 * rng.standard_normal(30)[host]
+        found = effective_number(
+            values, cells=[0] * 90, nuisance={"host": host, "position": position}, ordered=False
+        )
+        n_found += found.n_effective < 20  # by hosts alone about 33
+    assert n_found <= 7  # 0.99 quantile of Binomial(60, 0.05); 0.11 of 60 were found by the uncorrected error

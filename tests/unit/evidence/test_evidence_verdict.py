@@ -50,6 +50,13 @@ def test_runs_needed_follow_the_square_of_the_width():
     assert runs_needed(made(2.0, 2.0), 2.0) is None
 
 
+def test_more_runs_on_the_same_hosts_do_not_decide_what_hosts_differ_in():
+    """A floor of the half-width: at or above the distance to the margin no number helps; below, 100·((4 −
+    0.25)/(1 − 0.25) − 1) more runs, in place of 300."""
+    assert runs_needed(replace(made(3.0, 2.0), floor=1.2, floor_of="host"), 2.0) is None
+    assert runs_needed(replace(made(3.0, 2.0), floor=0.5, floor_of="host"), 2.0) == 400
+
+
 def test_runs_needed_to_show_equivalence_use_the_narrower_interval():
     """Inside the margin the one-sided interval decides: 100·((1.645/1.96·2/1)² − 1) more runs."""
     assert runs_needed(made(0.0, 2.0), 1.0) == pytest.approx(100 * ((1.6449 / 1.95996 * 2) ** 2 - 1), abs=1)
