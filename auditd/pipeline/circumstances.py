@@ -22,4 +22,5 @@ def circumstances(table: RunTable, series: Series) -> dict[str, Any]:
         "nuisance": labelled_nuisance(series),
         "duplicates": duplicate_groups(table)[series.row],
         "parents": series.parents,
+        "ordered": series.ordered,
     }

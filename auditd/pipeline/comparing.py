@@ -146,6 +146,7 @@ def contrast_of(
         nuisance=labelled_nuisance(series),
         blocks=_blocks(series) if plan.seeds.role == "block" else None,
         confidence=confidence,
+        ordered=series.ordered,
     )
 
 
@@ -221,6 +222,8 @@ def _document(question: Question, plan: Plan, found: Any) -> Document:  # eviden
     margin = None if response is None else response.margin
     decided = None if margin is None or not found.estimable else verdict(found, margin)
     needed = runs_needed(found, margin) if decided == "undecided" and margin is not None else None
+    limited_by = found.floor_of if decided == "undecided" and needed is None else None
+    further = [f"more levels of {limited_by}, not more runs, would decide"] if limited_by else []
     document = _head(question) | {name: getattr(found, name) for name in _NUMBERS}
     document |= {
         "margin": margin,
@@ -228,9 +231,9 @@ def _document(question: Question, plan: Plan, found: Any) -> Document:  # eviden
         "scale": "linear" if response is None else response.scale,
         "verdict": decided,
         "runs_needed": needed,
-        "remarks": list(found.remarks),
+        "remarks": [*found.remarks, *further],
     }
-    document["sentence"] = sentence(document)
+    document["sentence"] = sentence(document, limited_by)
     return document
 
 
@@ -257,8 +260,11 @@ def _head(question: Question) -> Document:
     }
 
 
-def sentence(document: Document) -> str:
-    """Return what the difference between the naive and the honest result means, in one sentence."""
+def sentence(document: Document, limited_by: str | None = None) -> str:
+    """Return what the difference between the naive and the honest result means, in one sentence.
+
+    `limited_by` names the nuisance whose levels differ so much that no number of runs on them decides.
+    """
     if not document["estimable"]:
         return f"This comparison cannot be estimated: {document['reason']}."
     n, worth = document["n"], document["n_effective"]
@@ -280,10 +286,10 @@ def sentence(document: Document) -> str:
         )
     else:
         text = f"Naive and honest interval agree: {n} runs are worth {min(worth, n):.0f}"
-    return text + _judged(document) + "."
+    return text + _judged(document, limited_by) + "."
 
 
-def _judged(document: Document) -> str:
+def _judged(document: Document, limited_by: str | None) -> str:
     weak = "; it rests on fewer than 10 effective runs a side and is weak" if document["weak"] else ""
     if document["margin"] is None or document["verdict"] is None:
         return weak
@@ -293,6 +299,8 @@ def _judged(document: Document) -> str:
     if document["verdict"] == "undecided":
         needed = document["runs_needed"]
         more = f"; about {needed:,} more runs would decide" if needed else ""
+        if limited_by:
+            more = f"; more levels of {limited_by}, not more runs, would decide"
         return f"; whether the difference exceeds {margin} is undecided{more}{weak}"
     return f"; the difference is {document['verdict']} of {document['margin']:g}{tiny}{weak}"
 

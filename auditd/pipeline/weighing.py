@@ -163,6 +163,7 @@ def _of_cell(known: dict[str, Any], rows: Ints) -> dict[str, Any]:
         "cells": known["cells"][rows],
         "nuisance": {name: labels for name, labels in nuisance.items() if len(set(labels.tolist())) > 1},
         "duplicates": known["duplicates"][rows],
+        "ordered": known["ordered"],
     }
 
 
