@@ -4,10 +4,12 @@ from __future__ import annotations
 
 import math
 import struct
+from array import array
 from collections.abc import Iterable
 from typing import ClassVar, NamedTuple
 
 from auditd.checks.facts.condition import Condition, Episodes, counted, next_told
+from auditd.checks.facts.known_hashes import KnownHashes, Names
 from auditd.checks.facts.labels import CellIndex
 from auditd.checks.facts.protocol import Quiet
 from auditd.checks.facts.resolution import MAX_CHANCE, Resolution
@@ -26,6 +28,28 @@ class _Earlier(NamedTuple):
     cell: int
     seed: int
     n_in_cell: int  # completed runs of its cell, itself included
+
+
+class _LatestRuns:
+    """The latest run that gave certain results, by the results' hash; there are as many as runs."""
+
+    def __init__(self) -> None:
+        self._known = KnownHashes()
+        self._runs = Names()
+        self._cells = array("i")
+        self._seeds = array("q")
+        self._n_in_cell = array("i")
+
+    def replace(self, key: int, run: _Earlier) -> _Earlier | None:
+        """Put a run in the place of the one that gave the same results before, and return that one."""
+        number = self._known.get(key)
+        self._known.put(key, self._runs.add(run.run))
+        self._cells.append(run.cell)
+        self._seeds.append(run.seed)
+        self._n_in_cell.append(run.n_in_cell)
+        if number is None:
+            return None
+        return _Earlier(self._runs[number], self._cells[number], self._seeds[number], self._n_in_cell[number])
 
 
 class _CellRepeats:
@@ -67,7 +91,7 @@ class RepeatFact(Quiet):
         self._cells = CellIndex()
         self._skipped: dict[int, bool] = {}
         self._by_cell: dict[int, _CellRepeats] = {}
-        self._latest: dict[int, _Earlier] = {}  # hash of the results -> the latest run that gave them
+        self._latest = _LatestRuns()
         self._resolution = Resolution(len(self._names))
         self._episodes = Episodes()
         self._apart: dict[str, tuple[Condition, str]] = {}  # answers given twice, and factors not used
@@ -100,8 +124,7 @@ class RepeatFact(Quiet):
         tally.n += 1
         seed = hash(run.seed) if run.seed is not None else 0
         key = hash(self._packed(*values))
-        earlier = self._latest.get(key)
-        self._latest[key] = _Earlier(run.id, cell, seed, tally.n)
+        earlier = self._latest.replace(key, _Earlier(run.id, cell, seed, tally.n))
         if earlier is None:
             self._resolution.take(cell, values)
             return self._told_again(cell, tally)

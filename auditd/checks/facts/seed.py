@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from array import array
 from collections.abc import Iterable, Iterator
 from typing import ClassVar
 
 from auditd.checks.facts.ancestry import Ancestry
 from auditd.checks.facts.condition import Condition, Episodes, counted
+from auditd.checks.facts.known_hashes import KnownHashes, Names
 from auditd.checks.facts.labels import CellIndex
 from auditd.checks.facts.protocol import Quiet
 from auditd.plan import Plan
@@ -35,7 +37,9 @@ class SeedFact(Quiet):
         super().__init__(plan, alarm_budget=alarm_budget)
         self._anywhere = plan.seeds.role == "unique"
         self._cells = CellIndex()
-        self._first: dict[int, tuple[str, int]] = {}  # hash of the seed (and cell) -> run, cell
+        self._known = KnownHashes()  # of the seed (and cell): the number of the first run that had it
+        self._first_runs = Names()
+        self._first_cells = array("i")
         self._ancestry = Ancestry()
         self._n_links_judged = 0
         self._episodes = Episodes()
@@ -49,7 +53,12 @@ class SeedFact(Quiet):
             return ()
         cell = self._cells.number(run.cell)
         key = hash(run.seed) if self._anywhere else hash((run.seed, cell))
-        earlier = self._first.setdefault(key, (run.id, cell))
+        number = self._known.get(key)
+        if number is None:
+            self._known.put(key, self._first_runs.add(run.id))
+            self._first_cells.append(cell)
+            return ()
+        earlier = self._first_runs[number], self._first_cells[number]
         if earlier[0] == run.id or self._ancestry.root(earlier[0]) == self._ancestry.root(run.id):
             return ()
         return self._shared(run, arrival, earlier, self._cells.labels[cell])
