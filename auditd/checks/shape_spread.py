@@ -64,6 +64,7 @@ def _largest_ratio(values: Floats, cells: Ints, sizes: Ints) -> Effect | None:
     """Return the largest ratio of standard deviations; its interval allows for the choice among all pairs."""
     from scipy.special import ndtri
 
+    values = values / max(float(np.abs(values).max()), 1e-300)
     squares = np.bincount(cells, values**2)
     large = (sizes >= N_CELL_SPREAD) & (squares > 0)
     if large.sum() < 2:

@@ -1,4 +1,4 @@
-"""The full audit finds dependence in exchangeable campaigns as seldom as it says, whatever the errors' law."""
+"""The full audit finds dependence in exchangeable campaigns as seldom as it says, under any law."""
 
 import pytest
 from audit_campaigns import LAWS, SETTINGS, found_anything
