@@ -12,7 +12,7 @@ from auditd.sequential.alarm import Alarm
 from auditd.sequential.options import Options
 from auditd.sequential.scored_block import State
 
-VERSION = 1
+VERSION = 2
 """Raised whenever the state's meaning changes; an older state is replayed from the stored runs instead."""
 
 

@@ -9,6 +9,7 @@ from auditd.sequential.grids import CLOCK_N_PERIODS, CLOCK_PERIOD_S, CLOCK_VARIA
 from auditd.sequential.scored_block import ScoredBlock, State
 
 FloatArray = npt.NDArray[np.float64]
+BoolArray = npt.NDArray[np.bool_]
 
 LEVEL_VARIANCE = 1.0
 """Prior variance of the scores' level, in squared standard deviations of a score."""
@@ -37,7 +38,7 @@ class ClockCycle:
 
     def __init__(self, n_periods: float = CLOCK_N_PERIODS) -> None:
         self._n_periods = n_periods
-        self._sums = np.zeros((9, len(CLOCK_PERIOD_S)))
+        self._sums: FloatArray = np.zeros((9, len(CLOCK_PERIOD_S)))
         self._span = np.array([np.inf, -np.inf])
 
     def log_bets(self, block: ScoredBlock) -> FloatArray:
@@ -49,23 +50,20 @@ class ClockCycle:
         latest = np.maximum.accumulate(np.where(known, times, -np.inf))
         earliest, latest = np.minimum(earliest, self._span[0]), np.maximum(latest, self._span[1])
         self._span = np.array([earliest[-1], latest[-1]])
-        parts = []
-        for at, period_s in enumerate(CLOCK_PERIOD_S):
-            phase = 2.0 * np.pi * np.mod(times, period_s) / period_s
-            x = np.where(known, np.vstack((np.ones(z.size), np.sin(phase), np.cos(phase))), 0.0)
-            bets = self._one_period(at, x, z)
-            bets[:, ~(known & (latest - earliest >= self._n_periods * period_s))] = 0.0
-            parts.append(bets)
-        return np.concatenate(parts)
+        period = np.array(CLOCK_PERIOD_S)[:, None]
+        phase = 2.0 * np.pi * np.mod(times, period) / period
+        bets = self._bets_on_cycle(known * np.sin(phase), known * np.cos(phase), known, z)
+        bets *= known & (latest - earliest >= self._n_periods * period)
+        return np.moveaxis(bets, 0, 1).reshape(-1, z.size)
 
-    def _one_period(self, at: int, x: FloatArray, z: FloatArray) -> FloatArray:
-        """Predict each score from those before it: the cycle's posterior mean, the level integrated out."""
-        one, s, c = x
-        products = np.vstack((one, s, c, s * s, s * c, c * c, z, s * z, c * z))
-        totals = np.cumsum(np.concatenate((self._sums[:, at : at + 1], products), axis=1), axis=1)
-        self._sums[:, at] = totals[:, -1]
-        n, sum_s, sum_c, ss, sc, cc, sum_z, sz, cz = totals[:, :-1]
-        v = np.array(CLOCK_VARIANCE)[:, None]
+    def _bets_on_cycle(self, s: FloatArray, c: FloatArray, known: BoolArray, z: FloatArray) -> FloatArray:
+        """Bet on the cycle's posterior mean, the level integrated out; (variances, periods, n)."""
+        one, z = np.broadcast_to(known, s.shape), np.broadcast_to(z, s.shape)
+        products = np.array((one, s, c, s * s, s * c, c * c, z, s * z, c * z))
+        totals = np.cumsum(np.concatenate((self._sums[:, :, None], products), axis=2), axis=2)
+        self._sums = totals[:, :, -1].copy()
+        n, sum_s, sum_c, ss, sc, cc, sum_z, sz, cz = totals[:, :, :-1]
+        v = np.array(CLOCK_VARIANCE)[:, None, None]
         noise = 1.0 - v
         held = n + noise / LEVEL_VARIANCE
         a = ss - sum_s * sum_s / held + noise / v
@@ -73,8 +71,8 @@ class ClockCycle:
         d = cc - sum_c * sum_c / held + noise / v
         of_s, of_c = sz - sum_s * sum_z / held, cz - sum_c * sum_z / held
         mean = (s * (d * of_s - b * of_c) + c * (a * of_c - b * of_s)) / (a * d - b * b)
-        log_l: FloatArray = mean * z - 0.5 * mean * mean
-        return log_l
+        bets: FloatArray = mean * z - 0.5 * mean * mean
+        return bets
 
     def state(self) -> State:
         """Give the state as named arrays."""

@@ -107,7 +107,9 @@ def log_bets(
     at: IntArray | slice = slice(N_STEPS_TO_STEADY - 1, None)
     if count.min() < N_STEPS_TO_STEADY - 1:
         at = np.minimum(count, N_STEPS_TO_STEADY - 1)
-    carry = np.broadcast_to(table.carry[:, at], (table.carry.shape[0], z.size))
+    carry = table.carry[:, at]
+    if carry.shape[1] != z.size:
+        carry = np.broadcast_to(carry, (carry.shape[0], z.size))
     root = np.sqrt(reliability)
     mean, next_mean = _predict(carry, table.gain[:, at] * (root * z), first, state.mean)
     explained = 1.0 - table.variance[:, at]
@@ -131,6 +133,8 @@ def _predict(
     carry: FloatArray, fed: FloatArray, first: IntArray, state: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
     """Follow a_{t+1} = carry_t·a_t + fed_t in each segment, from its state; give all a and the next ones."""
+    if fed.shape[1] == 1:
+        return state.copy(), carry * state + fed
     coefficient, term = np.empty_like(fed), np.empty_like(fed)
     coefficient[:, 1:], term[:, 1:] = carry[:, :-1], fed[:, :-1]
     coefficient[:, first], term[:, first] = 0.0, state
