@@ -110,6 +110,26 @@ def spread(ratio, at=CHANGE_AT):
     )
 
 
+def ramp(size):
+    """The mean rises evenly over the campaign."""
+    return lambda rng, cell, host, time: rng.normal(size=cell.size) + size * np.linspace(0, 1, cell.size)
+
+
+def host_ramp(size):
+    return lambda rng, cell, host, time: (
+        rng.normal(size=cell.size) + size * np.linspace(0, 1, cell.size) * (host == 0)
+    )
+
+
+def shifted_from_the_first(size):
+    return lambda rng, cell, host, time: rng.normal(size=cell.size) + size
+
+
+def host_of_its_own_cell(size):
+    """The first cell ran on a host of its own, which is off: nothing to compare it with."""
+    return lambda rng, cell, host, time: rng.normal(size=cell.size) + size * (cell == 0)
+
+
 NULLS = (
     Scenario(name="normal", make=normal),
     Scenario(name="t, 2.2 degrees of freedom", make=student),
@@ -238,6 +258,30 @@ ALTERNATIVES = (
         start=0,
     ),
 )
+
+
+BLIND_SPOTS = (
+    *(Scenario(name=f"step of {size} sd at 300", make=step(size)) for size in (0.2, 0.3, 0.4)),
+    Scenario(name="step of 0.5 sd at 50", make=step(0.5, 50)),
+    Scenario(name="step of 0.5 sd at 100", make=step(0.5, 100)),
+    Scenario(name="ramp of 0.5 sd over the campaign", make=ramp(0.5)),
+    Scenario(name="ramp of 1 sd over the campaign", make=ramp(1.0)),
+    Scenario(name="one of 4 hosts ramps 2 sd", make=host_ramp(2.0)),
+    Scenario(name="spread x 1.3 at 300", make=spread(1.3)),
+    Scenario(name="spread x 0.6 at 300", make=spread(0.6)),
+    Scenario(name="AR(1) -.3", make=serial(-0.3)),
+    Scenario(name="AR(1) .1", make=serial(0.1)),
+    Scenario(name="AR(1) .2", make=serial(0.2)),
+    Scenario(name="ICC .05, 4 hosts", make=batch(0.05)),
+    Scenario(name="ICC .03, 16 hosts", make=batch(0.03), n_hosts=16),
+    Scenario(name="AR(1) .3, 200 cells of 5 runs", make=serial(0.3), n_cells=200),
+    Scenario(name="AR(1) .6, 200 cells of 5 runs", make=serial(0.6), n_cells=200),
+    Scenario(name="AR(1) .6, 500 cells of 2 runs", make=serial(0.6), n_cells=500),
+    Scenario(name="AR(1) .6, 500 cells of 2 runs, pooled", make=serial(0.6), n_cells=500, baseline="pooled"),
+    Scenario(name="1 sd in every run from the first on", make=shifted_from_the_first(1.0)),
+    Scenario(name="1 sd on a host that ran one cell only", make=host_of_its_own_cell(1.0)),
+)
+"""What is found late, seldom or never."""
 
 
 def campaign(scenario, seed):

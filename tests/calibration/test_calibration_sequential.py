@@ -1,16 +1,17 @@
 """Error rates, delays and names of the sequential audit; tables.py makes the complete tables."""
 
-import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
+from daemon_campaigns import DAEMON_NULLS, WITHHELD, DaemonScenario, audited, halving
 from scipy import stats
 from sequential_scenarios import ALTERNATIVES, NULLS, Scenario, campaign, step
 
 from auditd.sequential import cells_within_stages, replay, seed_blocks
 
 BUDGET = 0.05
-N_NULL, N_ALTERNATIVE = 120, 60
+N_NULL, N_ALTERNATIVE, N_DAEMON = 120, 60, 40
 BY_NAME = {scenario.name: scenario for scenario in ALTERNATIVES}
 
 
@@ -85,27 +86,48 @@ def test_an_outcome_steered_campaign_alarms_within_the_budget_when_scored_by_sta
     by_stage = by_cell = 0
     n_campaigns = 60
     for seed in range(n_campaigns):
-        values, cells, stages = _halving(np.random.default_rng([8, seed]))
+        landed = halving(np.random.default_rng([8, seed]))
+        values, cells, stages = landed.y, landed.cell.astype(str), landed.stage.astype(str)
         by_stage += bool(replay(values, cells=cells_within_stages(cells, stages)).alarms)
         by_cell += bool(replay(values, cells=cells).alarms)
     assert not_more_than(by_stage, n_campaigns, BUDGET)
     assert by_cell > by_stage
 
 
-def _halving(rng, n_cells=64, n_rounds=6, n_repeats=8):
-    """Each round repeats the cells left, then keeps the half with the better mean over all their runs."""
-    left, values, cells, stages = np.arange(n_cells), [], [], []
-    sums, counts = np.zeros(n_cells), np.zeros(n_cells)
-    for number in range(n_rounds):
-        order = rng.permutation(np.repeat(left, n_repeats))
-        got = rng.normal(size=order.size)
-        np.add.at(sums, order, got)
-        np.add.at(counts, order, 1)
-        values.append(got)
-        cells += order.astype(str).tolist()
-        stages += [str(number)] * order.size
-        left = left[np.argsort(-(sums[left] / counts[left]))][: math.ceil(left.size / 2)]
-    return np.concatenate(values), cells, stages
+@pytest.mark.slow
+@pytest.mark.parametrize("scenario", DAEMON_NULLS, ids=lambda scenario: scenario.name)
+def test_independent_runs_by_the_daemons_path_alarm_no_more_often_than_the_budget(scenario):
+    """Three nuisances, automatic responses, order by start: any alarm within the binomial bound of 0.05."""
+    hits = 0
+    for number in range(N_DAEMON):
+        alarms, audit = audited(scenario, [6, number])
+        hits += bool(alarms)
+        assert audit.n_scored() > 500
+    assert not_more_than(hits, N_DAEMON, BUDGET)
+
+
+@pytest.mark.slow
+def test_a_host_step_is_found_by_the_daemons_path_too():
+    """The same path sees what is there: 1.5 sd on one of five hosts from run 400 on, named, in 9 of 10."""
+
+    def stepped(rng):
+        landed = DAEMON_NULLS[0].make(rng)
+        return replace(landed, y=landed.y + 1.5 * ((landed.host == 2) & (np.arange(landed.y.size) >= 400)))
+
+    found = 0
+    for number in range(10):
+        alarms, _ = audited(DaemonScenario(name="host step", make=stepped), [7, number])
+        first = alarms[0] if alarms else None
+        found += first is not None and (first.response, first.alarm.level) == ("y", "n2")
+    assert found >= 9
+
+
+def test_runs_steered_by_outcome_without_stages_are_not_asked():
+    """Every kind is withheld, so that no alarm can be raised, and the audit says which."""
+    alarms, audit = audited(WITHHELD, [6, 0])
+    assert not alarms
+    assert not audit.tracks
+    assert set(audit.withheld) == {"serial", "drift", "clock", "spread", "batch", "lineage"}
 
 
 @pytest.mark.slow
