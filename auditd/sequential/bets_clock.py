@@ -38,7 +38,7 @@ class ClockCycle:
 
     def __init__(self, n_periods: float = CLOCK_N_PERIODS) -> None:
         self._n_periods = n_periods
-        self._sums: FloatArray = np.zeros((9, len(CLOCK_PERIOD_S)))
+        self._sums = np.zeros((9, len(CLOCK_PERIOD_S)))
         self._span = np.array([np.inf, -np.inf])
 
     def log_bets(self, block: ScoredBlock) -> FloatArray:
@@ -58,8 +58,10 @@ class ClockCycle:
 
     def _bets_on_cycle(self, s: FloatArray, c: FloatArray, known: BoolArray, z: FloatArray) -> FloatArray:
         """Bet on the cycle's posterior mean, the level integrated out; (variances, periods, n)."""
-        one, z = np.broadcast_to(known, s.shape), np.broadcast_to(z, s.shape)
-        products = np.array((one, s, c, s * s, s * c, c * c, z, s * z, c * z))
+        products = np.empty((9, *s.shape))
+        products[0], products[1], products[2] = known, s, c
+        products[3], products[4], products[5] = s * s, s * c, c * c
+        products[6], products[7], products[8] = z, s * z, c * z
         totals = np.cumsum(np.concatenate((self._sums[:, :, None], products), axis=2), axis=2)
         self._sums = totals[:, :, -1].copy()
         n, sum_s, sum_c, ss, sc, cc, sum_z, sz, cz = totals[:, :, :-1]
