@@ -61,18 +61,17 @@ class DriftMannKendall:
         from scipy.special import chdtrc
 
         parts = segments(view.groups) if view.groups is not None else []
-        found = [_trend(view.scores[part]) for part in parts]
-        squares = [z * z for z, _ in found]
+        squares = [float(_z_rows(view.scores[None, part])[0]) ** 2 for part in parts]
         most = int(np.argmax(squares))
         level = view.levels[int(view.groups[parts[most].start])] if view.groups is not None else ""
         total = float(sum(squares))
         pvalue = float(chdtrc(len(parts), total))
         if view.needs_permutation:
-            null = sum((_z_rows(view.permutations()[:, part]) ** 2 for part in parts), np.zeros(1))
-            observed = sum(float(_z_rows(view.scores[None, part])[0]) ** 2 for part in parts)
-            pvalue = permutation_pvalue(observed, null, "gamma")
+            rows = view.permutations()
+            null = sum((_z_rows(rows[:, part]) ** 2 for part in parts), np.zeros(1))
+            pvalue = permutation_pvalue(total, null, "gamma")
         effect = _rise(view.values[parts[most]], f"on {level}")
-        return answered(self, view, statistic=total, pvalue=pvalue, effect=effect, reason=found[most][1])
+        return answered(self, view, statistic=total, pvalue=pvalue, effect=effect, reason=AS_SCORES)
 
 
 def _trend(scores: Floats) -> tuple[float, str | None]:

@@ -65,7 +65,8 @@ class DriftSelectedShift:
         least = min(found, key=lambda one: one.pvalue)
         pvalue = min(1.0, least.pvalue * len(found))
         if view.needs_permutation:
-            null = np.max([_largest(view.permutations()[:, one.part]).max(axis=1) for one in found], axis=0)
+            rows = view.permutations()
+            null = np.max([_largest(rows[:, one.part]).max(axis=1) for one in found], axis=0)
             pvalue = permutation_pvalue(max(one.largest for one in found), null, "gamma")
         sure = [one for one in found if one.pvalue * len(found) <= LEVEL]
         effects = [(abs(_shift(view, one).value), k) for k, one in enumerate(sure)]

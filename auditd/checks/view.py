@@ -82,8 +82,11 @@ class View:
         return self.permuted.mean_cell < SMALL_CELL and self.permuted.n <= N_PERMUTED_MAX
 
     def permutations(self) -> Floats:
-        """Return the scores permuted within cells, in this order: (times, n)."""
-        return self.permuted.scores[:, self.rows]
+        """Return the scores permuted within cells, in this order: (times, n); not to be written to."""
+        scores = self.permuted.scores
+        if self.n == self.permuted.n and np.array_equal(self.rows, np.arange(self.n)):
+            return scores
+        return scores[:, self.rows]
 
     def tied(self, lag: int) -> float:
         """Return minus what Σ s(t) s(t + lag) would be on average in random order within cells.

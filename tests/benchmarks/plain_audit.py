@@ -82,9 +82,9 @@ def plain_audit(frame, responses, nuisances):
             for check, ask in (("neighbours", von_neumann), ("trend", trend), ("shift", selected_shift)):
                 by_level = [ask(part["score"].to_numpy()) for _, part in frame.groupby(name)]
                 p[name, check] = min(1.0, len(by_level) * min(by_level))
-            p[name, "cycle"] = min(
-                1.0, min(cycle(part) for _, part in frame.groupby(name)) * frame[name].nunique()
-            )
+            long = [part for _, part in frame.groupby(name) if np.ptp(part["started"]) > 3 * 86_400]
+            if long:
+                p[name, "cycle"] = min(1.0, min(cycle(part) for part in long) * len(long))
         adjusted = multipletests(list(p.values()), method="holm")[1]
         found[response] = dict(zip(p, adjusted, strict=True))
         found[response]["shape"] = normal_ad(frame["residual"].to_numpy())[1]
