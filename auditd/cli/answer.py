@@ -42,7 +42,7 @@ def answer(
     restart: str | None,
     absorb: bool,
 ) -> None:
-    """Reply to a warning; the reply is kept for ever and applies from the next run on."""
+    """Reply to a warning. The reply is kept for ever and applies from the next run on."""
     from auditd.pipeline.replying import reply
 
     setting_aside = bool(aside or since or until)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import textwrap
 from typing import Any
 
 import click
@@ -9,12 +10,15 @@ import click
 from auditd.cli.options import json_option, plan_path
 from auditd.cli.output import number, print_json, print_table, safe
 
+WIDTH = 88
+"""Columns of text on a terminal."""
+
 
 @click.command(epilog="Example: runaudit audit --json")
 @json_option
 @click.pass_context
 def audit(context: click.Context, as_json: bool) -> None:
-    """Look once with the classical checks, over every order; p-values adjusted across what was asked."""
+    """Look once with the classical checks, over every order. P-values are adjusted across what was asked."""
     from auditd.pipeline.full_audit import audit as look
 
     document = look(plan_path(context))
@@ -32,21 +36,29 @@ def audit(context: click.Context, as_json: bool) -> None:
 
 def _print(title: str, findings: list[dict[str, Any]]) -> None:  # findings' documents
     click.echo(title)
-    rows = [
-        (
-            one["response"] or "(design)",
-            one["along"],
-            one["check"],
-            one["verdict"],
-            _effect(one["effect"]),
-            number(one["adjusted_pvalue"]),
-            one["n"],
-            one["reason"] or "",
+    remarks: dict[str, int] = {}
+    rows = []
+    for one in findings:
+        remark = remarks.setdefault(one["reason"], len(remarks) + 1) if one["reason"] else None
+        rows.append(
+            (
+                f"  {one['response'] or '(design)'}",
+                one["along"],
+                one["check"],
+                one["verdict"],
+                _effect(one["effect"]),
+                number(one["adjusted_pvalue"]),
+                one["n"],
+                "" if remark is None else f"({remark})",
+            )
         )
-        for one in findings
-    ]
-    headers = ["  response", "along", "check", "verdict", "effect", "adjusted p", "runs", "remark"]
-    print_table(headers, [["  " + row[0], *row[1:]] for row in rows], right=[5, 6])
+    headers = ["  response", "along", "check", "verdict", "effect", "adjusted p", "runs", ""]
+    print_table(headers, rows, right=[5, 6])
+    for text, remark in remarks.items():
+        indent = f"  ({remark}) "
+        click.echo(
+            textwrap.fill(safe(text), WIDTH, initial_indent=indent, subsequent_indent=" " * len(indent))
+        )
 
 
 def _effect(effect: dict[str, Any] | None) -> str:

@@ -20,7 +20,7 @@ WIDTH = 88
 @json_option
 @click.pass_context
 def compare(context: click.Context, a: str | None, b: str | None, as_json: bool) -> None:
-    """Compare cells, B less A, honest interval beside naive; without arguments the planned ones."""
+    """Compare cells, B less A, honest interval beside naive. Without arguments: the planned ones."""
     from auditd.pipeline.looking import compare as look
 
     if (a is None) != (b is None):

@@ -26,7 +26,7 @@ EDITIONS = {
 @click.option("--edition", type=click.Choice(["faulty", "clean", "both"]), default="both", show_default=True)
 @click.option("--keep", metavar="FOLDER", help="Work in this new folder and leave it, to look around in.")
 def demo(edition: str, keep: str | None) -> int:
-    """Play a made-up campaign through the daemon: warnings as they are raised, then planted against found."""
+    """Play a made-up campaign through the daemon. Warnings as they are raised, then planted against found."""
     from auditd.errors import CannotCreate
 
     chosen = ("faulty", "clean") if edition == "both" else (edition,)

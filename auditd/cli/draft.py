@@ -16,7 +16,7 @@ from auditd.cli.output import message
     help="Write the plan there, if there is none; else it is printed.",
 )  # fmt: skip
 def draft(landing: Path, output: Path | None) -> None:
-    """Read what has landed and write a first plan, with its reasons as comments."""
+    """Read what has landed and write a first plan. Its reasons stand in comments."""
     from auditd.pipeline.drafting import draft as make
     from auditd.pipeline.drafting import write_draft
 

@@ -15,7 +15,7 @@ from auditd.records import cell_label
 @json_option
 @click.pass_context
 def evidence(context: click.Context, as_json: bool) -> None:
-    """Say how many independent runs the campaign is worth, by response and cell, and what was not checked."""
+    """Say how many independent runs the campaign is worth. By response and cell, and what was not checked."""
     from auditd.pipeline.campaign import open_for_queries
     from auditd.pipeline.stored_evidence import evidence_document
 

@@ -25,7 +25,7 @@ PARTS = (
 @click.argument("kind", required=False)
 @json_option
 def explain(kind: str | None, as_json: bool) -> None:
-    """Say what a kind of warning or a check asks, rests on and cannot see, and what to do."""
+    """Explain a kind of warning or a check. What it asks, rests on and cannot see, and what to do."""
     from auditd.verdicts.explanations import CHECKS, KINDS
     from auditd.verdicts.explanations import explain as explanation_of
 

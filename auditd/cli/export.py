@@ -27,10 +27,11 @@ def export(
     form: Literal["csv", "json", "parquet"],
     output: Path | None,
 ) -> None:
-    """Write runs, series (responses in order, audited scale) or warnings for other programs.
+    """Write runs, series or warnings for other programs.
 
-    Numbers read back exactly. In CSV (RFC 4180) a text that a spreadsheet would take for a formula gets an
-    apostrophe in front; JSON and Parquet hold every text as it is.
+    Series are responses in order, on the audited scale. Numbers read back exactly. In CSV (RFC 4180) a text
+    that a spreadsheet would take for a formula gets an apostrophe in front; JSON and Parquet hold every text
+    as it is.
     """
     from auditd.pipeline.campaign import open_for_queries
     from auditd.pipeline.exporting import export as write

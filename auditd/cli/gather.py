@@ -21,7 +21,7 @@ STEPS = {"read": "reading", "audit": "auditing"}
 @click.command(epilog="Example: runaudit --plan study/plan.toml gather")
 @click.pass_context
 def gather(context: click.Context) -> None:
-    """Take all that has landed, audit it, and end: for a backfill or a cron job."""
+    """Take all that has landed, audit it, and end. For a backfill or a cron job."""
     from auditd.pipeline.gathering import gather as take_all
 
     began = time.monotonic()

@@ -101,7 +101,7 @@ def run(arguments: list[str] | None = None) -> None:
     try:
         sys.stdout.flush()
     except OSError as error:
-        code = _code_of(error)
+        code = code if code == EXIT_CANNOT_CREATE else _code_of(error)  # said already
         _close_quietly()
     sys.exit(code)
 

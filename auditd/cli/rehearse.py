@@ -23,7 +23,7 @@ EXPLAINED = """\
 def rehearse(
     context: click.Context, scenarios: tuple[str, ...], campaigns: int, seed: int, as_json: bool
 ) -> None:
-    """Simulate the plan: false alarms, when dependences would be found, and how honest intervals are."""
+    """Simulate the plan. False alarms, when dependences would be found, and how honest intervals are."""
     from auditd.plan_reading import load_plan
     from auditd.schedule import DEFAULT_SCENARIOS, scenario_named
     from auditd.schedule import rehearse as carry_out

@@ -22,7 +22,7 @@ from auditd.cli.output import message
 )
 @click.pass_context
 def report(context: click.Context, output: Path) -> None:
-    """Write one self-contained page: what the runs are worth, with every picture and its numbers."""
+    """Write one self-contained page. What the runs are worth, with every picture and its numbers."""
     from auditd.pipeline.campaign import open_for_queries
     from auditd.pipeline.reporting import clock_now, write_report
 

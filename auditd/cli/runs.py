@@ -36,7 +36,7 @@ def runs(
     limit: int | None,
     as_json: bool,
 ) -> None:
-    """List runs with their order and circumstances, or what was refused."""
+    """List runs with order and circumstances, or what was refused."""
     from auditd.pipeline.asking import refused_document, runs_document
     from auditd.pipeline.campaign import open_for_queries
 

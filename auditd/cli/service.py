@@ -16,7 +16,7 @@ from auditd.errors import BadInput
 @click.command(epilog="Example: runaudit service > ~/.config/systemd/user/runaudit.service")
 @click.pass_context
 def service(context: click.Context) -> None:
-    """Print a hardened systemd user unit that keeps the daemon of this plan running."""
+    """Print a hardened systemd user unit for this plan's daemon."""
     from auditd.plan_reading import load_plan
     from auditd.service import unit_text
 

@@ -11,13 +11,18 @@ from auditd.cli.output import number, percent, print_json, print_table, safe, wo
 from auditd.records import Grade
 from auditd.series.strip_line import NAME_WIDTH, shortened, strip_line
 
+EXPLAINED = """\
+  (worth: of the runs, for the cells' means; lost: by the planned comparison that loses most;
+  the last three: what this design would have shown by now with probability 0.8)
+"""
+
 
 @click.command(epilog="Example: runaudit status --json")
 @json_option
 @at_least_option
 @click.pass_context
 def status(context: click.Context, as_json: bool, at_least: Grade | None) -> int:
-    """Show daemon, files, runs, evidence and warnings; exit 1 if a warning stands."""
+    """Show daemon, files, runs, evidence and warnings. Exit 1 if a warning stands."""
     from auditd.pipeline.asking import now_utc, standing_at_least, status_document
     from auditd.pipeline.campaign import open_for_queries
 
@@ -112,4 +117,4 @@ def _print_responses(responses: dict[str, Any]) -> None:  # part of the JSON doc
     print_table(
         ["  " + headers[0], *headers[1:]], [["  " + row[0], *row[1:]] for row in rows], right=range(1, 7)
     )
-    click.echo("  (the last three: what this design would have shown by now with probability 0.8)\n")
+    click.echo(EXPLAINED)

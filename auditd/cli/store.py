@@ -16,7 +16,7 @@ def store() -> None:
 @store.command(epilog="Example: runaudit store upgrade")
 @click.pass_context
 def upgrade(context: click.Context) -> None:
-    """Bring the store to this release's schema; the old file stays beside it."""
+    """Bring the store to this release's schema. The old file stays beside it."""
     from auditd.plan_reading import load_plan
     from auditd.store.migrate import upgrade_store
     from auditd.store.place import store_url
@@ -30,7 +30,7 @@ def upgrade(context: click.Context) -> None:
 @store.command(epilog="Example: runaudit store verify")
 @click.pass_context
 def verify(context: click.Context) -> int:
-    """Check pages, counts and places, audit all runs anew, and compare with what was raised."""
+    """Check the store, and audit all runs anew. Pages, counts, places, and every alarm at its run."""
     from auditd.pipeline.verifying import verify as complaints_of
 
     complaints = complaints_of(plan_path(context))
@@ -45,7 +45,7 @@ def verify(context: click.Context) -> int:
 @click.argument("path", type=click.Path(dir_okay=False))
 @click.pass_context
 def backup(context: click.Context, path: str) -> None:
-    """Copy the store to a new file while the daemon runs, and check the copy."""
+    """Copy the store while the daemon runs, and check the copy."""
     from pathlib import Path
 
     from auditd.plan_reading import load_plan

@@ -33,7 +33,7 @@ def warnings(
     since: datetime | None,
     as_json: bool,
 ) -> int:
-    """List warnings: what is wrong, since when, by how much, what to do; exit 1 if one stands."""
+    """List warnings. What is wrong, since when, by how much, what to do; exit 1 if one stands."""
     from auditd.pipeline.asking import standing_at_least, warnings_document
     from auditd.pipeline.campaign import open_for_queries
 

@@ -50,7 +50,7 @@ class FoldRepeats(logging.Filter):
 )
 @click.pass_context
 def watch(context: click.Context, collect_only: bool) -> int:
-    """Run the daemon: take runs as they land, audit, warn; SIGTERM ends it, SIGHUP reloads the plan."""
+    """Run the daemon. It takes runs as they land, audits, warns; SIGTERM ends it, SIGHUP reloads the plan."""
     _set_up_log()
     path = plan_path(context)
     if collect_only:

@@ -42,6 +42,14 @@ STEERED = (
     "results decide what runs next (design.allocation), and no stage is stated: even independent runs would "
     "alarm, so the sequential audit is withheld; state design.stage"
 )
+NO_BLOCKS = (
+    "seeds come in blocks, and the schedule names no cells by every factor's levels, so that no block can be "
+    "called complete: the sequential audit is withheld; state schedule.levels"
+)
+BETWEEN_STAGES = (
+    "changes from one stage to the next: results decide what runs next, so only runs of one stage are ranked "
+    "among each other"
+)
 NO_ORDER = (
     f"{', '.join(ORDER_KINDS)}: no order can be established, since runs landed in whole tables without a "
     "sequence number or a start; state record.sequence or record.started"
@@ -206,7 +214,8 @@ def withheld_sentences(session: Session) -> list[str]:
     """Return what the sequential audit does not ask, and why, in sentences."""
     left_out = session.audit.withheld
     if not left_out:
-        return []
+        in_blocks = session.plan.seeds.role == "block"
+        return [NO_BLOCKS] if in_blocks and not session.audit.tracks else []
     if session.plan.design.allocation == "outcome":
         return [STEERED]
     return [NO_ORDER]
@@ -216,6 +225,8 @@ def not_checked(session: Session, weighed: Mapping[str, Document | None]) -> lis
     """Return what could not be checked, in sentences."""
     plan = session.plan
     found = withheld_sentences(session)
+    if plan.design.allocation == "outcome" and plan.design.stage is not None:
+        found.append(BETWEEN_STAGES)
     found += [f"{name}: too few completed runs to weigh" for name, one in weighed.items() if one is None]
     for stated, words in (
         (plan.record.seed, "seeds: record.seed is not stated, so ignored and reused seeds cannot be seen"),
