@@ -70,7 +70,7 @@ def hosts(rng, n, n_hosts, icc, interaction, crossing):
 def weighted_difference(own, host, cells):
     """Mean of the hosts' own differences with weights n_a·n_b / (n_a + n_b)."""
     a, b = (np.bincount(host[cells == side], minlength=len(own)) for side in (0, 1))
-    return float(np.average(own, weights=a * b / (a + b)))
+    return float(np.average(own, weights=a * b / np.maximum(a + b, 1)))
 
 
 def builds(rng, n, n_builds, icc, interaction, crossing):
