@@ -24,6 +24,7 @@ from auditd.landing import Landing, Watcher
 from auditd.notify import Notifier
 from auditd.pipeline.campaign import Campaign, open_for_taking
 from auditd.pipeline.delivering import Courier
+from auditd.pipeline.freeing import give_back_memory
 from auditd.pipeline.grouping import grouped
 from auditd.pipeline.pausing import TROUBLES, Pausing
 from auditd.pipeline.report_keeping import ReportKeeper
@@ -183,7 +184,8 @@ class Daemon:
             self._reload()
         self.session.take_up_if_shared()
         self._advance(self._due_flush())
-        self.weigher.refresh_if_due()
+        if self.weigher.refresh_if_due():
+            give_back_memory()
         self.report.refresh_if_due(time.time())
         self.silence.look(self.session, time.time())
         self._beat()

@@ -152,12 +152,13 @@ def _block(z: FloatArray, window: IntArray, history: History, kind: str, along: 
     if kind == "batch":
         code = history.codes(along)[window].astype(np.int64)
         groups[along] = group(code, np.zeros(int(code.max()) + 1, dtype=np.int64))
+    parent_z, parent_reliability = history.parent_scores(window)
     return ScoredBlock(
         z=z,
         reliability=history.reliability[history.index[window]],
         count=np.arange(1, z.size + 1),
         times=history.times[window],
-        parent_z=history.parent_z[window],
-        parent_reliability=history.parent_reliability[window],
+        parent_z=parent_z,
+        parent_reliability=parent_reliability,
         groups=groups,
     )

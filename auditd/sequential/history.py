@@ -29,7 +29,6 @@ class History:
     z, reliability : scores of runs, by the number of the run; NaN and 0 where not scored.
     index : number of the run of each scored run.
     times : times of the scored runs, NaN where unknown.
-    parent_z, parent_reliability : parents' scores of the scored runs, NaN and 0 where there is none.
     """
 
     def __init__(self, nuisances: tuple[str, ...], *, has_parents: bool) -> None:
@@ -38,14 +37,20 @@ class History:
         self.reliability = LatestRows(np.float64)
         self.index = LatestRows(np.int64)
         self.times = LatestRows(np.float64)
-        self.parent_z = LatestRows(np.float64)
-        self.parent_reliability = LatestRows(np.float64)
+        self._parent_z = LatestRows(np.float64)
+        self._parent_reliability = LatestRows(np.float64)
         self._codes = {name: LatestRows(np.int32) for name in nuisances}
         self._n_scored = 0
 
     def codes(self, nuisance: str) -> LatestRows[np.int32]:
         """Level codes of the scored runs."""
         return self._codes[nuisance]
+
+    def parent_scores(self, rows: IntArray) -> tuple[FloatArray, FloatArray]:
+        """Scores and reliabilities of the parents of scored runs, NaN and 0 where there is none."""
+        if not self._has_parents:
+            return np.full(rows.size, np.nan), np.zeros(rows.size)
+        return self._parent_z[rows], self._parent_reliability[rows]
 
     def add_scores(self, z: FloatArray, reliability: FloatArray) -> None:
         """Append the scores of all runs of a block."""
@@ -56,8 +61,9 @@ class History:
         """Append what is known of a block's scored runs, and forget what is too old to be looked at."""
         self.index.extend(index)
         self.times.extend(scored.times)
-        self.parent_z.extend(scored.parent_z)
-        self.parent_reliability.extend(scored.parent_reliability)
+        if self._has_parents:
+            self._parent_z.extend(scored.parent_z)
+            self._parent_reliability.extend(scored.parent_reliability)
         for name, column in self._codes.items():
             column.extend(scored.groups[name].code)
         self._n_scored += index.size
@@ -81,4 +87,5 @@ class History:
             column.forget_before(oldest)
 
     def _of_scored(self) -> tuple[LatestRows[np.float64] | LatestRows[np.int64] | LatestRows[np.int32], ...]:
-        return (self.index, self.times, self.parent_z, self.parent_reliability, *self._codes.values())
+        parents = (self._parent_z, self._parent_reliability) if self._has_parents else ()
+        return (self.index, self.times, *parents, *self._codes.values())

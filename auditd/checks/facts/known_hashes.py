@@ -9,8 +9,8 @@ import numpy.typing as npt
 
 N_RECENT_MIN = 4096
 """Entries kept in a dict before they are sorted in among the others …"""
-SHARE_RECENT = 0.1
-"""… or this share of those, if more: each entry is then moved some ten times in all."""
+SHARE_RECENT = 0.05
+"""… or this share of those, if more: each entry is then moved some twenty times in all."""
 
 
 class KnownHashes:
@@ -23,7 +23,7 @@ class KnownHashes:
     def __init__(self) -> None:
         self._recent: dict[int, int] = {}
         self._hashes: npt.NDArray[np.int64] = np.empty(0, dtype=np.int64)
-        self._numbers: npt.NDArray[np.int64] = np.empty(0, dtype=np.int64)
+        self._numbers: npt.NDArray[np.int32] = np.empty(0, dtype=np.int32)
 
     def __len__(self) -> int:
         return self._hashes.size + sum(self._sorted(name) is None for name in self._recent)
@@ -48,7 +48,7 @@ class KnownHashes:
     def _sort_in(self) -> None:
         n = len(self._recent)
         hashes = np.concatenate([np.fromiter(self._recent, np.int64, n), self._hashes])
-        numbers = np.concatenate([np.fromiter(self._recent.values(), np.int64, n), self._numbers])
+        numbers = np.concatenate([np.fromiter(self._recent.values(), np.int32, n), self._numbers])
         # of two equal hashes the first is kept, which is the recent one
         self._hashes, kept = np.unique(hashes, return_index=True)
         self._numbers = numbers[kept]
@@ -60,7 +60,7 @@ class Names:
 
     def __init__(self) -> None:
         self._text = bytearray()
-        self._ends = array("q", [0])
+        self._ends = array("L", [0])
 
     def __len__(self) -> int:
         return len(self._ends) - 1
