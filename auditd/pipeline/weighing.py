@@ -14,7 +14,7 @@ from auditd.errors import BadInput, NotTestable
 from auditd.pipeline.asking import Document
 from auditd.pipeline.auditing import ORDER_KINDS, Audit
 from auditd.pipeline.circumstances import circumstances
-from auditd.pipeline.comparing import compare_document, losses, planned_questions
+from auditd.pipeline.comparing import compare_document, planned_questions
 from auditd.pipeline.evidence_paths import paths_document
 from auditd.pipeline.order_watch import order_findings
 from auditd.pipeline.session import Session
@@ -97,7 +97,7 @@ def refresh(session: Session) -> None:
         "scored": session.audit.n_scored(),
         "withheld": withheld_sentences(session),
         "responses": {
-            name: _status_of(table, plan, name, found, session.audit)
+            name: _status_of(found, _losses(compared, name), _would_see(table, plan, name, session.audit))
             for name, found in weighed.items()
             if found is not None
         },
@@ -175,18 +175,18 @@ def _of_cell(known: dict[str, Any], rows: Ints) -> dict[str, Any]:
     }
 
 
-def _status_of(
-    table: RunTable, plan: Plan, response: str, weighed: Mapping[str, Any], audit: Audit
-) -> Document:
-    losses_found = [
-        one.loss for _, one in losses(table, plan, response) if one is not None and one.loss is not None
-    ]
-    loss = max(losses_found, default=weighed["loss"])
+def _losses(compared: list[Document], response: str) -> list[float]:
+    """Return the losses of a response's planned comparisons, as `compare` tells them."""
+    return [one["loss"] for one in compared if one["response"] == response and one["loss"] is not None]
+
+
+def _status_of(weighed: Mapping[str, Any], losses: list[float], would_see: Document | None) -> Document:
+    loss = max(losses, default=weighed["loss"])
     return {
         "n": weighed["n"],
         "n_effective": weighed["n_effective"],
         "evidence_loss": max(float(loss), 0.0),
-        "would_see": _would_see(table, plan, response, audit),
+        "would_see": would_see,
     }
 
 

@@ -1,5 +1,6 @@
 """Warnings: one cause is one, ids are stable, grades rise with one alert, and what is over is withdrawn."""
 
+import msgspec
 import pytest
 from campaigns_made import PLAN, append, lay_out, records
 from sqlalchemy import select
@@ -124,6 +125,16 @@ def test_a_warning_never_lists_itself(raising):
     )
     (one,) = stored_cautions(connection)
     assert ("drift", "host", "h2") not in [(o.kind, o.along, o.level) for o in one.finding.explains]
+
+
+def test_a_warning_that_is_renamed_does_not_list_its_new_name(raising):
+    """When later runs give it the name of something listed, that is listed no more."""
+    connection, raiser, _ = raising
+    raiser.raise_alarms(connection, [alarm("serial"), alarm("drift", "host", under=("serial", "host"))])
+    (one,) = stored_cautions(connection)
+    renamed = msgspec.structs.replace(one.finding, kind="drift")
+    raiser._store(connection, msgspec.structs.replace(one, finding=renamed))
+    assert stored_cautions(connection)[0].finding.explains == ()
 
 
 def test_epochs_and_parts_are_conditions_of_their_own(raising):

@@ -8,6 +8,7 @@ from campaigns_made import PLAN, append, lay_out, records
 from auditd.pipeline.asking import status_document
 from auditd.pipeline.campaign import open_for_queries
 from auditd.pipeline.gathering import gather
+from auditd.pipeline.looking import compare
 from auditd.pipeline.stored_evidence import evidence_document
 
 BARE = PLAN.split("[[comparisons]]")[0]
@@ -60,6 +61,21 @@ def test_cells_add_up_and_shares_are_shares(tmp_path):
         assert one["loss_low"] <= one["loss"] <= one["loss_high"] <= 1
         assert 0 <= status["responses"][name]["evidence_loss"] <= 1
     assert json.loads(json.dumps(status, allow_nan=False)) == status
+
+
+def test_status_loses_what_compare_loses(tmp_path):
+    """The evidence lost in `status` is that of the worst comparison in `compare`, repeats and all."""
+    path = lay_out(tmp_path, PLAN)
+    made = records(200)
+    for k, one in enumerate(made):
+        if one["cfg"]["scheme"] == "staged" and k > 20:
+            one["out"] = {"energy": 0.123456789012, "steps": 1.987654321098}
+    append(tmp_path, made)
+    gather(path, lambda _step, _totals: None)
+    (compared,) = compare(path)["comparisons"]
+    energy = shown(open_for_queries(path))[0]["responses"]["energy"]
+    assert energy["evidence_loss"] == pytest.approx(compared["loss"], rel=1e-9)
+    assert energy["evidence_loss"] > 0.5
 
 
 def test_too_few_runs_are_said_to_be_too_few(tmp_path):
