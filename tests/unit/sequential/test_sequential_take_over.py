@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 
 from auditd.sequential import Auditor, Options, replay
+from auditd.sequential.alarm import crossings
 
 SPACING_S = 86_400.0 / 218
 
@@ -73,3 +74,20 @@ def test_a_take_over_falls_on_the_same_run_however_the_runs_are_split(size):
             times=np.arange(begin, end) * SPACING_S,
         )
     assert [(a.key, a.index, a.replaces) for a in auditor.alarms] == expected
+
+
+@pytest.mark.parametrize(("before", "expected"), [(2.0, [0, 4]), (3.5, [4])])
+def test_a_take_over_is_asked_where_evidence_rises_to_the_threshold_only(before, expected):
+    """Staying above it, also from the block before, asks no more; falling and rising again does."""
+    clock = ("clock", "order")
+    found = crossings(
+        {clock: np.array([3.1, 3.4, 3.2, 2.9, 3.3, 5.5])},
+        np.zeros(6),
+        before={clock: before},
+        threshold_first=3.0,
+        threshold_own=5.0,
+        raised=frozenset({("drift", "order")}),
+        leader_at=lambda at: clock,
+    )
+    assert [one.at for one in found if one.renames] == expected
+    assert [(one.at, one.threshold) for one in found if not one.renames] == [(5, 5.0)]
