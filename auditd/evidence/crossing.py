@@ -11,9 +11,9 @@ from auditd.evidence.inputs import Codes, Floats, Ints
 
 MAX_LEVELS = 40  # levels that enter the design one column each; above, levels are clusters
 MIN_SAMPLE_LEVELS = 3
-"""Levels that can stand for others. Measured with host × cell variance of 0.1 (tests/calibration/tables): three
-hosts as a sample cover 0.93–0.94 at 1.5 known widths, as a block 0.55–0.70; two would make the interval three to
-five times the naive one, with one degree of freedom to tell it by."""
+"""Levels that can stand for others. Measured with a host × cell variance of 0.1, in tests/calibration/tables:
+three hosts as a sample cover 0.93-0.94 at 1.5 known widths (as a block, 0.55-0.70); two would make
+the interval three to five times the naive one, with one degree of freedom to tell it by."""
 
 
 @dataclass(frozen=True, kw_only=True)

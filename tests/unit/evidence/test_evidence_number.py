@@ -3,12 +3,14 @@
 import numpy as np
 import pytest
 from scipy.signal import lfilter
+from statsmodels.regression.linear_model import OLS
 
 from auditd.errors import BadInput, NotTestable
 from auditd.evidence import effective_number, evidence_loss
 from auditd.evidence.chains import within
 from auditd.evidence.inputs import as_codes
 from auditd.evidence.sequence import initial_sequence
+from auditd.evidence.suspects import suspect
 
 
 @pytest.fixture
@@ -281,13 +283,19 @@ def test_means_of_two_crossed_nuisances_add_up(rng):
 
 
 def test_a_nuisance_is_asked_with_the_error_that_another_left(rng):
-    """Hosts' means cost degrees of freedom: positions without effect are found in about one in twenty."""
-    n_found = 0
+    """One run a host and position: F and degrees of freedom of the positions are those of a two-way analysis
+    of variance by statsmodels' ordinary least squares."""
     host, position = np.arange(90) // 3, np.arange(90) % 3
-    for _ in range(60):
-        values = rng.standard_normal(90) + 3 * rng.standard_normal(30)[host]
-        found = effective_number(
-            values, cells=[0] * 90, nuisance={"host": host, "position": position}, ordered=False
-        )
-        n_found += found.n_effective < 20  # by hosts alone about 33
-    assert n_found <= 7  # 0.99 quantile of Binomial(60, 0.05); 0.11 of 60 were found by the uncorrected error
+    values = rng.standard_normal(90) + 3 * rng.standard_normal(30)[host] + 0.1 * position
+    cell = np.zeros(90, dtype=np.int64)
+    nuisances = {"host": as_codes(host, 90, "host"), "position": as_codes(position, 90, "position")}
+    positions = next(
+        e for e in suspect(values - values.mean(), cell, 1, nuisances).found if e.name == "position"
+    )
+    of_host = (host[:, None] == np.arange(30)).astype(float)
+    of_position = (position[:, None] == np.arange(1, 3)).astype(float)
+    whole = OLS(values, np.hstack((of_host, of_position))).fit()
+    f, pvalue, df = whole.compare_f_test(OLS(values, of_host).fit())
+    assert (positions.df, positions.df_within) == (df, whole.df_resid)
+    assert positions.between / positions.within == pytest.approx(f)
+    assert positions.pvalue(1.0) == pytest.approx(pvalue)
