@@ -38,7 +38,8 @@ KINDS: tuple[str, ...] = (
 
 CHECKS: tuple[str, ...] = (
     "durbin_watson", "von_neumann_rank", "runs_test", "ljung_box", "breusch_godfrey", "autocorrelation",
-    "integrated_time", "mann_kendall", "pettitt", "selected_shift", "cusum", "ewma", "one_way", "variance_components",
+    "integrated_time", "mann_kendall", "pettitt", "selected_shift", "cusum", "ewma", "one_way",
+    "variance_components",
     "intraclass", "newey_west", "cluster_covariance", "welch_anova", "kruskal_wallis", "brown_forsythe",
     "levene", "bartlett", "shapiro_wilk", "anderson_darling", "generalized_esd", "grubbs", "fisher_g",
     "lomb_scargle", "cramers_v", "level_order", "hedges_g", "equivalence", "daily_cycle",
