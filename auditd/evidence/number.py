@@ -271,7 +271,7 @@ def _in_time(memory: TimeDependence, *, dependent: bool) -> tuple[str, ...]:
     """What was found along time, in words."""
     said = []
     if memory.steps.df:
-        said.append(f"{memory.steps.df} steps of the level along {memory.steps.along}, taken out first")
+        said.append(f"steps of the level along {memory.steps.along}, taken out first: {memory.steps.df}")
     if dependent:
         said.append(f"dependence in time: along {memory.chains.along}")
     return tuple(said)
