@@ -302,8 +302,11 @@ def test_runs_of_the_large_source_are_worth_what_the_source_says(iterations, res
 
 
 def test_runs_of_one_machine_are_not_counted_apart_for_wordpress(iterations):
-    """With an ICC of 0.58 to 0.84 and 3 runs a machine, 174 runs are worth 65 to 80; within a factor of 2."""
-    assert 32 <= worth(iterations, "wordpress", source=LARGEST) <= 150
+    """With an ICC of 0.58 to 0.84 and 3 runs a machine, 174 runs are worth 65 to 80 at most, twice for slack.
+
+    The source gives no number: the position effect of the iterations may take more.
+    """
+    assert worth(iterations, "wordpress", source=LARGEST) <= 150
 
 
 def test_every_campaign_answers_in_numbers(host_effect, daily_cycle, independent, iterations):
