@@ -24,7 +24,7 @@ from auditd.landing import Landing, Watcher
 from auditd.notify import Notifier
 from auditd.pipeline.campaign import Campaign, open_for_taking
 from auditd.pipeline.delivering import Courier
-from auditd.pipeline.freeing import give_back_memory
+from auditd.pipeline.freeing import give_back_memory, share_arenas
 from auditd.pipeline.grouping import grouped
 from auditd.pipeline.pausing import TROUBLES, Pausing
 from auditd.pipeline.report_keeping import ReportKeeper
@@ -69,6 +69,7 @@ class Daemon:
 
     def run(self) -> int:
         """Watch until stopped; return the exit code."""
+        share_arenas()
         campaign = open_for_taking(self.plan_path)
         self._campaign = campaign
         self._holder = Holder(campaign.url, campaign.engine)
@@ -288,6 +289,7 @@ class Daemon:
         if not force and now - self._beat_at < BEAT_EVERY_S:
             return
         self._beat_at = now
+        give_back_memory(collect=False)
         waiting = [
             {"path": one.path, "age_s": one.age_s, "why": one.why}
             for one in self.landing.waiting(time.time())[:20]
