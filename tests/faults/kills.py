@@ -181,9 +181,7 @@ def alerted(folder):
 
 def delivered(folder):
     """Return the ids of the alerts that the command was given, with repeats."""
-    return [
-        json.loads(line)["alert_id"] for line in (folder / "told.jsonl").read_text().splitlines() if line
-    ]
+    return [json.loads(line)["alert_id"] for line in (folder / "told.jsonl").read_text().splitlines() if line]
 
 
 if __name__ == "__main__":
