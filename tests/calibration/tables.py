@@ -15,7 +15,7 @@ from sequential_scenarios import ALTERNATIVES, BLIND_SPOTS, NULLS, Scenario, cam
 from auditd.sequential import replay
 
 FOLDER = pathlib.Path(__file__).parent / "tables"
-N_NULL, N_ALTERNATIVE, N_DAEMON = 2000, 400, 400
+N_NULL, N_ALTERNATIVE, N_DAEMON = 2000, 400, 200
 SEED = 20_26
 
 
