@@ -1,7 +1,9 @@
 """Exchangeable campaigns as the daemon audits them: runs land, wait for their place and enter by a plan."""
 
+import atexit
 import functools
 import pathlib
+import shutil
 import tempfile
 from collections.abc import Callable
 from dataclasses import dataclass
@@ -188,6 +190,7 @@ WITHHELD = DaemonScenario(name="optimiser, no stages", make=optimiser, more=BY_O
 def opened(more):
     """A plan in use, in a store of its own that holds no runs."""
     folder = pathlib.Path(tempfile.mkdtemp(prefix="calibration-"))
+    atexit.register(shutil.rmtree, folder, ignore_errors=True)
     (folder / "results").mkdir()
     (folder / "plan.toml").write_text(PLAN.format(more=more), encoding="utf-8")
     campaign: Campaign = open_for_taking(folder / "plan.toml")
