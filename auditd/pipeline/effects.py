@@ -57,12 +57,15 @@ def effect_of(finding: Finding, table: RunTable, plan: Plan) -> Effect | None:
 
 def _part(finding: Finding, series: Series, confidence: float) -> _Part:
     placed = series.positions >= 0
-    after = placed & (series.positions > (finding.index or 0))
+    after = placed & (series.positions > max(finding.index or 0, (finding.since or 0) - 1))
     since = placed & (series.positions >= (finding.since or 0))
     about = placed.copy()
     coded = series.nuisance.get(finding.along or "")
     if coded is not None and finding.kind != "batch" and finding.level in coded.levels:
         about &= coded.codes == coded.levels.index(finding.level)
+    if finding.cells:
+        touched = [k for k, label in enumerate(series.cells.levels) if label in finding.cells]
+        about &= np.isin(series.cells.codes, touched)
     if int((after & about).sum()) >= N_AFTER:
         since = after
     before = placed & (series.positions < (finding.since or 0))

@@ -126,14 +126,15 @@ class Raiser:
         At the first alarm a step on a host may look like resemblance of neighbours; later runs tell. The
         warning keeps its id and key, and the former leader is listed.
         """
-        best: tuple[float, Raised] | None = None
+        best: tuple[tuple[bool, float], Raised] | None = None
         for track, raised in audit.raised_so_far():
             same = self._of_key.get(key_of(raised, *raised.alarm.key)) == one.id
             if not same or raised.response != one.finding.response:
                 continue
-            evidence = track.auditor.log_e[raised.alarm.key]
-            if best is None or evidence > best[0]:
-                best = (evidence, raised)
+            # a cycle that the audit let take over has shown that it explains what the leader follows
+            rank = (raised.alarm.replaces is not None, track.auditor.log_e[raised.alarm.key])
+            if best is None or rank > best[0]:
+                best = (rank, raised)
         if best is None or best[1].alarm.key == (one.finding.kind, one.finding.along):
             return one
         found = finding_of(best[1], table, self._plan)

@@ -23,9 +23,15 @@ N_SIDE_MIN = 3
 DISTINCT_SHARE = 0.25
 """A cell that gives the same results again and again has steps of its own; it dates nothing."""
 STEP_SHARE = 0.5
-"""A step is taken for what happened when it explains more of a cell's variance on the level than this."""
+"""A step is taken for what happened when it explains more of a cell's variance on the level than this …"""
+DATE_SHARE = 0.25
+"""… and a warning that is a drift already is dated by one that explains more than this …"""
+LIKELIHOOD_MIN = 20.0
+"""… if twice its log likelihood ratio exceeds this and what choosing the best of n splits adds, 2 log n."""
 CHI_SQUARED_95 = 3.8415
 """95 % point of chi-squared with one degree of freedom: splits within it of the best are not excluded."""
+N_RISES = 40
+"""Starts of a slow rise that are tried, evenly spaced."""
 TOUCHED_SD = 0.2
 """Shift, in standard deviations within the cell, from which a cell is touched where no margin is stated."""
 STEPPING = ("drift", "serial", "batch", "spread")
@@ -53,7 +59,8 @@ def seen_anew(finding: Finding, table: RunTable, plan: Plan) -> Finding:
     }
     cells = _touched(finding, series, about, plan)
     found = msgspec.structs.replace(finding, cells=cells)
-    strong = [step for step in steps.values() if step.share > STEP_SHARE]
+    least = DATE_SHARE if finding.kind == "drift" else STEP_SHARE
+    strong = [step for step in steps.values() if step.share > least]
     if not strong:
         return found
     best = max(strong, key=lambda step: step.share)
@@ -86,7 +93,9 @@ def _step(series: Series, about: Flags, code: int) -> Step | None:
     explained = sums**2 * (1 / sizes + 1 / (n - sizes))
     rest = np.maximum(whole - explained, whole * 1e-12)
     best = int(np.argmin(rest))
-    if explained[best] <= _by_line(y):
+    if -n * math.log1p(-min(float(explained[best] / whole), 1 - 1e-12)) < LIKELIHOOD_MIN + 2 * math.log(n):
+        return None
+    if explained[best] <= _by_rise(y):
         return None  # a slow rise, whose middle is not when it began
     kept = sizes[n * np.log(rest / rest[best]) <= CHI_SQUARED_95]
     positions = series.positions[rows]
@@ -98,10 +107,15 @@ def _step(series: Series, about: Flags, code: int) -> Step | None:
     )
 
 
-def _by_line(y: Floats) -> float:
-    """Return the sum of squares that a straight line explains of centred values."""
-    order = np.arange(len(y)) - (len(y) - 1) / 2
-    return float(order @ y) ** 2 / float(order @ order)
+def _by_rise(y: Floats) -> float:
+    """Return the most that a level, then a straight rise, explains of centred values: a sum of squares."""
+    order = np.arange(len(y), dtype=np.float64)
+    most = 0.0
+    for start in np.linspace(0, len(y) - 2 * N_SIDE_MIN, N_RISES):
+        rise = np.maximum(order - start, 0.0)
+        rise -= rise.mean()
+        most = max(most, float(rise @ y) ** 2 / float(rise @ rise))
+    return most
 
 
 def _touched(finding: Finding, series: Series, about: Flags, plan: Plan) -> tuple[str, ...]:

@@ -5,6 +5,8 @@ from __future__ import annotations
 from auditd.records import Effect, Finding
 from auditd.verdicts.moments import Dated, Moment, when
 
+N_CELLS_TOLD = 3
+"""Cells that a sentence names; the others are counted."""
 SEQUENTIAL = ("serial", "drift", "batch", "spread", "clock", "lineage")
 """Kinds whose message is made here; facts bring their own."""
 
@@ -36,7 +38,7 @@ def message(
 
 def _what(finding: Finding) -> str:
     response = finding.response or "the response"
-    on = _on(finding)
+    on = _on(finding) + _in_cells(finding)
     along = finding.along if finding.along not in {None, "order"} else None
     sentences = {
         "drift": f"{response}{on} has moved away from its earlier level",
@@ -47,6 +49,14 @@ def _what(finding: Finding) -> str:
         "lineage": f"{response} of restarted runs resembles that of their parents",
     }
     return sentences[finding.kind]
+
+
+def _in_cells(finding: Finding) -> str:
+    """Say in which cells, where not all of them are touched."""
+    if not finding.cells:
+        return ""
+    more = f" and {len(finding.cells) - N_CELLS_TOLD} more" if len(finding.cells) > N_CELLS_TOLD else ""
+    return f" in {', '.join(finding.cells[:N_CELLS_TOLD])}{more}"
 
 
 def _on(finding: Finding) -> str:
@@ -82,7 +92,7 @@ def _since(finding: Finding, dated: Dated | None) -> str:
         return f", seen at {finding.run}" if finding.run else ""
     first = dated.first_after
     if dated.gap and dated.last_before is not None:
-        return f", since an unknown time between {when(dated.last_before)} and {when(first)}"
+        return f", at a date unknown between {when(dated.last_before)} and {when(first)}"
     return f", since {when(first)}{_range(dated.earliest, dated.latest)}"
 
 

@@ -60,7 +60,7 @@ def test_a_gap_is_told_as_unknown_between():
     found = dated(one, made(started=started))
     assert found.gap
     text = message(one, dated=found)
-    assert "since an unknown time between r0019" in text
+    assert "at a date unknown between r0019" in text
     assert "and r0021" in text
 
 

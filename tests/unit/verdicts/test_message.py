@@ -26,7 +26,7 @@ def test_a_drift_says_what_where_how_much_and_since_when(make_finding, moment):
 def test_a_gap_in_the_runs_leaves_the_date_unknown(make_finding, moment):
     """Nobody ran between r0100 and r0212."""
     told = message(make_finding(), dated=Dated(last_before=moment(100), first_after=moment(212), gap=True))
-    assert "since an unknown time between r0100" in told
+    assert "at a date unknown between r0100" in told
     assert "and r0212" in told
 
 
