@@ -19,3 +19,13 @@ def shared_folder():
         pytest.fail(reason)
     pytest.skip(reason)
     return None
+
+
+@pytest.hookimpl(wrapper=True)
+def pytest_runtest_makereport(item, call):
+    """Make a skip a failure where CI=true: there, everything that the tests need is installed."""
+    report = yield
+    if report.skipped and not hasattr(report, "wasxfail") and os.environ.get("CI") == "true":
+        report.outcome = "failed"
+        report.longrepr = f"skipped, but CI=true: {report.longrepr}"
+    return report
