@@ -196,7 +196,13 @@ def _is_ordered(connection: Connection, first_position: int) -> bool:
 
 
 def _placed(connection: Connection, first: int, until: int) -> Iterator[StoredRun]:
-    return stored_runs(connection, runs.c.position >= first, runs.c.position < until, order=runs.c.position)
+    return stored_runs(
+        connection,
+        runs.c.position >= first,
+        runs.c.position < until,
+        order=runs.c.position,
+        with_metadata=False,
+    )
 
 
 def _blocks(found: Iterable[StoredRun]) -> Iterator[list[StoredRun]]:

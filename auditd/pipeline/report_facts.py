@@ -11,11 +11,10 @@ import numpy as np
 from sqlalchemy import Connection, func, select
 
 from auditd.checks.answer import Answer as Finding
-from auditd.checks.design_questions import design_answers
-from auditd.checks.full_audit import adjusted, audit_series
 from auditd.pipeline.asking import Document
 from auditd.pipeline.campaign import Campaign, plan_in_use
 from auditd.pipeline.comparing import compare_document, planned_questions
+from auditd.pipeline.full_audit import findings_of
 from auditd.pipeline.weighing import weigh
 from auditd.plan import Plan
 from auditd.records import Caution
@@ -90,7 +89,7 @@ def report_facts(campaign: Campaign, now: datetime) -> ReportFacts:
             **{name: stored_display(connection, name) or {} for name in ("paths", "status", "evidence")},
         }
     questions = planned_questions(plan)
-    findings, not_asked = _full_audit(table, plan)
+    findings, not_asked = findings_of(table, plan)
     return ReportFacts(
         plan=plan,
         now=now,
@@ -112,13 +111,3 @@ def report_facts(campaign: Campaign, now: datetime) -> ReportFacts:
 def _refused(connection: Connection) -> dict[str, int]:
     query = select(refusals.c.kind, func.count()).group_by(refusals.c.kind).order_by(refusals.c.kind)
     return {row[0]: row[1] for row in connection.execute(query)}
-
-
-def _full_audit(table: RunTable, plan: Plan) -> tuple[list[Finding], list[str]]:
-    findings: list[Finding] = []
-    sentences: list[str] = []
-    for response in response_names(plan):
-        answers, not_asked = audit_series(table.series(plan, response))
-        findings += answers
-        sentences += not_asked
-    return [*findings, *adjusted(list(design_answers(table)))], sentences
