@@ -9,7 +9,7 @@ from run_tables import table_of
 from auditd.plan_reading import parse_plan
 from auditd.series.strip_line import SIGNS, shortened, strip_line
 from auditd.series.strips import N_BINS, strip
-from auditd.series.terminal_chart import chart_lines
+from auditd.series.terminal_chart import N_ROWS, chart_lines
 from auditd.series.terminal_evidence import evidence_lines
 
 PLAN = parse_plan('[responses.y]\nat = "y"\n[factors]\nc = "c"\n')
@@ -45,8 +45,8 @@ def test_no_runs_give_an_empty_strip():
 def test_a_chart_fits_80_columns_and_marks_only_what_lies_in_it(values, since, raised):
     """Every line of drawing fits; a mark outside the strip is not drawn anywhere."""
     drawn = chart_lines(strip(table_of({"y": np.array(values)}), PLAN, "y"), since=since, raised=raised)
-    assert max(map(len, drawn[:-1])) <= 80
-    marks = drawn[-2]
+    assert max(map(len, drawn)) <= 80
+    marks = drawn[N_ROWS]
     assert ("^" in marks or "W" in marks) == (0 <= since < len(values) or 0 <= raised < len(values))
     assert all(character.isascii() and character.isprintable() for line in drawn for character in line)
 
