@@ -106,8 +106,8 @@ def _axis(facts: ReportFacts, name: str) -> str:
     stated = facts.plan.responses.get(name)
     unit = "s" if name == "duration" else stated.unit if stated is not None else None
     if stated is not None and stated.scale != "linear":
-        return f"{stated.scale} {name}, less cell mean"
-    return f"{name}{f' ({unit})' if unit else ''}, less cell mean"
+        return f"{stated.scale} {name}, residual"
+    return f"{name}{f' ({unit})' if unit else ''}, residual"
 
 
 def _is_of(one: Caution, name: str) -> bool:
