@@ -22,6 +22,8 @@ from auditd.store.plans import Epoch, PlanVersion, plan_versions, save_epoch, sa
 from auditd.store.runs import count_runs
 
 _PASSWORD = re.compile(r"(?P<before>[a-z0-9+]+://[^\s/:@\"']*:)[^\s/@\"']+@", re.IGNORECASE)
+PLAN_LOCK = 0x706C616E
+"""Key of the advisory lock under which a PostgreSQL store's plan is settled."""
 KEY_BYTES = 32
 """Length of the key under which an epoch's ties are broken."""
 
@@ -89,12 +91,19 @@ def settle_plan(campaign: Campaign) -> Epoch:
         What is audited differs from the plan in use; `runaudit amend` says why it may.
     """
     with campaign.engine.begin() as connection:
+        _one_at_a_time(connection)
         versions = plan_versions(connection)
         if not versions:
             _take_first(connection, campaign.plan)
         elif versions[-1].hash != campaign.plan.audited_hash:
             _refuse_or_replace(connection, campaign.plan, versions)
         return stored_epochs(connection)[-1]
+
+
+def _one_at_a_time(connection: Connection) -> None:
+    """Let starters of a server's store settle the plan one after the other; SQLite does so by itself."""
+    if connection.dialect.name == "postgresql":
+        connection.exec_driver_sql(f"SELECT pg_advisory_xact_lock({PLAN_LOCK})")
 
 
 def plan_in_use(connection: Connection, fallback: Plan) -> Plan:
