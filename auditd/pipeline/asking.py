@@ -13,7 +13,7 @@ from sqlalchemy import Connection, func, select
 
 from auditd.errors import BadInput
 from auditd.pipeline.campaign import Campaign
-from auditd.records import GRADES, Caution, Grade, level_label
+from auditd.records import GRADES, Caution, Effect, Grade, level_label
 from auditd.store.cautions import caution_number, standing_by_grade, stored_cautions
 from auditd.store.clock import rfc3339, to_us
 from auditd.store.outbox import count_letters, last_error
@@ -241,10 +241,16 @@ def warnings_document(
     return {"schema": 1, "warnings": [caution_document(caution) for caution in found]}
 
 
+def effect_document(effect: Effect | None) -> Document | None:
+    """Return an effect as every document shows it: name, value and interval."""
+    if effect is None:
+        return None
+    return {"name": effect.name, "value": effect.value, "low": effect.low, "high": effect.high}
+
+
 def caution_document(caution: Caution) -> Document:
     """Return one warning as `warnings --json` and an alert show it."""
     finding = caution.finding
-    effect = finding.effect
     return {
         "id": caution.id,
         "kind": finding.kind,
@@ -263,9 +269,7 @@ def caution_document(caution: Caution) -> Document:
         "log_e": finding.log_e,
         "threshold": finding.threshold,
         "evidence_loss": caution.evidence_loss,
-        "effect": None
-        if effect is None
-        else {"name": effect.name, "value": effect.value, "low": effect.low, "high": effect.high},
+        "effect": effect_document(finding.effect),
         "message": finding.message,
         "remedy": caution.remedy,
         "answer": caution.answer,

@@ -9,7 +9,7 @@ from auditd.checks.answer import Answer
 from auditd.checks.design_questions import design_answers, tiny_association
 from auditd.checks.full_audit import adjusted, audit_series
 from auditd.checks.remarks import joined
-from auditd.pipeline.asking import Document
+from auditd.pipeline.asking import Document, effect_document
 from auditd.pipeline.campaign import open_for_queries
 from auditd.pipeline.stored_evidence import evidence_document
 from auditd.plan import Plan
@@ -60,7 +60,6 @@ def findings_of(table: RunTable, plan: Plan) -> tuple[list[Answer], list[str]]:
 
 def answer_document(one: Answer) -> Document:
     """Return one finding as `audit --json` shows it."""
-    effect = one.effect
     return {
         "response": one.response,
         "check": one.check,
@@ -69,9 +68,7 @@ def answer_document(one: Answer) -> Document:
         "statistic": one.statistic,
         "pvalue": one.pvalue,
         "adjusted_pvalue": one.adjusted_pvalue,
-        "effect": None
-        if effect is None
-        else {"name": effect.name, "value": effect.value, "low": effect.low, "high": effect.high},
+        "effect": effect_document(one.effect),
         "n": one.n,
         "verdict": one.verdict,
         "reason": one.reason,

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 import time
 from collections.abc import Mapping
 from typing import Any
@@ -241,8 +240,3 @@ def not_checked(session: Session, weighed: Mapping[str, Document | None]) -> lis
             found.append(words)
     found.append("a dependence that is the same in every run cannot be seen from the runs")
     return found
-
-
-def finite(value: float) -> float | None:
-    """Return a number for JSON: None where it is not finite."""
-    return value if math.isfinite(value) else None
